@@ -1,0 +1,244 @@
+"""Records: what a session is made of, in the order in which it happened.
+
+Owns the record types and their stored form. Everything that the reducer uses is one of these;
+fold them again and the same fleet and the same tables come out. Knows no tables and no fleet.
+
+Bytes are stored as they crossed the link (table ``wire``); every other record as its sort and
+a JSON body (table ``records``). Both share one count within a session, which gives the order.
+"""
+
+import json
+from dataclasses import asdict, dataclass, fields
+from typing import Any, Final
+
+from storage.errors import LogUnavailableError
+
+
+@dataclass(frozen=True, slots=True)
+class BytesIn:
+    """Bytes read from a link; ``t_ns`` is the session's monotonic time at which they came."""
+
+    t_ns: int
+    link: int
+    data: bytes
+
+
+@dataclass(frozen=True, slots=True)
+class BytesOut:
+    """Bytes handed to a link, at the moment before the write."""
+
+    t_ns: int
+    link: int
+    data: bytes
+
+
+@dataclass(frozen=True, slots=True)
+class SessionOpened:
+    """First record of a session. ``utc`` is ISO 8601; ``pace`` is fleet seconds per second."""
+
+    t_ns: int
+    utc: str
+    operator: str
+    epoch: int
+    pace: float
+    program: str
+
+
+@dataclass(frozen=True, slots=True)
+class SessionClosed:
+    """Last record of a session that ended in order."""
+
+    t_ns: int
+    utc: str
+    why: str
+
+
+@dataclass(frozen=True, slots=True)
+class LinkChanged:
+    """A link was opened, lost or closed. ``state``: open, lost, closed."""
+
+    t_ns: int
+    link: int
+    url: str
+    state: str
+    detail: str
+
+
+@dataclass(frozen=True, slots=True)
+class EpochChosen:
+    """The console takes a newer epoch, because a module has reported a higher one."""
+
+    t_ns: int
+    epoch: int
+
+
+@dataclass(frozen=True, slots=True)
+class PlannedCommand:
+    """One command of an order, complete before its first byte is sent.
+
+    ``command`` counts within the session; ``number`` is the one on the wire. ``setting`` and
+    ``direction`` are wire codes, 0 where the motion has none; ``trial`` is 0 outside a sheet
+    and for a sheet's return motions.
+    """
+
+    command: int
+    module: int
+    identity: int
+    boot: int
+    epoch: int
+    number: int
+    motion: str
+    setting: int
+    direction: int
+    speed_rpm: int
+    duration_ms: int
+    trial: int
+
+
+@dataclass(frozen=True, slots=True)
+class OrderGiven:
+    """What a person or a sheet asked for, with the commands it became. One transaction.
+
+    ``source``: typed, sheet.
+    """
+
+    t_ns: int
+    order: int
+    text: str
+    source: str
+    commands: tuple[PlannedCommand, ...]
+
+
+@dataclass(frozen=True, slots=True)
+class CommandExpired:
+    """A timer ran out: no answer came to a command within all tries."""
+
+    t_ns: int
+    command: int
+
+
+@dataclass(frozen=True, slots=True)
+class StopPressed:
+    """All-stop, numbered. ``source``: who or what asked for it."""
+
+    t_ns: int
+    stop_number: int
+    source: str
+
+
+@dataclass(frozen=True, slots=True)
+class StopLifted:
+    """A person cleared the all-stop of this number."""
+
+    t_ns: int
+    stop_number: int
+    source: str
+
+
+@dataclass(frozen=True, slots=True)
+class SheetOpened:
+    """A run sheet begins: its name and its text, whole; ``planned`` counts its trials."""
+
+    t_ns: int
+    sheet: int
+    name: str
+    text: str
+    seed: int
+    planned: int
+
+
+@dataclass(frozen=True, slots=True)
+class SheetClosed:
+    """A run sheet ended; ``stopped`` says why before its time, or is empty."""
+
+    t_ns: int
+    sheet: int
+    stopped: str
+
+
+@dataclass(frozen=True, slots=True)
+class Remark:
+    """Something a person wants to remember, tied to the moment."""
+
+    t_ns: int
+    utc: str
+    person: str
+    text: str
+
+
+@dataclass(frozen=True, slots=True)
+class Correction:
+    """A person overrules a verdict; the motion is named by what never repeats."""
+
+    t_ns: int
+    utc: str
+    identity: int
+    boot: int
+    number: int
+    outcome: str
+    person: str
+    reason: str
+
+
+WireRecord = BytesIn | BytesOut
+NoteRecord = (
+    SessionOpened
+    | SessionClosed
+    | LinkChanged
+    | EpochChosen
+    | OrderGiven
+    | CommandExpired
+    | StopPressed
+    | StopLifted
+    | SheetOpened
+    | SheetClosed
+    | Remark
+    | Correction
+)
+Record = WireRecord | NoteRecord
+
+_NOTE_TYPES: Final[dict[str, type[Any]]] = {
+    cls.__name__: cls
+    for cls in (
+        SessionOpened,
+        SessionClosed,
+        LinkChanged,
+        EpochChosen,
+        OrderGiven,
+        CommandExpired,
+        StopPressed,
+        StopLifted,
+        SheetOpened,
+        SheetClosed,
+        Remark,
+        Correction,
+    )
+}
+
+
+def note_sort(record: NoteRecord) -> str:
+    """Name under which a record that is not bytes is stored."""
+    return type(record).__name__
+
+
+def note_body(record: NoteRecord) -> str:
+    """JSON body under which a record that is not bytes is stored; ``t_ns`` stands beside it."""
+    body = asdict(record)
+    del body["t_ns"]
+    return json.dumps(body, ensure_ascii=False, separators=(",", ":"))
+
+
+def read_note(sort: str, t_ns: int, body: str) -> NoteRecord:
+    """Build a record from its stored form. Raises LogUnavailableError where that is damaged."""
+    try:
+        cls = _NOTE_TYPES[sort]
+        values: dict[str, Any] = json.loads(body)
+        if cls is OrderGiven:
+            values["commands"] = tuple(PlannedCommand(**each) for each in values["commands"])
+        record: NoteRecord = cls(t_ns=t_ns, **values)
+    except (KeyError, TypeError, ValueError) as error:
+        known = [field.name for field in fields(_NOTE_TYPES[sort])] if sort in _NOTE_TYPES else []
+        raise LogUnavailableError(
+            f"a stored record of sort {sort!r} cannot be read ({error}); expected {known}"
+        ) from error
+    return record
