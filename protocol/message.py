@@ -13,6 +13,7 @@ Payload: version u8, code u8, destination u16, source u16, body. All little-endi
 
 import struct
 from collections.abc import Callable
+from functools import partial
 from typing import Annotated, Any, Final, NamedTuple, TypeVar, cast, get_args, get_type_hints
 
 from protocol.codes import WIRE_VERSION, Code
@@ -21,6 +22,8 @@ from protocol.errors import LocalProtocolError, RemoteProtocolError
 HEADER: Final = struct.Struct("<BBHH")
 MAX_BODY_BYTES: Final = 36
 """62 bytes a frame before stuffing, less header 6, check 4, and 16 kept free for the seal."""
+
+TEXT_BYTES: Final = 12
 
 U8 = Annotated[int, "B"]
 U16 = Annotated[int, "H"]
@@ -62,7 +65,9 @@ def _declare(code: Code) -> Callable[[type[_MessageT]], type[_MessageT]]:
         named.__eq__ = _same
         named.__ne__ = lambda left, right: not _same(left, right)
         named.__hash__ = lambda self: hash((cls, tuple(self)))
-        LAYOUTS[code] = _Layout(cls, body, named._make)
+        # tuple.__new__ and not _make: the struct has already fixed the length that _make would
+        # check, and the check costs a third of the making.
+        LAYOUTS[code] = _Layout(cls, body, partial(cast(Any, tuple.__new__), cls))
         CODES[cls] = code
         return cls
 
@@ -263,9 +268,15 @@ class Packet(NamedTuple):
     message: Message
 
 
+_make_packet: Final[Callable[[Any], Packet]] = partial(cast(Any, tuple.__new__), Packet)
+
+
 def encode(packet: Packet) -> bytes:
     """Pack header and body. Raises LocalProtocolError where a field does not fit its width."""
     message = packet.message
+    if any(isinstance(value, bytes) and len(value) > TEXT_BYTES for value in message):
+        # struct would cut the text without a word, perhaps within a character.
+        raise LocalProtocolError(f"a text has at most {TEXT_BYTES} bytes; see text_field")
     try:
         code = CODES[type(message)]
         head = HEADER.pack(WIRE_VERSION, code, packet.destination, packet.source)
@@ -284,19 +295,26 @@ def decode(payload: bytes) -> Packet:
         version, code, destination, source = HEADER.unpack_from(payload)
         _, body, make = LAYOUTS[code]
         if version == WIRE_VERSION and len(payload) == HEADER.size + body.size:
-            return Packet(destination, source, make(body.unpack_from(payload, HEADER.size)))
+            body_fields = body.unpack_from(payload, HEADER.size)
+            return _make_packet((destination, source, make(body_fields)))
     except struct.error as error:
         raise RemoteProtocolError(f"{len(payload)} bytes are no message") from error
     except KeyError as error:
-        raise RemoteProtocolError(f"unknown message code 0x{code:02x}") from error
+        raise RemoteProtocolError(_complaint(version, code, len(payload))) from error
+    raise RemoteProtocolError(_complaint(version, code, len(payload)))
+
+
+def _complaint(version: int, code: int, n_bytes: int) -> str:
+    """Say what is wrong with a payload; its version comes first, since codes depend on it."""
     if version != WIRE_VERSION:
-        raise RemoteProtocolError(f"wire version {version}, this console speaks {WIRE_VERSION}")
-    raise RemoteProtocolError(
-        f"{Code(code).name} has a body of {len(payload) - HEADER.size} bytes, not {body.size}"
-    )
+        return f"wire version {version}, spoken here is {WIRE_VERSION}"
+    if code not in LAYOUTS:
+        return f"unknown message code 0x{code:02x}"
+    expected = LAYOUTS[code].body.size
+    return f"{Code(code).name} has a body of {n_bytes - HEADER.size} bytes, not {expected}"
 
 
-def text_field(text: str, width: int = 12) -> bytes:
+def text_field(text: str, width: int = TEXT_BYTES) -> bytes:
     """Encode ``text`` for a Text12 field, cut at a character's border."""
     return text.encode()[:width].decode(errors="ignore").encode()
 

@@ -110,6 +110,15 @@ class OrderGiven:
 
 
 @dataclass(frozen=True, slots=True)
+class OrderVoided:
+    """An order whose commands were never sent, because the log could not take them first."""
+
+    t_ns: int
+    order: int
+    why: str
+
+
+@dataclass(frozen=True, slots=True)
 class CommandExpired:
     """A timer ran out: no answer came to a command within all tries."""
 
@@ -187,6 +196,7 @@ NoteRecord = (
     | LinkChanged
     | EpochChosen
     | OrderGiven
+    | OrderVoided
     | CommandExpired
     | StopPressed
     | StopLifted
@@ -205,6 +215,7 @@ _NOTE_TYPES: Final[dict[str, type[Any]]] = {
         LinkChanged,
         EpochChosen,
         OrderGiven,
+        OrderVoided,
         CommandExpired,
         StopPressed,
         StopLifted,
@@ -225,7 +236,12 @@ def note_body(record: NoteRecord) -> str:
     """JSON body under which a record that is not bytes is stored; ``t_ns`` stands beside it."""
     body = asdict(record)
     del body["t_ns"]
-    return json.dumps(body, ensure_ascii=False, separators=(",", ":"))
+    text = json.dumps(body, ensure_ascii=False, separators=(",", ":"))
+    try:
+        text.encode()
+    except UnicodeEncodeError:  # a device's name in another encoding; JSON's escapes can hold it
+        text = json.dumps(body, separators=(",", ":"))
+    return text
 
 
 def read_note(sort: str, t_ns: int, body: str) -> NoteRecord:

@@ -1,0 +1,75 @@
+"""`tumblewire live` and `tumblewire replay`: the Fleet screen over an engine or over a log.
+
+Owns how the two are put together. Knows nothing of what the screen draws.
+"""
+
+from pathlib import Path
+
+from console.engine import Engine
+from console.errors import InputError, LogError
+from console.opening import PRACTICE_LINK, SessionOptions, open_session, operator_name
+from console.orders import complete
+from console.paths import default_log_path
+
+
+def run_live(options: SessionOptions) -> int:
+    """Show the console until the person leaves; return the exit status."""
+    from console.app import FleetApp
+
+    engine = open_session(options)
+    try:
+        app = FleetApp(
+            engine,
+            operator=operator_name(options.operator),
+            banner="SIMULATED" if _all_simulated(options) else "",
+            controls=None,
+            completions=lambda text: _complete(engine, text),
+        )
+        app.run()
+    finally:
+        engine.close()
+    return 0 if engine.link_open() and not engine.log_trouble() else 3
+
+
+def practice_options(links: tuple[str, ...]) -> tuple[str, ...]:
+    """The links as given, or the practice fleet where none is."""
+    return links or (PRACTICE_LINK,)
+
+
+def _all_simulated(options: SessionOptions) -> bool:
+    return all(link.startswith("sim://") for link in options.links)
+
+
+def _complete(engine: Engine, text: str) -> list[str]:
+    return complete(text, [module.name for module in engine.view().modules])
+
+
+def run_replay(session_text: str, log: Path | None, speed: float) -> int:
+    """Play a recorded session on the same screen. Raises LogError, InputError."""
+    from console.app import FleetApp
+    from console.replay import ReplayPlayer
+    from storage.errors import StorageError, StorageMisuseError
+    from storage.reader import LogReader
+
+    try:
+        reader = LogReader.open(log or default_log_path())
+    except StorageError as error:
+        raise LogError(str(error)) from error
+    try:
+        session = reader.find_session(session_text)
+        player = ReplayPlayer(reader.records(session))
+        player.set_speed(speed)
+        FleetApp(
+            player,
+            operator=player.view().operator,
+            banner="REPLAY",
+            controls=player,
+            completions=None,
+        ).run()
+    except StorageMisuseError as error:
+        raise InputError(str(error)) from error
+    except StorageError as error:
+        raise LogError(str(error)) from error
+    finally:
+        reader.close()
+    return 0

@@ -1,0 +1,213 @@
+"""The fleet's mutable state, as one fold over the records leaves it.
+
+Owns the state types and how they are found: by identity, by sender, by wire number. Must not
+know rows, views or what a message means; the fleet_* modules beside it change and read it.
+
+Classes are mutable and slotted, since telemetry changes a module some thousand times for each
+picture that is made of it.
+"""
+
+from collections import deque
+from dataclasses import dataclass, field
+from typing import Final
+
+from console.errors import LogError
+from console.view import CommandView, ModuleView, Outcome
+from protocol.codes import is_simulated
+from protocol.frame import FrameDecoder
+from protocol.message import Facts, Packet
+from storage.records import PlannedCommand, SheetOpened
+from storage.rows import ModuleRow, Row
+
+RIBBON_LENGTH: Final = 20
+"""Outcomes of a module that a picture shows."""
+
+NOTICES_KEPT: Final = 50
+"""Lines for a person that a picture carries; older ones are in the log's alarms."""
+
+MOTIONS: Final = frozenset({"pivot", "hop", "twist"})
+"""What brakes the wheel and so has an outcome; all else just ends."""
+
+OPEN_ENDED: Final = "unseen"
+"""The one ending that a late report may still resolve, as long as it is not final."""
+
+
+@dataclass(slots=True)
+class Step:
+    """What one record led to: rows for the log, inbound packets with the link each came over,
+    and the commands that got their ending (once each: a late resolution is not a new one)."""
+
+    rows: list[Row] = field(default_factory=list)
+    packets: list[tuple[int, Packet]] = field(default_factory=list)
+    ended: list[int] = field(default_factory=list)
+
+
+@dataclass(slots=True, eq=False)
+class Moment:
+    """Where in the stream something happens. ``message`` counts messages within the record;
+    ``link`` is -1 where no link is concerned."""
+
+    number: int
+    t_ns: int
+    step: Step
+    link: int = -1
+    message: int = 0
+
+    @property
+    def part(self) -> int:
+        """A count that is unique within the record, whatever the table."""
+        return len(self.step.rows)
+
+
+@dataclass(slots=True, eq=False)
+class ModuleState:
+    """One module. ``arrived`` has a bit for each of the last sequence numbers, the newest in
+    bit 0; ``span`` says how many of them there have been in this boot, 0 before the first."""
+
+    module: int
+    identity: int
+    address: int
+    link: int
+    boot: int
+    name: str
+    kind: str = ""
+    firmware: int = 0
+    wheel_max_rpm: int = 0
+    epoch: int = 0
+    boots: set[int] = field(default_factory=set)
+    shares_address: bool = False
+    stop_number: int = 0
+    latched: bool = False
+    activity: int = 0
+    flags: int = 0
+    face_up: int = 0
+    wheel_rpm: int = 0
+    battery_mV: int = 0
+    temperature_cC: int = 0
+    heard_t_ns: int = 0
+    sequence: int = -1
+    arrived: int = 0
+    span: int = 0
+    in_hand: "dict[int, CommandState]" = field(default_factory=dict)
+    unsure: "dict[int, CommandState]" = field(default_factory=dict)
+    ribbon: "deque[CommandState]" = field(default_factory=lambda: deque(maxlen=RIBBON_LENGTH))
+    row: ModuleRow | None = None
+    view: ModuleView | None = None
+
+    @property
+    def simulated(self) -> bool:
+        """Whether its identity carries the simulated mark."""
+        return is_simulated(self.identity)
+
+
+@dataclass(slots=True, eq=False)
+class CommandState:
+    """One command. ``asking``: a question about it is out, unanswered; ``withdrawn``: an
+    all-stop came after it had been sent."""
+
+    planned: PlannedCommand
+    order: int
+    t_ns: int
+    module: ModuleState
+    sends: int = 0
+    repeats_ignored: int = 0
+    accepted: bool = False
+    asking: bool = False
+    withdrawn: bool = False
+    ending: str | None = None
+    reason: str | None = None
+    final: bool = False
+    ended_t_ns: int | None = None
+    facts: Facts | None = None
+    outcome: Outcome | None = None
+    view: CommandView | None = None
+
+    @property
+    def settled(self) -> bool:
+        """Whether nothing can change its ending any more."""
+        return self.ending is not None and (self.final or self.ending != OPEN_ENDED)
+
+
+@dataclass(slots=True, eq=False)
+class LinkState:
+    """One link: a decoder for each direction, and what has come and gone."""
+
+    link: int
+    url: str = ""
+    state: str = ""
+    inbound: FrameDecoder = field(default_factory=FrameDecoder)
+    outbound: FrameDecoder = field(default_factory=FrameDecoder)
+    frames_in: int = 0
+    frames_out: int = 0
+    dropped: int = 0
+    bytes_in: int = 0
+    bytes_out: int = 0
+    reasons: dict[str, int] = field(default_factory=dict)
+    drops_at: deque[int] = field(default_factory=deque)
+    bad: bool = False
+
+    @property
+    def gone(self) -> bool:
+        """Whether it was lost or closed."""
+        return self.state in {"lost", "closed"}
+
+
+@dataclass(slots=True, eq=False)
+class StopState:
+    """The all-stop. ``newest``: highest number known; ``lifted``: highest that this session
+    cleared; ``told``: highest whose full confirmation a notice has told of."""
+
+    newest: int = 0
+    lifted: int = 0
+    in_force: bool = False
+    told: int = 0
+
+
+@dataclass(slots=True, eq=False)
+class FleetState:
+    """Everything. ``unknown_heard``: somebody was heard whom no Presence explains;
+    ``changed``: a module's picture is no longer true."""
+
+    epoch: int = 0
+    highest_epoch: int = 0
+    opened_utc: str = ""
+    operator: str = ""
+    closed: bool = False
+    modules: dict[int, ModuleState] = field(default_factory=dict)
+    by_identity: dict[int, ModuleState] = field(default_factory=dict)
+    by_sender: dict[tuple[int, int, int], ModuleState] = field(default_factory=dict)
+    commands: dict[int, CommandState] = field(default_factory=dict)
+    by_wire: dict[tuple[int, int, int, int], CommandState] = field(default_factory=dict)
+    links: dict[int, LinkState] = field(default_factory=dict)
+    sheets: dict[int, SheetOpened] = field(default_factory=dict)
+    conflicts: set[tuple[int, int]] = field(default_factory=set)
+    stop: StopState = field(default_factory=StopState)
+    notices: deque[tuple[int, str]] = field(default_factory=lambda: deque(maxlen=NOTICES_KEPT))
+    unknown_heard: bool = False
+    changed: bool = True
+
+    def link_of(self, link: int) -> LinkState:
+        """The link of this count, made where it is new."""
+        state = self.links.get(link)
+        if state is None:
+            state = self.links[link] = LinkState(link)
+        return state
+
+    def ordered_module(self, planned: PlannedCommand) -> ModuleState:
+        """The module that a command is meant for. Raises LogError where none is known."""
+        try:
+            return self.modules[planned.module]
+        except KeyError as error:
+            raise LogError(
+                f"command {planned.command} is for module {planned.module}, of which no record "
+                "tells; the session's records are not whole"
+            ) from error
+
+    def touch(self, module: ModuleState) -> None:
+        """Mark a module's picture as no longer true."""
+        module.view = None
+        self.changed = True
+
+    def notice(self, at: Moment, text: str) -> None:
+        """Add a line that a person should read."""
+        self.notices.append((at.t_ns, text))

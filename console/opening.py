@@ -1,0 +1,98 @@
+"""Opening a session: ports, clock, log, engine, in the order that leaves nothing half done.
+
+Owns that order and what is undone where a later step fails. Knows no screens.
+"""
+
+import getpass
+from collections.abc import Sequence
+from dataclasses import dataclass
+from importlib.metadata import PackageNotFoundError, version
+from pathlib import Path
+from typing import Final
+
+from console.clock import SessionClock, utc_now, utc_seconds
+from console.engine import Engine
+from console.errors import InputError, LogError
+from console.paths import default_log_path
+from console.port import Port, open_port
+from storage.errors import StorageError
+from storage.records import SessionOpened
+
+PRACTICE_LINK: Final = "sim://?modules=8"
+
+
+@dataclass(frozen=True, slots=True)
+class SessionOptions:
+    """What a person chose for a session. ``log`` None: the default place; ``pace`` None: the
+    port's own (a simulated one says it), else 1."""
+
+    links: tuple[str, ...]
+    log: Path | None = None
+    operator: str = ""
+    rate_baud: int = 921_600
+    pace: float | None = None
+
+
+def program_name() -> str:
+    """Name and version of this program, for the log."""
+    try:
+        return f"tumblewire {version('tumblewire')}"
+    except PackageNotFoundError:
+        return "tumblewire, not installed"
+
+
+def operator_name(given: str) -> str:
+    """The operator as given, else the name under which the person is logged in."""
+    if given:
+        return given
+    try:
+        return getpass.getuser()
+    except (OSError, KeyError, ImportError):
+        return "unnamed"
+
+
+def open_session(options: SessionOptions) -> Engine:
+    """Open ports and log and return a started engine.
+
+    Raises InputError, LinkError or LogError; then nothing is left open and no session is in
+    the log.
+    """
+    ports: list[Port] = []
+    try:
+        ports += [open_port(url, options.rate_baud) for url in options.links]
+        return _start(ports, options)
+    except BaseException:
+        for port in ports:
+            port.close()
+        raise
+
+
+def _start(ports: Sequence[Port], options: SessionOptions) -> Engine:
+    from storage.writer import LogWriter
+
+    pace = _common_pace(ports, options.pace)
+    clock = SessionClock(pace)
+    opened = SessionOpened(
+        t_ns=0,
+        utc=utc_now(),
+        operator=operator_name(options.operator),
+        epoch=utc_seconds(),
+        pace=pace,
+        program=program_name(),
+    )
+    try:
+        log = LogWriter.open(options.log or default_log_path(), opened)
+    except StorageError as error:
+        raise LogError(str(error)) from error
+    engine = Engine(ports, log, clock, opened)
+    engine.start()
+    return engine
+
+
+def _common_pace(ports: Sequence[Port], given: float | None) -> float:
+    paces = {port.pace for port in ports if port.pace != 1.0}
+    if given is not None:
+        paces.add(given)
+    if len(paces) > 1:
+        raise InputError(f"the links run at different paces ({sorted(paces)}); give one")
+    return paces.pop() if paces else 1.0

@@ -1,0 +1,1 @@
+"""Screens: what a person sees whole. Made of widgets; know no protocol and no storage."""

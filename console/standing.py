@@ -1,0 +1,87 @@
+"""What the console keeps doing by itself: calling the roll, and repeating stops and clears.
+
+Owns two small schedules. Time is an argument; neither sends anything, they say what is due.
+"""
+
+from collections.abc import Sequence
+from typing import Final
+
+from console.view import FleetView, ModuleView
+
+ROLL_OPENING_CALLS: Final = 4
+ROLL_OPENING_PERIOD_NS: Final = 300_000_000
+ROLL_HASTE_PERIOD_NS: Final = 500_000_000
+ROLL_CALM_PERIOD_NS: Final = 10_000_000_000
+STOP_PERIOD_NS: Final = 150_000_000
+"""Above the round trip of a busy half-duplex channel, below what a person would wait."""
+STOP_CALM_AFTER: Final = 40
+STOP_CALM_PERIOD_NS: Final = 1_000_000_000
+
+
+class RollCaller:
+    """Says when to call the roll: often at the opening and while somebody is unexplained."""
+
+    def __init__(self) -> None:
+        self._calls = 0
+        self._last_ns: int | None = None
+        self.next_ns: int = 0
+
+    def hurry(self) -> None:
+        """Call at the next chance: a newer epoch is to be offered."""
+        self.next_ns = 0
+
+    def due(self, unexplained: bool, t_ns: int) -> bool:
+        """Whether to call now. ``unexplained``: somebody is heard, but not known in full."""
+        haste_ns = ROLL_HASTE_PERIOD_NS
+        if unexplained and self._last_ns is not None:
+            self.next_ns = min(self.next_ns, self._last_ns + haste_ns)
+        if t_ns < self.next_ns:
+            return False
+        self._calls += 1
+        self._last_ns = t_ns
+        opening = self._calls < ROLL_OPENING_CALLS
+        self.next_ns = t_ns + (ROLL_OPENING_PERIOD_NS if opening else ROLL_CALM_PERIOD_NS)
+        return True
+
+
+def unexplained(modules: Sequence[ModuleView], epoch: int, unknown_heard: bool) -> bool:
+    """Whether the roll must be called: a stranger, a module of another epoch, or no nameplate."""
+    return unknown_heard or any(module.epoch != epoch or not module.kind for module in modules)
+
+
+class StopKeeper:
+    """Says to which modules a stop or a clear must be sent again, and when."""
+
+    def __init__(self) -> None:
+        self._rounds = 0
+        self.next_ns: int | None = None
+
+    def hurry(self, t_ns: int) -> None:
+        """Begin anew: a stop or a clear was given just now to everyone."""
+        self._rounds = 0
+        self.next_ns = t_ns + STOP_PERIOD_NS
+
+    def due(self, view: FleetView, t_ns: int) -> tuple[ModuleView, ...]:
+        """Modules that have not confirmed what is in force, each time a round is due.
+
+        While a stop is in force: those that have not confirmed it. Otherwise: those that still
+        report a latch of it.
+        """
+        waiting = self._waiting(view)
+        if not waiting:
+            self.next_ns = None
+            return ()
+        if self.next_ns is None:
+            self.hurry(t_ns)
+        if self.next_ns is None or t_ns < self.next_ns:
+            return ()
+        self._rounds += 1
+        calm = self._rounds > STOP_CALM_AFTER
+        self.next_ns = t_ns + (STOP_CALM_PERIOD_NS if calm else STOP_PERIOD_NS)
+        return waiting
+
+    @staticmethod
+    def _waiting(view: FleetView) -> tuple[ModuleView, ...]:
+        if view.stop.in_force:
+            return tuple(each for each in view.modules if each.module in view.stop.missing)
+        return tuple(each for each in view.modules if each.latched)

@@ -1,0 +1,1 @@
+"""Widgets: the parts of the screens, and the words and columns that they show."""

@@ -1,0 +1,92 @@
+"""Views: the usual questions, each answered by one SELECT in any SQLite tool.
+
+Owns their statements, as the first migration wrote them. In a view ``module`` is a name, a
+person's latest correction stands over the drawn outcome, and units stand in the names.
+"""
+
+from typing import Final
+
+MOTIONS_NAMED: Final = """
+CREATE VIEW motions_named AS
+SELECT
+    motions.session,
+    motions.command,
+    strftime(
+        '%Y-%m-%dT%H:%M:%fZ',
+        sessions.opened_utc,
+        printf(
+            '%+.3f seconds',
+            (commands.t_ns - sessions.opened_t_ns) / 1e9 / nullif(sessions.pace, 0)
+        )
+    ) AS time_utc,
+    coalesce(nullif(modules.name, ''), modules.identity) AS module,
+    modules.kind,
+    commands.identity,
+    commands.boot,
+    commands.number,
+    motions.simulated,
+    motions.motion,
+    motions.setting,
+    motions.direction,
+    motions.speed_rpm,
+    motions.trial,
+    orders.source,
+    coalesce(corrections.outcome, motions.outcome) AS outcome,
+    motions.outcome AS drawn_outcome,
+    corrections.person AS corrected_by,
+    corrections.reason AS correction_reason,
+    motions.turned_deg,
+    motions.peak_tilt_deg,
+    motions.face_before,
+    motions.face_after,
+    motions.settled,
+    motions.peak_rate_dps,
+    motions.wheel_at_brake_rpm,
+    motions.brake_ms,
+    motions.spin_up_ms,
+    motions.settle_ms,
+    motions.sag_V
+FROM motions
+JOIN sessions ON sessions.session = motions.session
+LEFT JOIN modules
+    ON modules.session = motions.session AND modules.module = motions.module
+LEFT JOIN commands
+    ON commands.session = motions.session AND commands.command = motions.command
+LEFT JOIN orders
+    ON orders.session = commands.session AND orders.order_no = commands.order_no
+LEFT JOIN corrections
+    ON corrections.session = motions.session
+    AND corrections.record = (
+        SELECT max(latest.record) FROM corrections AS latest
+        WHERE latest.session = commands.session
+            AND latest.identity = commands.identity
+            AND latest.boot = commands.boot
+            AND latest.number = commands.number
+    )"""
+"""Every motion with names. ``time_utc``: when it was ordered, fleet time turned to real time."""
+
+# Counted: what a motion that ran its course can come to. A sheet's return motions (trial 0)
+# are no trials; what a person typed is one, whatever its trial number.
+TRIALS_COUNTED: Final = """
+CREATE VIEW trials_counted AS
+SELECT
+    session, command, time_utc, module, kind, identity, motion, setting, direction, speed_rpm,
+    outcome, outcome = 'landed' AS landed, simulated, trial, brake_ms
+FROM motions_named
+WHERE outcome IN ('landed', 'short', 'over', 'stuck', 'adrift')
+    AND (trial > 0 OR source IS NOT 'sheet')"""
+
+SUCCESS: Final = """
+CREATE VIEW success AS
+SELECT
+    module, kind, motion, setting, speed_rpm,
+    count(*) AS trials,
+    sum(landed) AS landed,
+    round(avg(landed), 4) AS rate,
+    simulated
+FROM trials_counted
+GROUP BY module, kind, motion, setting, speed_rpm, simulated
+ORDER BY module, motion, setting, speed_rpm, simulated"""
+"""How often which module succeeds at which speed; ``rate`` from 0 to 1; simulated apart."""
+
+FIRST_VIEWS: Final[tuple[str, ...]] = (MOTIONS_NAMED, TRIALS_COUNTED, SUCCESS)

@@ -1,0 +1,69 @@
+"""The help: complete, narrow enough, opened by key and by word."""
+
+import asyncio
+
+from console.app import FleetApp
+from console.orders import parse_order
+from console.screens.help import ORDERS, help_text
+from console.widgets.status import STOP_KEY
+from console.widgets.words import ACTIVITIES, OUTCOMES, STATES
+from tests.support.fake_fleet import NAMES, FakeFleet, eight, fleet_view, line_with, screen_text
+
+POLL_S = 0.3
+DESK_WORDS = ("stop", "clear")
+
+
+def test_every_glyph_and_word_is_explained() -> None:
+    text = help_text()
+    for word in (*OUTCOMES.values(), *ACTIVITIES.values(), *STATES):
+        assert word.text.strip() in text
+
+
+def test_it_fits_80_columns() -> None:
+    assert max(map(len, help_text().splitlines())) <= 77
+
+
+def test_it_says_what_to_do_when_the_screen_is_frozen() -> None:
+    text = help_text()
+    frozen = text[text.index("FROZEN") : text.index("ORDERS")]
+    assert STOP_KEY in frozen
+    assert "tumblewire stop" in frozen
+
+
+def test_its_example_orders_are_orders() -> None:
+    examples = [line[2:34].strip() for line in ORDERS.splitlines()]
+    orders = [each for each in examples if not each.startswith(DESK_WORDS)]
+    assert len(orders) == 5
+    for text in orders:
+        parse_order(text, NAMES)
+
+
+def test_a_typed_help_opens_it_and_both_keys_close_it() -> None:
+    async def run() -> None:
+        app = FleetApp(FakeFleet(fleet_view(*eight())), operator="Ida", clock_ns=lambda: 0)
+        async with app.run_test(size=(80, 24)) as pilot:
+            for close in ("escape", "f1"):
+                await pilot.press(*"help", "enter")
+                await pilot.pause(POLL_S)
+                assert "KEYS" in screen_text(app)
+                line_with(app, "escape or f1 back")
+                line_with(app, "link open")
+                await pilot.press(close)
+                await pilot.pause(POLL_S)
+                line_with(app, "order>")
+
+    asyncio.run(run())
+
+
+def test_it_scrolls_to_its_end_in_24_lines() -> None:
+    async def run() -> None:
+        app = FleetApp(FakeFleet(fleet_view(*eight())), operator="Ida", clock_ns=lambda: 0)
+        async with app.run_test(size=(80, 24)) as pilot:
+            await pilot.press("f1")
+            await pilot.pause(POLL_S)
+            assert "licensed practice" not in screen_text(app)
+            await pilot.press(*["pagedown"] * 6)
+            await pilot.pause(POLL_S)
+            line_with(app, "licensed practice")
+
+    asyncio.run(run())

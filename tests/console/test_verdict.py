@@ -1,0 +1,125 @@
+"""The verdict: each outcome at its border, and what no facts may ever give."""
+
+import pytest
+from hypothesis import given
+from hypothesis import strategies as st
+
+from console.verdict import COUNTED, LIFT_DDEG, faces_turned, verdict
+from console.view import Outcome
+from protocol.codes import Reason
+from protocol.message import Facts
+from tests.support.wire_script import facts
+
+STAYED = {"face_after": 1, "turned_ddeg": 0}
+UNBRAKED = {"brake_us": 0, "wheel_at_brake_rpm": 0}
+
+
+@pytest.mark.parametrize(
+    ("expected", "changes"),
+    [
+        (Outcome.LANDED, {}),
+        (Outcome.LANDED, {"turned_ddeg": 874}),
+        (Outcome.LANDED, {"turned_ddeg": 450}),
+        (Outcome.LANDED, {"turned_ddeg": 1349}),
+        (Outcome.SHORT, STAYED | {"peak_tilt_ddeg": 430}),
+        (Outcome.SHORT, STAYED | {"peak_tilt_ddeg": 20}),
+        (Outcome.SHORT, {"turned_ddeg": 449, "face_after": 1}),
+        (Outcome.STUCK, STAYED | {"peak_tilt_ddeg": 19}),
+        (Outcome.STUCK, STAYED | {"peak_tilt_ddeg": 0}),
+        (Outcome.STUCK, STAYED | {"peak_tilt_ddeg": -19}),
+        (Outcome.OVER, {"turned_ddeg": 1800, "face_after": 3}),
+        (Outcome.OVER, {"turned_ddeg": 1350, "face_after": 3}),
+        (Outcome.OVER, {"turned_ddeg": 3600, "face_after": 1}),
+        (Outcome.ADRIFT, {"settled": 0}),
+        (Outcome.ADRIFT, {"face_after": 0}),
+        (Outcome.ADRIFT, {"face_after": 0, "turned_ddeg": 1800}),
+        (Outcome.ADRIFT, STAYED | {"settled": 0, "peak_tilt_ddeg": 0}),
+        (Outcome.CUT, STAYED | UNBRAKED | {"reason": Reason.STOPPED, "peak_tilt_ddeg": 0}),
+        (Outcome.CUT, STAYED | UNBRAKED | {"reason": Reason.RESTED, "peak_tilt_ddeg": 0}),
+        (Outcome.CUT, UNBRAKED | {"reason": Reason.STOPPED, "face_after": 0, "settled": 0}),
+    ],
+)
+def test_each_outcome_at_its_border(expected: Outcome, changes: dict[str, int]) -> None:
+    """The table: 900 tenths of a degree are one face; under two degrees nothing lifted."""
+    assert verdict(facts(**changes)) is expected
+
+
+@pytest.mark.parametrize("reason", [Reason.STOPPED, Reason.RESTED])
+def test_a_stop_after_the_brake_changes_no_verdict(reason: Reason) -> None:
+    """A brake already engaged stays engaged, so such a motion is judged by where it ended."""
+    assert verdict(facts(reason=reason)) is Outcome.LANDED
+    assert verdict(facts(reason=reason, **STAYED, peak_tilt_ddeg=300)) is Outcome.SHORT
+
+
+def test_unbraked_without_a_reason_is_no_cut() -> None:
+    """A motion that ran its course is judged even if the brake's time was not measured."""
+    assert verdict(facts(**UNBRAKED)) is Outcome.LANDED
+
+
+def test_a_fall_onto_the_end_of_the_axis_is_adrift() -> None:
+    """No motion about the wheel axis ends there, whatever the gyro has counted."""
+    assert verdict(facts(face_after=5)) is Outcome.ADRIFT
+    assert verdict(facts(face_before=6, face_after=2)) is Outcome.ADRIFT
+
+
+def test_flat_on_the_end_of_the_axis_may_land() -> None:
+    """With the axis upright all along, a quarter turn about it is one face."""
+    assert verdict(facts(face_before=5, face_after=5)) is Outcome.LANDED
+
+
+def test_backwards_is_not_landed() -> None:
+    """A whole face the wrong way: it lifted, and is not where it was ordered to."""
+    assert verdict(facts(turned_ddeg=-900, face_after=4)) is Outcome.SHORT
+
+
+@pytest.mark.parametrize(
+    ("turned_ddeg", "faces"),
+    [(0, 0), (449, 0), (450, 1), (900, 1), (1349, 1), (1350, 2), (-450, 0), (-451, -1), (3600, 4)],
+)
+def test_faces_are_quarter_turns_rounded(turned_ddeg: int, faces: int) -> None:
+    """90 degrees a face, so the border lies at 45."""
+    assert faces_turned(facts(turned_ddeg=turned_ddeg)) == faces
+
+
+ANY_FACTS = st.builds(
+    Facts,
+    epoch=st.just(1),
+    boot=st.just(1),
+    number=st.just(1),
+    reason=st.integers(0, 255),
+    face_before=st.integers(0, 255),
+    face_after=st.integers(0, 255),
+    settled=st.integers(0, 255),
+    turned_ddeg=st.integers(-32768, 32767),
+    peak_tilt_ddeg=st.integers(-32768, 32767),
+    peak_rate_dps=st.integers(0, 65535),
+    wheel_at_brake_rpm=st.integers(0, 65535),
+    brake_us=st.integers(0, 2**32 - 1),
+    spin_up_ms=st.integers(0, 65535),
+    settle_ms=st.integers(0, 65535),
+    sag_mV=st.integers(0, 65535),
+)
+
+
+@given(ANY_FACTS)
+def test_any_facts_have_a_verdict(measured: Facts) -> None:
+    """Whatever a module sends gets one, and none that says that no report came."""
+    outcome = verdict(measured)
+    assert outcome not in {Outcome.UNSEEN, Outcome.REFUSED}
+    if outcome is Outcome.CUT:
+        assert measured.reason != 0
+    else:
+        assert outcome in COUNTED
+
+
+@given(ANY_FACTS, st.integers(0, 65535), st.integers(0, 65535))
+def test_only_what_the_verdict_looks_at_decides(measured: Facts, sag: int, settle: int) -> None:
+    """Battery, times and rates are facts of wear, not of where the module lies."""
+    other = measured._replace(sag_mV=sag, settle_ms=settle, peak_rate_dps=7, spin_up_ms=9)
+    assert verdict(other) is verdict(measured)
+
+
+def test_the_thresholds_are_what_they_are_said_to_be() -> None:
+    """Two degrees, in tenths; and what counts leaves out what says nothing of the module."""
+    assert LIFT_DDEG == 20
+    assert {*Outcome} - COUNTED == {Outcome.REFUSED, Outcome.CUT, Outcome.UNSEEN}

@@ -1,0 +1,344 @@
+"""Thresholds and still torques.
+
+The cases' parameters are invented. Their figures were computed outside this project with
+scipy.integrate.solve_ivp on the equations of motion and, to 1e-5 of it, with the general
+physics library MuJoCo 4.0.0 (a hinge, a wheel, a limited brake); g = 9.81 m/s^2.
+"""
+
+import itertools
+import math
+
+import pytest
+from hypothesis import assume, given, settings
+from hypothesis import strategies as st
+
+from sim_link.errors import SimStateError
+from sim_link.hold import GRAVITY_M_S2, Hold, floor_hold
+from sim_link.kinds import Kind, edge_inertia_kg_m2
+from sim_link.mechanics import (
+    floor_pivot,
+    floor_threshold,
+    hinge_threshold,
+    rest_torque_N_m,
+    tipping_torque_N_m,
+)
+from tests.support.kinds import PLAIN, kind_with
+
+RPM = 60 / (2 * math.pi)
+
+# name: side, mass, wheel inertia, brake torque, T0, theta0, and computed: ideal rpm, least rpm,
+# lock angle rad, brake time s.
+FLOOR = {
+    "high": (
+        (0.04, 0.1, 4.5e-6, 3.924, 0.0, 0.05),
+        (2794.151, 2800.865, 0.001984113, 3.222377e-4),
+    ),
+    "mid": (
+        (0.055, 0.22, 1.1e-5, 0.593505, 0.0, 0.05),
+        (4054.585, 4267.031, 0.04049272, 8.096228e-3),
+    ),
+    "low": (
+        (0.07, 0.4, 3.2e-5, 0.27468, 0.0, 0.05),
+        (3638.56, 5028.785, 0.204264, 0.06053616),
+    ),
+    "barely": (
+        (0.05, 0.16, 8e-6, 0.041202, 0.0, 0.05),
+        (3514.45, 11393.25, 0.3913932, 0.2305618),
+    ),
+    "hold": (
+        (0.08, 0.6, 6e-5, 2.9272, 0.35, 0.06),
+        (3920.625, 4341.109, 0.03969574, 9.13767e-3),
+    ),
+}
+
+# setting: m g r, edge inertia, wheel inertia, brake, T0, theta0, phi0, end in units of pi, and
+# computed: ideal rad/s, least rad/s, lock angle, brake time.
+ELSEWHERE = {
+    "wall": (
+        (0.15 * 9.81 * 0.05 / math.sqrt(2), 2.5e-4, 9e-6, 2.73575, 0.1, 0.05, -0.25, 0.5),
+        (696.4416, 712.815, 0.0277292, 2.264196e-3),
+    ),
+    "crest": (
+        (0.25 * 9.81 * 0.06 / math.sqrt(2), 6e-4, 2.5e-5, 0.5886, 0.0, 0.05, -0.25, 0.75),
+        (583.9876, 624.6484, 0.2909154, 0.02557056),
+    ),
+    "flat": (
+        (0.0, 2.5e-4, 9e-6, 0.36, 0.06, 0.08, 0.0, 0.5),
+        (172.1326, 187.5233, 0.01292494, 4.545178e-3),
+    ),
+}
+
+# Exact over ideal speed of a floor pivot by k, for j = Iw/Ie of 0.03, 0.1 and 0.3.
+RATIOS = [
+    (1.01, 4.796607, 4.638525, 4.151809),
+    (1.05, 3.241829, 3.141647, 2.834194),
+    (1.1, 2.657377, 2.579535, 2.341315),
+    (1.3, 1.904419, 1.857001, 1.713139),
+    (1.6, 1.563486, 1.531387, 1.434942),
+    (2, 1.380291, 1.357299, 1.288847),
+    (3, 1.211808, 1.198105, 1.157835),
+    (5, 1.112823, 1.10517, 1.082929),
+    (10, 1.052125, 1.048474, 1.037952),
+    (30, 1.016548, 1.015366, 1.011977),
+    (100, 1.004884, 1.004532, 1.003527),
+]
+
+
+def _floor_kind(parameters: tuple[float, ...]) -> Kind:
+    side, mass, wheel, brake, magnet, angle = parameters
+    return kind_with(
+        side_m=side,
+        mass_kg=mass,
+        wheel_inertia_kg_m2=wheel,
+        brake_torque_N_m=brake,
+        magnet_torque_N_m=magnet,
+        magnet_angle_rad=angle,
+    )
+
+
+@pytest.mark.parametrize("name", sorted(FLOOR))
+def test_floor_case(name: str) -> None:
+    parameters, (ideal_rpm, least_rpm, lock, brake_s) = FLOOR[name]
+    found = floor_threshold(_floor_kind(parameters))
+    assert found.feasible
+    assert found.reason == ""
+    assert found.w_ideal_rad_s * RPM == pytest.approx(ideal_rpm, rel=1e-6)
+    assert found.w_min_rad_s * RPM == pytest.approx(least_rpm, rel=1e-5)
+    assert found.lock_angle_rad == pytest.approx(lock, rel=1e-5)
+    assert found.brake_s == pytest.approx(brake_s, rel=1e-5)
+
+
+@pytest.mark.parametrize("name", sorted(ELSEWHERE))
+def test_hinge_in_another_setting(name: str) -> None:
+    parameters, (ideal, least, lock, brake_s) = ELSEWHERE[name]
+    moment, edge, wheel, brake, magnet, reach, elevation, end = parameters
+    hold = Hold(moment, elevation * math.pi, end * math.pi, magnet, reach)
+    found = hinge_threshold(hold, edge, wheel, brake)
+    assert found.w_ideal_rad_s == pytest.approx(ideal, rel=1e-6)
+    assert found.w_min_rad_s == pytest.approx(least, rel=1e-5)
+    assert found.lock_angle_rad == pytest.approx(lock, rel=1e-5)
+    assert found.brake_s == pytest.approx(brake_s, rel=1e-5)
+
+
+@pytest.mark.parametrize(("row", "column"), list(itertools.product(range(len(RATIOS)), (1, 2, 3))))
+def test_exact_over_ideal(row: int, column: int) -> None:
+    ratio = RATIOS[row][0]
+    weight = PLAIN.mass_kg * GRAVITY_M_S2 * PLAIN.side_m / 2
+    edge = 2 / 3 * PLAIN.mass_kg * PLAIN.side_m**2
+    wheel = (0.03, 0.1, 0.3)[column - 1] * edge
+    found = hinge_threshold(floor_hold(PLAIN), edge, wheel, ratio * weight)
+    assert found.torque_ratio == pytest.approx(ratio)
+    assert found.w_min_rad_s / found.w_ideal_rad_s == pytest.approx(RATIOS[row][column], rel=2e-6)
+
+
+@given(ratio=st.floats(1.01, 500), part=st.floats(0.001, 0.5), torque=st.floats(1e-3, 10))
+def test_constant_hold_torque_has_a_closed_form(ratio: float, part: float, torque: float) -> None:
+    """w = w_ideal sqrt(1 + (1 - j)/(k - 1)): uniform accelerations, by hand."""
+    edge = 4e-4
+    hold = Hold(0.0, 0.0, 1.2, drag_N_m=torque)
+    found = hinge_threshold(hold, edge, part * edge, ratio * torque)
+    expected = math.sqrt(1 + (1 - part) / (ratio - 1))
+    assert found.w_min_rad_s / found.w_ideal_rad_s == pytest.approx(expected, rel=1e-9)
+
+
+def test_instant_brake_is_the_limit_of_a_strong_one() -> None:
+    found = floor_threshold(kind_with(brake_torque_N_m=1e4))
+    assert found.w_min_rad_s == pytest.approx(found.w_ideal_rad_s, rel=1e-4)
+    assert found.w_min_rad_s > found.w_ideal_rad_s
+
+
+def test_against_an_ordinary_differential_equation_solver() -> None:
+    """scipy.integrate.solve_ivp on Ib theta'' = tau - T, Iw w' = -tau, then Ie theta'' = -T:
+    from the threshold the body reaches top dead centre with no rate to spare."""
+    solve_ivp = pytest.importorskip("scipy.integrate").solve_ivp
+    kind = kind_with(com_offset_m=(0.006, -0.004), magnet_torque_N_m=0.12, brake_torque_N_m=0.6)
+    found, hold, edge = floor_threshold(kind), floor_hold(kind), edge_inertia_kg_m2(kind)
+    wheel, brake = kind.wheel_inertia_kg_m2, kind.brake_torque_N_m
+
+    def slipping(_t: float, y: list[float]) -> list[float]:
+        return [y[1], (brake - hold.torque_N_m(y[0])) / (edge - wheel), -brake / wheel]
+
+    def gap(_t: float, y: list[float]) -> float:
+        return y[2] - y[1]
+
+    gap.terminal = True  # type: ignore[attr-defined]
+    run = solve_ivp(slipping, (0, 1), [0, 0, found.w_min_rad_s], events=gap, rtol=1e-11, atol=1e-13)
+    angle, rate, _ = run.y[:, -1]
+    assert run.t[-1] == pytest.approx(found.brake_s, rel=1e-6)
+    assert angle == pytest.approx(found.lock_angle_rad, rel=1e-6)
+    left = 0.5 * edge * rate**2 - (hold.energy_J(hold.end_rad) - hold.energy_J(angle))
+    assert abs(left) < 1e-7 * hold.energy_J(hold.end_rad)
+
+
+@pytest.mark.parametrize("times_ideal", [1.0, 3.0, 8.0])
+def test_too_weak_a_brake_never_lifts(times_ideal: float) -> None:
+    """k = 0.95; MuJoCo found the body stuck at the same three speeds."""
+    kind = _floor_kind((0.06, 0.28, 2.4e-5, 0.1257838, 0.05, 0.05))
+    found = floor_threshold(kind)
+    assert not found.feasible
+    assert found.torque_ratio == pytest.approx(0.95, rel=1e-6)
+    assert "0.950" in found.reason
+    assert math.isnan(found.w_min_rad_s)
+    assert found.w_over_rad_s is None
+    assert found.w_ideal_rad_s == pytest.approx(292.3639, rel=1e-6)
+    result = floor_pivot(kind, times_ideal * found.w_ideal_rad_s)
+    assert (result.faces, result.turned_rad, result.peak_tilt_rad) == (0, 0.0, 0.0)
+    assert result.settled
+    run_down_s = times_ideal * found.w_ideal_rad_s * 2.4e-5 / 0.1257838
+    assert result.brake_s == pytest.approx(run_down_s)
+
+
+@pytest.mark.parametrize(("part", "feasible"), [(0.6535, False), (0.6548, True)])
+def test_a_wall_can_stall_a_brake_that_lifts(part: float, feasible: bool) -> None:
+    """A wall needs tau > max V/theta = 0.654 m g a, though the hold at rest is m g a / 2.
+
+    0.6541 is the maximum of ((1 + sin x - cos x)/2)/x, found by hand to four digits.
+    """
+    weight_side = 0.3 * GRAVITY_M_S2 * 0.06
+    hold = Hold(weight_side / math.sqrt(2), -math.pi / 4, math.pi / 2)
+    found = hinge_threshold(hold, 7.2e-4, 2e-5, part * weight_side)
+    assert found.torque_ratio > 1.3
+    assert found.feasible is feasible
+    assert ("stalls" in found.reason) is not feasible
+
+
+def test_magnets_hold_only_what_is_held() -> None:
+    magnets = kind_with(magnet_torque_N_m=0.2, held=False)
+    assert floor_hold(magnets).torque_N_m(0.0) == floor_hold(PLAIN).torque_N_m(0.0)
+
+
+def test_brake_onset_delays_and_costs_no_speed() -> None:
+    late = floor_threshold(kind_with(brake_onset_s=0.004))
+    prompt = floor_threshold(PLAIN)
+    assert late.w_min_rad_s == prompt.w_min_rad_s
+    assert late.brake_s == pytest.approx(prompt.brake_s + 0.004)
+    ran, sooner = (floor_pivot(kind_with(brake_onset_s=s), 600.0) for s in (0.004, 0.0))
+    assert ran.settle_s - sooner.settle_s == pytest.approx(0.004)
+    assert ran.brake_s - sooner.brake_s == pytest.approx(0.004)
+
+
+def test_hold_torque_is_the_slope_of_its_energy() -> None:
+    hold = Hold(0.2, 0.7, 0.8, 0.3, 0.06, 0.01)
+    for angle in (0.01, 0.05, 0.3, 0.8):
+        slope = (hold.energy_J(angle + 1e-6) - hold.energy_J(angle - 1e-6)) / 2e-6
+        assert slope == pytest.approx(hold.torque_N_m(angle), rel=1e-7)
+
+
+def test_lift_of_a_uniform_cube_on_the_floor() -> None:
+    """(1/sqrt 2 - 1/2) m g a = 0.2071 m g a."""
+    hold = floor_hold(PLAIN)
+    weight_side = PLAIN.mass_kg * GRAVITY_M_S2 * PLAIN.side_m
+    assert hold.energy_J(hold.end_rad) == pytest.approx((math.sqrt(0.5) - 0.5) * weight_side)
+    assert hold.torque_N_m(0.0) == pytest.approx(weight_side / 2)
+
+
+kinds = st.builds(
+    kind_with,
+    side_m=st.floats(0.03, 0.15),
+    mass_kg=st.floats(0.05, 2.0),
+    wheel_inertia_kg_m2=st.just(5e-6),
+    brake_torque_N_m=st.floats(0.02, 5.0),
+    magnet_torque_N_m=st.sampled_from([0.0, 0.1, 0.5]),
+    magnet_angle_rad=st.floats(0.02, 0.2),
+    spin_up_torque_N_m=st.floats(1e-3, 1.0),
+    floor_friction=st.floats(0.05, 1.2),
+    held=st.booleans(),
+)
+
+
+def _hinged_w_min(kind: Kind) -> float:
+    """Least speed, infinite where there is none."""
+    edge = edge_inertia_kg_m2(kind)
+    found = hinge_threshold(floor_hold(kind), edge, kind.wheel_inertia_kg_m2, kind.brake_torque_N_m)
+    return found.w_min_rad_s if found.feasible else math.inf
+
+
+@given(kind=kinds, factor=st.floats(1.0, 20.0))
+def test_more_brake_torque_never_asks_for_more_speed(kind: Kind, factor: float) -> None:
+    stronger = kind_with(**{**_fields(kind), "brake_torque_N_m": factor * kind.brake_torque_N_m})
+    assert _hinged_w_min(stronger) <= _hinged_w_min(kind) * (1 + 1e-9)
+
+
+@given(kind=kinds, factor=st.floats(1.0, 4.0))
+def test_more_mass_never_asks_for_less_speed(kind: Kind, factor: float) -> None:
+    """For uniform cubes of 0.05 to 8 kg, all else equal: lift and inertia both grow."""
+    heavier = kind_with(**{**_fields(kind), "mass_kg": factor * kind.mass_kg})
+    assert _hinged_w_min(heavier) >= _hinged_w_min(kind) * (1 - 1e-9)
+
+
+def _fields(kind: Kind) -> dict[str, object]:
+    return {name: getattr(kind, name) for name in type(kind).__slots__}
+
+
+@given(
+    kind=kinds,
+    offset=st.tuples(st.floats(-0.3, 0.3), st.floats(-0.3, 0.3)),
+    face_up=st.integers(1, 6),
+    sense=st.sampled_from([1, -1]),
+)
+def test_resting_never_tips(
+    kind: Kind, offset: tuple[float, float], face_up: int, sense: int
+) -> None:
+    shifted = tuple(part * kind.side_m for part in offset)
+    kind = kind_with(**{**_fields(kind), "com_offset_m": shifted})
+    rest = rest_torque_N_m(kind, face_up, sense)
+    assert 0.0 < rest <= kind.spin_up_torque_N_m
+    assert rest <= tipping_torque_N_m(kind, face_up, sense) / 2
+
+
+@given(kind=kinds, face_up=st.integers(1, 4), sense=st.sampled_from([1, -1]))
+@settings(max_examples=25, deadline=None)
+def test_resting_torque_as_a_brake_leaves_the_body_where_it_is(
+    kind: Kind, face_up: int, sense: int
+) -> None:
+    """Even applied at once, as a brake would, the resting torque lifts no edge."""
+    torque = rest_torque_N_m(kind, face_up, sense)
+    gentle = kind_with(**{**_fields(kind), "brake_torque_N_m": torque})
+    assert floor_pivot(gentle, 500.0, face_up, sense).peak_tilt_rad == 0.0
+
+
+def test_tipping_torque_by_hand() -> None:
+    """Weight 3 N (0.3058 kg): levers 35 and 25 mm of a 60 mm cube, 5 mm off centre."""
+    kind = kind_with(mass_kg=3 / 9.81, com_offset_m=(0.005, 0.002), magnet_torque_N_m=0.04)
+    assert tipping_torque_N_m(kind, 1, 1) == pytest.approx(0.105 + 0.04)
+    assert tipping_torque_N_m(kind, 1, -1) == pytest.approx(0.075 + 0.04)
+    assert tipping_torque_N_m(kind, 3, 1) == pytest.approx(0.075 + 0.04)
+    assert tipping_torque_N_m(kind, 2, 1) == pytest.approx(3 * 0.028 + 0.04)
+    free = kind_with(mass_kg=3 / 9.81, com_offset_m=(0.005, 0.002), held=False)
+    assert tipping_torque_N_m(free, 1, 1) == pytest.approx(0.105)
+
+
+def test_yaw_friction_of_an_upright_axis_by_summing_over_the_face() -> None:
+    """Torque of uniform Coulomb friction about the centre: mu p times the sum of distances."""
+    cells = [(i + 0.5) / 200 - 0.5 for i in range(200)]
+    mean = sum(math.hypot(x, y) for x in cells for y in cells) / 200**2
+    weight = PLAIN.mass_kg * GRAVITY_M_S2
+    expected = PLAIN.floor_friction * weight * PLAIN.side_m * mean
+    for face_up, sense in itertools.product((5, 6), (1, -1)):
+        assert tipping_torque_N_m(PLAIN, face_up, sense) == pytest.approx(expected, rel=1e-4)
+
+
+@pytest.mark.parametrize(("face_up", "sense"), [(0, 1), (7, 1), (-1, 1), (1, 0), (1, 2)])
+def test_refuses_a_posture_that_is_none(face_up: int, sense: int) -> None:
+    for ask in (tipping_torque_N_m, rest_torque_N_m, floor_threshold):
+        with pytest.raises(SimStateError):
+            ask(PLAIN, face_up, sense)
+
+
+@pytest.mark.parametrize("speed", [-1.0, math.nan, math.inf])
+def test_refuses_a_wheel_speed_that_is_none(speed: float) -> None:
+    with pytest.raises(SimStateError, match="wheel speed"):
+        floor_pivot(PLAIN, speed)
+
+
+@given(kind=kinds)
+@settings(max_examples=25, deadline=None)
+def test_threshold_and_motion_agree(kind: Kind) -> None:
+    """Quadrature and the followed motion are two ways to one answer; here within 1e-3, as
+    is asked of both, for held hinges of every strength above k = 1.02."""
+    kind = kind_with(**{**_fields(kind), "held": True})
+    w_min = _hinged_w_min(kind)
+    assume(kind.brake_torque_N_m > 1.02 * floor_hold(kind).torque_N_m(0.0))
+    below, above = (floor_pivot(kind, w_min * part) for part in (0.999, 1.001))
+    assert (below.faces, above.faces) == (0, 1)
+    assert below.peak_tilt_rad < floor_hold(kind).end_rad < above.peak_tilt_rad

@@ -1,0 +1,344 @@
+"""The motion after braking: outcomes, events and what must be conserved.
+
+Figures marked "computed" come from scipy.integrate.solve_ivp with events on the equations of
+motion, or from the general physics library MuJoCo 4.0.0, for invented parameters; g = 9.81.
+"""
+
+import math
+from itertools import pairwise
+from typing import Any
+
+import pytest
+from hypothesis import given, settings
+from hypothesis import strategies as st
+
+from sim_link import contact
+from sim_link.contact import Footing, body_of, push
+from sim_link.hold import GRAVITY_M_S2, floor_hold
+from sim_link.kinds import Kind, centre_inertia_kg_m2, edge_inertia_kg_m2
+from sim_link.mechanics import floor_pivot, floor_threshold
+from sim_link.motion import Moment, Phase
+from sim_link.tumble import tumble
+from tests.support.kinds import PLAIN, kind_with
+
+
+def followed(kind: Kind, speed: float, sense: int = 1) -> list[Moment]:
+    moments: list[Moment] = []
+    tumble(body_of(kind, 1, sense), kind.brake_onset_s, speed, moments.append)
+    return moments
+
+
+def body_energy(kind: Kind, moment: Moment) -> float:
+    """Kinetic and potential energy of the module, wheel locked (its rate the body's)."""
+    turning = 0.5 * centre_inertia_kg_m2(kind) * moment.rate_rad_s**2
+    moving = 0.5 * kind.mass_kg * (moment.vx_m_s**2 + moment.vz_m_s**2)
+    return turning + moving + kind.mass_kg * GRAVITY_M_S2 * moment.height_m
+
+
+def least_speed(kind: Kind, faces: int, low: float, high: float) -> float:
+    """Halving between a speed that turns fewer faces and one that turns enough."""
+    assert floor_pivot(kind, low).faces < faces <= floor_pivot(kind, high).faces
+    while high - low > 1e-7 * high:
+        middle = (low + high) / 2
+        low, high = (low, middle) if floor_pivot(kind, middle).faces >= faces else (middle, high)
+    return high
+
+
+def _hinged(side: float, mass: float, wheel: float, brake: float, **more: Any) -> Kind:
+    return kind_with(
+        side_m=side, mass_kg=mass, wheel_inertia_kg_m2=wheel, brake_torque_N_m=brake, **more
+    )
+
+
+# --- held: outcomes ----------------------------------------------------------------------
+
+HELD = [
+    (_hinged(0.04, 0.1, 4.5e-6, 3.924), 293.3059),
+    (_hinged(0.055, 0.22, 1.1e-5, 0.593505), 446.8424),
+    (_hinged(0.07, 0.4, 3.2e-5, 0.27468), 526.6131),
+    (_hinged(0.05, 0.16, 8e-6, 0.041202), 1193.098),
+    (_hinged(0.08, 0.6, 6e-5, 2.9272, magnet_torque_N_m=0.35, magnet_angle_rad=0.06), 454.5999),
+]
+
+
+@pytest.mark.parametrize(("kind", "computed"), HELD)
+def test_held_module_lands_from_the_computed_threshold_on(kind: Kind, computed: float) -> None:
+    short, landed = (
+        floor_pivot(kind, computed * (1 - 1e-5)),
+        floor_pivot(kind, computed * (1 + 1e-5)),
+    )
+    assert (short.faces, short.turned_rad) == (0, 0.0)
+    assert (landed.faces, landed.turned_rad) == (1, pytest.approx(math.pi / 2))
+    assert short.peak_tilt_rad == pytest.approx(math.pi / 4, abs=0.02)
+    assert landed.peak_tilt_rad >= math.pi / 2
+    assert short.settled
+    assert landed.settled
+
+
+@pytest.mark.parametrize(
+    ("kind", "computed"),
+    [(HELD[0][0], 1173.255), (HELD[1][0], 1777.068), (HELD[2][0], 1455.222)],
+)
+def test_second_face_of_a_held_module(kind: Kind, computed: float) -> None:
+    """Computed by solve_ivp: locked before landing 4.00 and 3.98 times the least speed; still
+    slipping at landing, 2.76 times."""
+    over = floor_threshold(kind).w_over_rad_s
+    assert over == pytest.approx(computed, rel=5e-4)
+    assert floor_pivot(kind, computed * 0.999).faces == 1
+    assert floor_pivot(kind, computed * 1.001).faces == 2
+
+
+def test_plastic_landing_keeps_a_quarter_of_the_rate() -> None:
+    """Ic/Ie = 1/4 for a uniform cube with a locked wheel: angular momentum about the edge."""
+    kind = HELD[0][0]
+    moments = followed(kind, 900.0)
+    landed = next(i for i, m in enumerate(moments) if m.angle_rad == math.pi / 2)
+    before, after = moments[landed - 1], moments[landed]
+    assert not before.slipping
+    fall = kind.mass_kg * GRAVITY_M_S2 * (before.height_m - after.height_m)
+    struck = math.sqrt(before.rate_rad_s**2 + 2 * fall / edge_inertia_kg_m2(kind))
+    assert after.rate_rad_s == pytest.approx(struck / 4, rel=1e-6)
+
+
+def test_restitution_throws_back_and_settles_later() -> None:
+    w_min = floor_threshold(PLAIN).w_min_rad_s
+    plastic = floor_pivot(PLAIN, 1.3 * w_min)
+    springy = floor_pivot(kind_with(restitution=0.4), 1.3 * w_min)
+    assert plastic.faces == springy.faces == 1
+    assert springy.settle_s > plastic.settle_s
+    assert springy.settled
+
+
+def test_bounce_can_carry_a_held_module_back() -> None:
+    """Thrown back at e times the landing rate it passes top dead centre again where
+    e^2 E > lift: with E = 1.5^2 lift that is e > 2/3."""
+    for restitution, faces in ((0.60, 1), (0.72, 0)):
+        kind = kind_with(restitution=restitution, brake_torque_N_m=500.0)
+        result = floor_pivot(kind, 1.5 * floor_threshold(kind).w_ideal_rad_s)
+        assert result.faces == faces, restitution
+        assert result.peak_tilt_rad == pytest.approx(math.pi / 2, abs=1e-6)
+
+
+def test_a_wheel_at_rest_moves_nothing() -> None:
+    result = floor_pivot(kind_with(brake_onset_s=0.002), 0.0)
+    assert result.faces == 0
+    assert result.peak_tilt_rad == result.peak_rate_rad_s == 0.0
+    assert result.settled
+    assert result.settle_s == 0.002
+
+
+def test_peak_rate_of_an_instant_brake() -> None:
+    """Iw w / Ie, angular momentum about the edge, where the body then slows uphill."""
+    kind = kind_with(brake_torque_N_m=5000.0)
+    speed = 0.5 * floor_threshold(kind).w_ideal_rad_s
+    expected = kind.wheel_inertia_kg_m2 * speed / edge_inertia_kg_m2(kind)
+    assert floor_pivot(kind, speed).peak_rate_rad_s == pytest.approx(expected, rel=1e-3)
+
+
+def test_peak_tilt_of_a_short_motion_by_energy() -> None:
+    """An instant brake leaves Ie (Iw w/Ie)^2 / 2, all of it height at the turning point."""
+    kind = kind_with(brake_torque_N_m=5000.0)
+    speed = 0.8 * floor_threshold(kind).w_ideal_rad_s
+    hold, edge = floor_hold(kind), edge_inertia_kg_m2(kind)
+    energy = (kind.wheel_inertia_kg_m2 * speed) ** 2 / (2 * edge)
+    assert hold.energy_J(floor_pivot(kind, speed).peak_tilt_rad) == pytest.approx(energy, rel=1e-3)
+
+
+def test_short_swing_lasts_as_long_as_the_linear_pendulum_says() -> None:
+    """A nudge of 0.01 rad against a nearly constant torque: 2 rate Ie / T up and down again."""
+    kind = kind_with(brake_torque_N_m=5000.0)
+    edge, torque = edge_inertia_kg_m2(kind), floor_hold(kind).torque_N_m(0.0)
+    rate = math.sqrt(2 * 0.01 * torque / edge)
+    moments = followed(kind, rate * edge / kind.wheel_inertia_kg_m2)
+    back = next(m for m in moments[5:] if m.angle_rad == 0.0)
+    assert back.t_s == pytest.approx(2 * rate * edge / torque, rel=0.01)
+
+
+# --- not held ----------------------------------------------------------------------------
+
+
+def test_free_module_that_sticks_needs_what_a_hinge_needs() -> None:
+    """k = 3, mu = 0.9: MuJoCo with contacts found 445.95 to 445.98 rad/s, the hinge 445.98."""
+    kind = _hinged(0.05, 0.16, 8e-6, 0.11772, held=False, floor_friction=0.9)
+    assert least_speed(kind, 1, 440.0, 450.0) == pytest.approx(445.9807, rel=1e-4)
+    assert floor_threshold(kind).w_min_rad_s == pytest.approx(445.9847, rel=1e-6)
+
+
+def test_hop_of_a_free_module() -> None:
+    """k = 150, mu = 1.2, three times the ideal speed: computed, the corner slides before the
+    wheel locks; lock at 0.02397 rad and 1.456 ms, rate 32.912 rad/s, upward 0.80285 m/s, rise
+    33.445 mm (MuJoCo with ever stiffer contacts: 33.66, 33.56, 33.47 mm)."""
+    kind = _hinged(0.05, 0.16, 8e-6, 5.886, held=False, floor_friction=1.2)
+    moments = followed(kind, 1104.097)
+    off = next(m for m in moments if m.phase is Phase.FLIGHT)
+    assert off.angle_rad == pytest.approx(0.02397, rel=1e-3)
+    assert off.t_s == pytest.approx(1.456e-3, rel=1e-3)
+    assert off.rate_rad_s == pytest.approx(32.912, rel=1e-4)
+    assert off.vz_m_s == pytest.approx(0.80285, rel=1e-4)
+    assert max(m.height_m for m in moments) - 0.025 == pytest.approx(33.445e-3, rel=5e-4)
+
+
+@pytest.mark.parametrize("friction", [0.05, 0.3, 0.6])
+def test_instant_brake_on_a_sliding_corner(friction: float) -> None:
+    """Rate after = Iw w / (Ic + m a^2 (1 + mu)/4): the ground's impulse N acts at half a side
+    before the centre of mass, mu N at half a side below it."""
+    kind = kind_with(brake_torque_N_m=2e5, held=False, floor_friction=friction)
+    locked = next(m for m in followed(kind, 300.0) if not m.slipping)
+    moment = kind.mass_kg * kind.side_m**2
+    expected = kind.wheel_inertia_kg_m2 * 300.0 / (moment / 6 + moment * (1 + friction) / 4)
+    assert locked.rate_rad_s == pytest.approx(expected, rel=1e-3)
+
+
+@pytest.mark.parametrize(("ratio", "slides"), [(1.5, False), (3.0, False), (5.0, True)])
+def test_friction_needed_to_stick_at_the_start(ratio: float, slides: bool) -> None:
+    """x/(1 + x) with x = a theta''/(2 g) is 0.23, 0.44 and 0.62 for these, just above and
+    below a friction of 0.55."""
+    weight = PLAIN.mass_kg * GRAVITY_M_S2 * PLAIN.side_m / 2
+    kind = kind_with(brake_torque_N_m=ratio * weight, held=False, floor_friction=0.55)
+    inertia = edge_inertia_kg_m2(kind) - kind.wheel_inertia_kg_m2
+    x = kind.side_m * (ratio - 1) * weight / inertia / (2 * GRAVITY_M_S2)
+    pull = contact.stick(body_of(kind), Footing(0, push(body_of(kind), slipping=True)), 0.0, 0.0)
+    assert pull.friction_N / pull.normal_N == pytest.approx(x / (1 + x))
+    early = followed(kind, 400.0)[1]
+    corner_speed = early.vx_m_s - early.rate_rad_s * early.height_m
+    assert (corner_speed < -1e-6) is slides
+
+
+def test_normal_force_vanishes_at_the_textbook_rate() -> None:
+    """Locked and flat on the floor: theta'^2 = 1.25 g/a for a uniform cube."""
+    kind = kind_with(held=False)
+    footing = Footing(0, push(body_of(kind), slipping=False))
+    rate = math.sqrt(1.25 * GRAVITY_M_S2 / kind.side_m)
+    assert contact.stick(body_of(kind), footing, 0.0, rate * 0.9999).normal_N > 0
+    assert contact.stick(body_of(kind), footing, 0.0, rate * 1.0001).normal_N < 0
+
+
+def test_over_of_a_free_module_comes_early_and_depends_on_friction() -> None:
+    """With a near-instant brake `over` begins at 1.5 to 1.75 times the ideal speed, where a
+    held one needs 4 times."""
+    over = {}
+    for friction in (0.5, 0.9):
+        kind = _hinged(0.05, 0.16, 8e-6, 5.886, held=False, floor_friction=friction)
+        found = floor_threshold(kind)
+        assert found.w_over_rad_s is not None
+        over[friction] = found.w_over_rad_s / found.w_ideal_rad_s
+    assert 1.5 < over[0.5] < over[0.9] < 1.75
+
+
+def test_sliding_threshold_is_where_the_motion_lands() -> None:
+    kind = _hinged(0.05, 0.16, 8e-6, 0.6, held=False, floor_friction=0.3)
+    found = floor_threshold(kind)
+    assert found.feasible
+    assert floor_pivot(kind, found.w_min_rad_s * 0.9999).faces == 0
+    assert floor_pivot(kind, found.w_min_rad_s * 1.0001).faces == 1
+    assert (
+        found.w_min_rad_s
+        < floor_threshold(kind_with(**{**_fields(kind), "held": True})).w_min_rad_s
+    )
+
+
+def test_bouncing_free_module_comes_to_rest() -> None:
+    for restitution in (0.1, 0.3, 0.6):
+        kind = kind_with(held=False, restitution=restitution)
+        result = floor_pivot(kind, 900.0)
+        assert result.settled, restitution
+        assert result.turned_rad == pytest.approx(result.faces * math.pi / 2)
+
+
+def _fields(kind: Kind) -> dict[str, object]:
+    return {name: getattr(kind, name) for name in type(kind).__slots__}
+
+
+# --- conservation ------------------------------------------------------------------------
+
+speeds = st.floats(200.0, 2500.0)
+free_kinds = st.builds(
+    kind_with,
+    held=st.just(False),
+    brake_torque_N_m=st.floats(0.15, 20.0),
+    floor_friction=st.floats(0.1, 1.1),
+    com_offset_m=st.tuples(st.floats(-0.006, 0.006), st.floats(-0.006, 0.006)),
+    restitution=st.sampled_from([0.0, 0.0, 0.3]),
+)
+
+
+@given(kind=free_kinds, speed=speeds)
+@settings(max_examples=30, deadline=None)
+def test_free_flight_conserves_energy_rate_and_forward_speed(kind: Kind, speed: float) -> None:
+    for one, two in pairwise(followed(kind, speed)):
+        if one.phase is two.phase is Phase.FLIGHT and not one.slipping and one.vx_m_s == two.vx_m_s:
+            assert two.rate_rad_s == one.rate_rad_s
+            assert body_energy(kind, two) == pytest.approx(body_energy(kind, one), rel=1e-9)
+
+
+@given(kind=free_kinds, speed=speeds)
+@settings(max_examples=30, deadline=None)
+def test_locked_body_never_gains_energy_and_always_comes_to_rest(kind: Kind, speed: float) -> None:
+    """Sliding and landing take energy, nothing gives any; nothing sinks into the floor."""
+    moments = followed(kind, speed)
+    assert moments[-1].phase is Phase.FLAT
+    start = kind.mass_kg * GRAVITY_M_S2 * kind.side_m
+    for one, two in pairwise(moments):
+        if not one.slipping:
+            assert body_energy(kind, two) <= body_energy(kind, one) + 1e-6 * start
+        corner = contact.lowest_corner(two.angle_rad)
+        _, clear = contact.arm_m(body_of(kind), corner, two.angle_rad)
+        assert two.height_m >= clear - 1e-8 * kind.side_m
+
+
+@given(
+    speed=st.floats(100.0, 1500.0),
+    brake=st.floats(0.12, 50.0),
+    magnet=st.sampled_from([0.0, 0.02]),
+)
+@settings(max_examples=30, deadline=None)
+def test_held_body_conserves_energy_between_landings(
+    speed: float, brake: float, magnet: float
+) -> None:
+    """Locked: Ie rate^2/2 + V is constant until the face comes down, to 1e-6 of the lift.
+    Slipping: the brake's work tau theta is all there is, Ib rate^2/2 + V = tau theta."""
+    kind = kind_with(brake_torque_N_m=brake, magnet_torque_N_m=magnet)
+    hold, edge = floor_hold(kind), edge_inertia_kg_m2(kind)
+    lift = hold.energy_J(hold.end_rad)
+    locked: list[float] = []
+    for moment in followed(kind, speed):
+        if moment.angle_rad >= math.pi / 2 or (locked and moment.angle_rad == 0.0):
+            break
+        if moment.slipping:
+            turning = 0.5 * (edge - kind.wheel_inertia_kg_m2) * moment.rate_rad_s**2
+            work = brake * moment.angle_rad
+            assert turning + hold.energy_J(moment.angle_rad) == pytest.approx(work, abs=1e-6 * lift)
+        else:
+            locked.append(0.5 * edge * moment.rate_rad_s**2 + hold.energy_J(moment.angle_rad))
+    assert locked
+    assert max(locked) - min(locked) < 1e-6 * max(lift, locked[0])
+
+
+@given(kind=free_kinds, speed=speeds, held=st.booleans())
+@settings(max_examples=30, deadline=None)
+def test_result_is_whole_and_the_same_each_time(kind: Kind, speed: float, held: bool) -> None:
+    kind = kind_with(**{**_fields(kind), "held": held})
+    result = floor_pivot(kind, speed)
+    assert result == floor_pivot(kind, speed)
+    assert result.settled
+    assert result.turned_rad == pytest.approx(result.faces * math.pi / 2)
+    assert result.peak_tilt_rad >= abs(result.turned_rad) - 1e-9
+    assert 0.0 < result.brake_s <= result.settle_s
+
+
+@given(
+    offset=st.tuples(st.floats(-0.01, 0.01), st.floats(-0.01, 0.01)),
+    speed=speeds,
+    face_up=st.integers(1, 4),
+)
+@settings(max_examples=30, deadline=None)
+def test_back_is_forward_in_a_mirror(
+    offset: tuple[float, float], speed: float, face_up: int
+) -> None:
+    """A module seen from its other side: the offset mirrored, faces 2 and 4 exchanged."""
+    kind = kind_with(com_offset_m=offset, held=False)
+    mirrored = kind_with(com_offset_m=(-offset[0], offset[1]), held=False)
+    other = {1: 1, 2: 4, 3: 3, 4: 2}[face_up]
+    assert (
+        floor_pivot(kind, speed, face_up, 1).faces == floor_pivot(mirrored, speed, other, -1).faces
+    )

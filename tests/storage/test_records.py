@@ -1,0 +1,132 @@
+"""Records come back from their stored form as they were, and damage is told apart."""
+
+import json
+from dataclasses import FrozenInstanceError
+from typing import Any
+
+import pytest
+from hypothesis import given
+from hypothesis import strategies as st
+
+from storage.errors import LogUnavailableError, StorageError
+from storage.records import (
+    BytesIn,
+    BytesOut,
+    CommandExpired,
+    Correction,
+    LinkChanged,
+    OrderGiven,
+    Remark,
+    SessionOpened,
+    note_body,
+    note_sort,
+    read_note,
+)
+from tests.support.log_samples import NOTE_TYPES, OPENED, RECORD_TYPES, built, planned
+
+
+@given(st.one_of([built(each) for each in NOTE_TYPES]))
+def test_every_note_comes_back_as_it_was(record: Any) -> None:
+    assert read_note(note_sort(record), record.t_ns, note_body(record)) == record
+
+
+@given(st.one_of([built(each) for each in NOTE_TYPES]))
+def test_a_stored_body_is_one_json_object_without_the_time(record: Any) -> None:
+    body = json.loads(note_body(record))
+    assert isinstance(body, dict)
+    assert "t_ns" not in body
+
+
+def test_sorts_are_distinct() -> None:
+    assert len({each.__name__ for each in NOTE_TYPES}) == len(NOTE_TYPES) >= 12
+
+
+@pytest.mark.parametrize("cls", RECORD_TYPES)
+def test_records_begin_with_their_time_and_cannot_be_changed(cls: Any) -> None:
+    assert next(iter(cls.__dataclass_fields__)) == "t_ns"
+    assert cls.__dataclass_params__.frozen
+    assert "__slots__" in vars(cls)
+
+
+def test_a_record_is_frozen() -> None:
+    record = CommandExpired(1, 2)
+    with pytest.raises(FrozenInstanceError):
+        record.command = 3  # type: ignore[misc]
+
+
+def test_an_identity_of_64_bits_survives_json() -> None:
+    given_order = OrderGiven(1, 1, "birch pivot back at 4350", "typed", (planned(1), planned(2)))
+    again = read_note("OrderGiven", 1, note_body(given_order))
+    assert isinstance(again, OrderGiven)
+    assert again.commands[0].identity == 2**64 - 1
+    assert isinstance(again.commands, tuple)
+
+
+def test_the_stored_form_of_a_session_is_what_old_logs_hold() -> None:
+    """Written by hand: a log must stay readable, so names and sorts never change."""
+    body = (
+        '{"utc":"2026-03-02T08:00:00Z","operator":"Mira","epoch":1772438400,"pace":1.0,'
+        '"program":"tumblewire 0.1.0"}'
+    )
+    assert read_note("SessionOpened", 5_000_000_000, body) == OPENED
+    assert note_body(OPENED) == body
+
+
+def test_the_stored_form_of_a_correction_is_what_old_logs_hold() -> None:
+    body = (
+        '{"utc":"u","identity":161,"boot":77,"number":101,"outcome":"landed","person":"Jo",'
+        '"reason":"the wall moved"}'
+    )
+    expected = Correction(9, "u", 161, 77, 101, "landed", "Jo", "the wall moved")
+    assert read_note("Correction", 9, body) == expected
+
+
+def test_text_beyond_ascii_is_stored_readably() -> None:
+    assert "Zoë" in note_body(Remark(1, "u", "Zoë", "übergekippt"))
+
+
+def test_text_that_is_no_utf8_survives() -> None:
+    """A device name in another encoding reaches Python with lone surrogates (PEP 383)."""
+    record = LinkChanged(1, 0, b"/dev/tty\xff".decode(errors="surrogateescape"), "open", "")
+    body = note_body(record)
+    assert body.encode()
+    assert read_note("LinkChanged", 1, body) == record
+
+
+@pytest.mark.parametrize(
+    ("sort", "body"),
+    [
+        ("Unheard", "{}"),
+        ("BytesIn", '{"link":0,"data":"00"}'),
+        ("CommandExpired", "{}"),
+        ("CommandExpired", '{"command":1,"extra":2}'),
+        ("CommandExpired", '{"command":1,"t_ns":2}'),
+        ("CommandExpired", "not json"),
+        ("CommandExpired", "[1]"),
+        ("CommandExpired", "null"),
+        ("OrderGiven", '{"order":1,"text":"","source":""}'),
+        ("OrderGiven", '{"order":1,"text":"","source":"","commands":[{"command":1}]}'),
+        ("OrderGiven", '{"order":1,"text":"","source":"","commands":[7]}'),
+        ("OrderGiven", "[]"),
+    ],
+)
+def test_a_damaged_record_is_the_logs_fault(sort: str, body: str) -> None:
+    with pytest.raises(LogUnavailableError) as caught:
+        read_note(sort, 1, body)
+    assert sort in str(caught.value)
+    assert "\n" not in str(caught.value)
+    assert isinstance(caught.value, StorageError)
+
+
+def test_bytes_records_differ_by_direction() -> None:
+    assert BytesIn(1, 0, b"x") != BytesOut(1, 0, b"x")
+
+
+def test_session_opened_is_hashable_and_comparable() -> None:
+    assert (
+        SessionOpened(
+            5_000_000_000, "2026-03-02T08:00:00Z", "Mira", 1_772_438_400, 1.0, "tumblewire 0.1.0"
+        )
+        == OPENED
+    )
+    assert len({OPENED, OPENED}) == 1

@@ -1,0 +1,244 @@
+"""The file is a log of ours, in this version's layout, or it is refused and left alone."""
+
+import sqlite3
+import subprocess
+import sys
+from pathlib import Path
+from typing import Any
+
+import pytest
+
+from storage.errors import LogUnavailableError
+from storage.inserts import columns_of
+from storage.rows import TABLES
+from storage.schema import APPLICATION_ID, MIGRATION_SET, MIGRATIONS, migrations, open_log
+from tests.support.log_samples import ROW_TYPES, ask
+
+SQL_TYPES = {int: "INTEGER", str: "TEXT", float: "REAL"}
+
+
+@pytest.fixture
+def log(tmp_path: Path) -> Path:
+    path = tmp_path / "fleet.db"
+    open_log(path).close()
+    return path
+
+
+def declared(annotation: Any) -> tuple[str, int]:
+    """SQL type and NOT NULL that an annotation of a row asks for."""
+    for python_type, sql_type in SQL_TYPES.items():
+        if annotation is python_type:
+            return sql_type, 1
+        if annotation == python_type | None:
+            return sql_type, 0
+    raise AssertionError(f"no column type for {annotation}")
+
+
+@pytest.mark.parametrize("row_type", ROW_TYPES)
+def test_columns_follow_the_row_type(row_type: Any, log: Path) -> None:
+    """Names, order, types, NOT NULL and key, so that schema and rows cannot drift apart."""
+    table = TABLES[row_type]
+    columns = ask(log, f"PRAGMA table_info({table.name})")
+    expected = [("session", "INTEGER", 1)]
+    expected += [(name, *declared(hint)) for name, hint in row_type.__annotations__.items()]
+    assert [(name, sql_type, not_null) for _, name, sql_type, not_null, _, _ in columns] == expected
+    key = sorted((order, name) for _, name, _, _, _, order in columns if order)
+    assert tuple(name for _, name in key) == ("session", *table.key)
+
+
+@pytest.mark.parametrize("table", ["wire", "records"])
+def test_columns_of_the_records_tables(table: str, log: Path) -> None:
+    names = [column[1] for column in ask(log, f"PRAGMA table_info({table})")]
+    assert names == ["session", *columns_of(table)]
+    assert names[:3] == ["session", "record", "t_ns"]
+
+
+def test_all_tables_and_views_are_there(log: Path) -> None:
+    found = {name for (name,) in ask(log, "SELECT name FROM sqlite_master WHERE type = 'table'")}
+    expected = {table.name for table in TABLES.values()} | {"sessions", "wire", "records"}
+    assert expected <= found
+    views = {name for (name,) in ask(log, "SELECT name FROM sqlite_master WHERE type = 'view'")}
+    assert views == {"motions_named", "trials_counted", "success"}
+
+
+def test_fast_tables_keep_one_tree_only(log: Path) -> None:
+    """Without rowid there is no second index beside the key."""
+    indexes = ask(log, "SELECT tbl_name FROM sqlite_master WHERE type = 'index'")
+    assert not {("telemetry",), ("wire",), ("commands",), ("motions",)} & set(indexes)
+
+
+def test_the_mark_stands_where_the_file_format_puts_it(log: Path) -> None:
+    """SQLite's file format, section 1.3: application id, big-endian, at offset 68."""
+    raw = log.read_bytes()
+    assert raw[:16] == b"SQLite format 3\0"
+    assert raw[68:72] == b"TmbW"
+    assert int.from_bytes(b"TmbW", "big") == APPLICATION_ID
+
+
+def test_wal_mode_stays_with_the_file(log: Path) -> None:
+    assert ask(log, "PRAGMA journal_mode") == [("wal",)]
+
+
+def test_sqlite_utils_knows_what_was_applied(log: Path) -> None:
+    database = pytest.importorskip("sqlite_utils").Database(log)
+    assert [each.name for each in migrations().applied(database)] == list(MIGRATIONS)
+    assert migrations().pending(database) == []
+    database.conn.close()
+
+
+def test_opening_again_changes_nothing(log: Path) -> None:
+    before = ask(log, "SELECT type, name, sql FROM sqlite_master ORDER BY name")
+    open_log(log).close()
+    assert ask(log, "SELECT type, name, sql FROM sqlite_master ORDER BY name") == before
+
+
+def test_opening_again_does_not_import_sqlite_utils(log: Path) -> None:
+    program = (
+        "import sys; from pathlib import Path; from storage.schema import open_log;"
+        "open_log(Path(sys.argv[1])).close(); print('sqlite_utils' in sys.modules)"
+    )
+    done = subprocess.run(
+        [sys.executable, "-c", program, str(log)], capture_output=True, text=True, check=True
+    )
+    assert done.stdout.strip() == "False"
+
+
+def test_missing_folders_are_made(tmp_path: Path) -> None:
+    path = tmp_path / "a" / "b" / "fleet.db"
+    open_log(path).close()
+    assert path.is_file()
+
+
+def test_odd_characters_in_a_path_are_no_uri(tmp_path: Path) -> None:
+    path = tmp_path / "50% of #2? – ü.db"
+    open_log(path).close()
+    assert path.is_file()
+    assert [each.name for each in tmp_path.iterdir()] == [path.name]
+
+
+def test_an_empty_file_becomes_a_log(tmp_path: Path) -> None:
+    path = tmp_path / "empty.db"
+    path.touch()
+    open_log(path).close()
+    assert ask(path, "SELECT count(*) FROM sessions") == [(0,)]
+
+
+def refusal(path: Path) -> str:
+    with pytest.raises(LogUnavailableError) as caught:
+        open_log(path)
+    text = str(caught.value)
+    assert "\n" not in text
+    assert str(path) in text
+    return text
+
+
+def test_a_file_that_is_no_database_is_left_alone(tmp_path: Path) -> None:
+    path = tmp_path / "notes.txt"
+    path.write_text("not a database, just a page of notes\n" * 100)
+    before = path.read_bytes()
+    assert "no SQLite database" in refusal(path)
+    assert path.read_bytes() == before
+    assert [each.name for each in tmp_path.iterdir()] == ["notes.txt"]
+
+
+@pytest.mark.parametrize("mark", [0, 0x0F055112, -5])
+def test_another_programs_database_is_left_alone(tmp_path: Path, mark: int) -> None:
+    path = tmp_path / "other.db"
+    connection = sqlite3.connect(path)
+    connection.execute("CREATE TABLE letters (letter TEXT)")
+    connection.execute(f"PRAGMA application_id = {mark}")
+    connection.commit()
+    connection.close()
+    before = path.read_bytes()
+    assert "another program" in refusal(path)
+    assert path.read_bytes() == before
+
+
+def test_a_marked_file_without_tables_counts_by_its_mark(tmp_path: Path) -> None:
+    path = tmp_path / "other.db"
+    connection = sqlite3.connect(path)
+    connection.execute("PRAGMA application_id = 7")
+    connection.commit()
+    connection.close()
+    assert "another program" in refusal(path)
+
+
+def test_a_newer_log_is_refused(log: Path) -> None:
+    connection = sqlite3.connect(log)
+    connection.execute(
+        "INSERT INTO _sqlite_migrations (migration_set, name, applied_at)"
+        " VALUES (?, '9999_later', 'then')",
+        (MIGRATION_SET,),
+    )
+    connection.commit()
+    connection.close()
+    text = refusal(log)
+    assert "newer version" in text
+    assert "9999_later" in text
+
+
+def test_migrations_of_another_set_are_nobodys_business(log: Path) -> None:
+    connection = sqlite3.connect(log)
+    connection.execute(
+        "INSERT INTO _sqlite_migrations (migration_set, name, applied_at)"
+        " VALUES ('my own notes', '0001', 'then')"
+    )
+    connection.commit()
+    connection.close()
+    open_log(log).close()
+
+
+def test_an_older_log_is_brought_up_to_date(log: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    later = {**MIGRATIONS, "0002_trial": ("CREATE TABLE later (x)",)}
+    monkeypatch.setattr("storage.schema.MIGRATIONS", later)
+    open_log(log).close()
+    assert ask(log, "SELECT count(*) FROM later") == [(0,)]
+    names = ask(log, "SELECT name FROM _sqlite_migrations ORDER BY id")
+    assert names == [(name,) for name in later]
+
+
+def test_a_migration_that_fails_leaves_nothing(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    path = tmp_path / "fleet.db"
+    broken = {**MIGRATIONS, "0002_broken": ("CREATE TABLE half (x)", "CREATE TABLE half (x)")}
+    monkeypatch.setattr("storage.schema.MIGRATIONS", broken)
+    refusal(path)
+    assert ask(path, "SELECT count(*) FROM sqlite_master") == [(0,)]
+    monkeypatch.undo()
+    open_log(path).close()
+    assert ask(path, "SELECT count(*) FROM sessions") == [(0,)]
+
+
+def test_a_folder_is_no_log(tmp_path: Path) -> None:
+    assert "cannot be opened" in refusal(tmp_path)
+
+
+def test_a_file_in_place_of_the_folder(tmp_path: Path) -> None:
+    (tmp_path / "a").write_text("x")
+    assert "cannot be used" in refusal(tmp_path / "a" / "fleet.db")
+
+
+def test_many_processes_make_one_log_together(tmp_path: Path) -> None:
+    path = tmp_path / "fleet.db"
+    program = (
+        "import sys; from pathlib import Path; from storage.schema import open_log;"
+        "import sqlite_utils; sys.stdin.readline(); open_log(Path(sys.argv[1])).close()"
+    )
+    running = [
+        subprocess.Popen(
+            [sys.executable, "-c", program, str(path)],
+            stdin=subprocess.PIPE,
+            stderr=subprocess.PIPE,
+            text=True,
+        )
+        for _ in range(4)
+    ]
+    for each in running:
+        assert each.stdin is not None
+        each.stdin.write("go\n")
+        each.stdin.flush()
+    for each in running:
+        _, errors = each.communicate(timeout=30)
+        assert each.returncode == 0, errors
+    assert ask(path, "SELECT count(*) FROM _sqlite_migrations") == [(len(MIGRATIONS),)]
