@@ -92,8 +92,17 @@ class FleetApp(App[None]):
 
     def on_mount(self) -> None:
         """Begin to poll."""
-        self.set_interval(POLL_S, self._poll)
-        self.call_after_refresh(self._poll)
+        self.set_interval(POLL_S, self.poll)
+        self.call_after_refresh(self.poll)
+
+    def poll(self) -> None:
+        """Look at the source now and show what is new; the timer does this by itself."""
+        if self._controls is not None:
+            self._controls.advance(self._clock_ns())
+        picture = self._picture()
+        for screen in self.screen_stack:
+            if isinstance(screen, ShowsPicture) and screen.is_mounted:
+                screen.show_picture(picture)
 
     def get_system_commands(self, screen: Screen[object]) -> Iterable[SystemCommand]:
         """Keep Textual's commands and add the help."""
@@ -115,7 +124,7 @@ class FleetApp(App[None]):
             self._fleet.say(str(error), refused=True)
             return
         self._fleet.say("all-stop given", refused=False)
-        self._poll()
+        self.poll()
 
     def action_help(self) -> None:
         """Open the help, once."""
@@ -142,7 +151,7 @@ class FleetApp(App[None]):
             "next_fault": controls.next_fault,
         }
         deeds[what]()
-        self._poll()
+        self.poll()
 
     def _left(self, leave: bool | None) -> None:
         if leave:
@@ -153,14 +162,6 @@ class FleetApp(App[None]):
             return self._source.order("all rest")
         except ConsoleError as error:
             return f"refused: {error}"
-
-    def _poll(self) -> None:
-        if self._controls is not None:
-            self._controls.advance(self._clock_ns())
-        picture = self._picture()
-        for screen in self.screen_stack:
-            if isinstance(screen, ShowsPicture) and screen.is_mounted:
-                screen.show_picture(picture)
 
     def _picture(self) -> Picture:
         view = self._source.view()

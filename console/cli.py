@@ -107,8 +107,7 @@ def review(by: str | None, as_json: bool, **choice: Any) -> int:
     from console.commands.log import ReviewChoice
     from console.commands.log import review as print_review
 
-    words = tuple(word.strip() for word in by.split(",")) if by else ()
-    return print_review(ReviewChoice(by=words, **choice), as_json)
+    return print_review(ReviewChoice(by=by, **choice), as_json)
 
 
 @tumblewire.command(**example("tumblewire replay last --speed 4"))

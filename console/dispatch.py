@@ -54,6 +54,16 @@ class Lane:
     blocked_since_ns: int | None = None
     returns_left: int = 0
 
+    @property
+    def moving(self) -> bool:
+        """Whether a trial or a return motion is under way."""
+        return self.in_hand is not None or self.returning
+
+    @property
+    def unfinished(self) -> bool:
+        """Whether anything is under way or still to be done."""
+        return self.moving or bool(self.trials) or self.returns_left > 0
+
 
 @dataclass(slots=True)
 class Tally:
@@ -128,7 +138,7 @@ class SheetRun:
         return self.tally
 
     def _unfinished(self) -> bool:
-        return any(lane.trials or lane.in_hand or lane.returning for lane in self._lanes.values())
+        return any(lane.unfinished for lane in self._lanes.values())
 
     # -- before ----------------------------------------------------------------------------
 
@@ -164,10 +174,9 @@ class SheetRun:
         now_ns = self._engine.now_ns()
         wait_ns = RETRY_NS
         for lane in self._lanes.values():
-            moving = sum(1 for each in self._lanes.values() if each.in_hand or each.returning)
-            if moving >= self._sheet.at_once:
+            if sum(each.moving for each in self._lanes.values()) >= self._sheet.at_once:
                 break
-            if lane.in_hand or lane.returning or not (lane.trials or lane.returns_left):
+            if lane.moving or not lane.unfinished:
                 continue
             if lane.ready_ns > now_ns:
                 wait_ns = min(wait_ns, lane.ready_ns - now_ns)

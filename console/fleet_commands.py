@@ -108,7 +108,7 @@ def take_answer(state: FleetState, at: Moment, address: int, message: Answer) ->
         return
     if event is Event.ACCEPTED:
         _accept(at, command, message)
-    elif command.settled:
+    elif command.final:
         if event is not Event.UNKNOWN:
             _ignore_repeat(at, command, AnswerState(message.state).name.lower())
     else:
@@ -126,7 +126,7 @@ def take_facts(state: FleetState, at: Moment, address: int, message: Facts) -> N
     module = command.module
     module.heard_t_ns = at.t_ns
     state.touch(module)
-    if command.settled:
+    if command.final:
         _ignore_repeat(at, command, "facts")
         return
     if command.ending is None:
@@ -148,7 +148,7 @@ def _come_to_rest(module: ModuleState, facts: Facts) -> None:
 
 def _accept(at: Moment, command: CommandState, answer: Answer) -> None:
     command.asking = False
-    if command.accepted or command.settled:
+    if command.accepted or command.final:
         _ignore_repeat(at, command, "accepted")
         return
     command.accepted = True
@@ -195,7 +195,7 @@ def _disowned(command: CommandState, answer: Answer) -> str | None:
     the last one, so only a single copy is known to have been refused."""
     if command.ending is not None:
         return None
-    sure = command.sends <= 1 and not (command.accepted or command.asking or command.withdrawn)
+    sure = command.sends <= 1 and not (command.accepted or command.withdrawn)
     return "refused" if sure else OPEN_ENDED
 
 

@@ -103,7 +103,7 @@ class ModuleState:
 @dataclass(slots=True, eq=False)
 class CommandState:
     """One command. ``asking``: a question about it is out, unanswered; ``withdrawn``: an
-    all-stop came after it had been sent."""
+    all-stop came after it had been sent; ``final``: nothing can change its ending any more."""
 
     planned: PlannedCommand
     order: int
@@ -121,11 +121,6 @@ class CommandState:
     facts: Facts | None = None
     outcome: Outcome | None = None
     view: CommandView | None = None
-
-    @property
-    def settled(self) -> bool:
-        """Whether nothing can change its ending any more."""
-        return self.ending is not None and (self.final or self.ending != OPEN_ENDED)
 
 
 @dataclass(slots=True, eq=False)

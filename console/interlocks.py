@@ -111,7 +111,7 @@ def _telemetry_old(case: Case) -> str:
     age_ns = case.fleet.t_ns - case.module.heard_t_ns
     if age_ns <= TELEMETRY_OLD_NS:
         return ""
-    # Cut and not rounded up, but never shown as the limit itself.
+    # An age just over the limit must not be shown as the limit itself.
     age_s = max(age_ns, TELEMETRY_OLD_NS + NS_PER_S // 10) / NS_PER_S
     return f"last heard {age_s:.1f} s ago, more than {TELEMETRY_OLD_NS / NS_PER_S:g} s"
 

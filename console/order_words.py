@@ -15,6 +15,8 @@ from console.near_miss import did_you_mean
 LATER_WORDS: Final = frozenset({"hop", "twist", "wall", "crest", "flat", "group", "together"})
 """Words of motions, settings and subjects that this version does not carry out."""
 
+MAX_SHOWN: Final = 40
+
 _TOKEN: Final = re.compile(r'"(?P<quoted>(?:[^"]|"")*)"|(?P<plain>,|[^\s,"]+)|(?P<open>".*)', re.S)
 
 
@@ -32,6 +34,12 @@ class Token:
     def folded(self) -> str:
         """The word as the grammar compares it, or empty for a name in quotation marks."""
         return "" if self.quoted else self.text.casefold()
+
+    @property
+    def shown(self) -> str:
+        """The word as an error quotes it, cut where it is no word that anybody would write."""
+        cut = len(self.text) > MAX_SHOWN
+        return repr(self.text[:MAX_SHOWN] + "..." if cut else self.text)
 
 
 def tokenise(text: str) -> list[Token]:
@@ -95,17 +103,17 @@ class Words:
 
     def fail(self, expected: str, example: str = "") -> NoReturn:
         """Raise InputError: what was expected, after which word, what stood there instead."""
-        place = f"after {self._tokens[self._next - 1].text!r}" if self._next else "first"
+        place = f"after {self._tokens[self._next - 1].shown}" if self._next else "first"
         such = f", such as {example!r}" if example else ""
         token = self.token
         if token is None:
             raise InputError(f"expected {expected} {place}{such}")
         if token.folded in LATER_WORDS:
             raise InputError(
-                f"{token.text!r} (column {token.column}) is not in this version;"
+                f"{token.shown} (column {token.column}) is not in this version;"
                 f" expected {expected} {place}{such}"
             )
         raise InputError(
-            f"expected {expected} {place}{such}, not {token.text!r} (column {token.column})"
+            f"expected {expected} {place}{such}, not {token.shown} (column {token.column})"
             + did_you_mean(token.text, self.tried)
         )

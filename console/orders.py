@@ -47,7 +47,7 @@ _PASSED_OVER: Final = frozenset({"rpm"})
 """Words that are understood but never offered: they would stand in front of those that matter."""
 
 _PLAIN_NAME: Final = re.compile(r'[^\s,"]+')
-_TRAILING_SPACE: Final = re.compile(r"\s\Z")
+_BETWEEN_WORDS: Final = re.compile(r"[\s,]\Z")
 _SPEED: Final = re.compile(r"[0-9]+")
 _SECONDS: Final = re.compile(r"([0-9]{1,6}(?:\.[0-9]{1,3})?)(s?)")
 
@@ -86,7 +86,7 @@ def complete(text: str, known_names: Sequence[str]) -> list[str]:
     order. Speeds and times are never offered: a figure is the person's to choose."""
     tokens = tokenise(text)
     begun = ""
-    if tokens and tokens[-1].folded != "," and not _TRAILING_SPACE.search(text):
+    if tokens and (not tokens[-1].closed or not _BETWEEN_WORDS.search(text)):
         begun = tokens.pop().text.casefold()
     words = Words(tokens)
     # What is wrong with the words so far is for parse_order to say; here only what the parser
@@ -180,9 +180,9 @@ def _fail_name(words: Words, token: Token, said: Sequence[str], known: Sequence[
     if token.folded in LATER_WORDS or token.folded == ",":
         words.fail(_ANOTHER_NAME if said else _A_NAME)
     if not any(known):
-        raise InputError(f"no module has been heard, so none is called {token.text!r}")
+        raise InputError(f"no module has been heard, so none is called {token.shown}")
     raise InputError(
-        f"no module is called {token.text!r} (column {token.column})"
+        f"no module is called {token.shown} (column {token.column})"
         + did_you_mean(token.text, words.tried)
     )
 

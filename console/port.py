@@ -5,6 +5,7 @@ Owns the pyserial object and the advice in its error texts. Knows no frames and 
 
 import errno
 import os
+from collections.abc import Iterator
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any, Final
@@ -15,6 +16,7 @@ DEFAULT_RATE_BAUD: Final = 921_600
 READ_TIMEOUT_S: Final = 0.05
 """Short, because pyserial's cancel_read can miss a read that is about to begin."""
 WRITE_TIMEOUT_S: Final = 0.25
+UNKNOWN_HOLDER: Final = "another program"
 
 
 @dataclass(slots=True)
@@ -55,6 +57,7 @@ def open_port(url: str, rate_baud: int = DEFAULT_RATE_BAUD) -> Port:
     import serial
 
     import sim_link
+    from sim_link.errors import SimInputError
 
     sim_link.register()
     exclusive: dict[str, Any] = {} if "://" in url else {"exclusive": True}
@@ -67,6 +70,8 @@ def open_port(url: str, rate_baud: int = DEFAULT_RATE_BAUD) -> Port:
             **exclusive,
         )
     except serial.SerialException as error:
+        if isinstance(error.__cause__, SimInputError):
+            raise InputError(str(error.__cause__)) from error
         raise _advice(url, error) from error
     except ValueError as error:
         raise InputError(f"{url}: {error}") from error
@@ -112,13 +117,39 @@ def permission_advice(device: str) -> str:
 
 
 def holder_of(device: str) -> str:
-    """Name the program that has a device open, where the system tells (Linux), else say so."""
+    """Name the program that has a device, where the system tells (Linux), else say so.
+
+    Whoever holds its lock comes first, since a pseudo-terminal is open at its other end too.
+    """
+    processes = [*_lockers(device), *_openers(device)]
+    for process in processes:
+        try:
+            command = Path("/proc", process, "comm").read_text().strip()
+        except OSError:
+            continue  # it ended meanwhile
+        return f"{command} (process {process})"
+    return UNKNOWN_HOLDER
+
+
+def _lockers(device: str) -> Iterator[str]:
+    """Processes that hold an flock on a device, from the system's table of locks."""
+    try:
+        inode = os.stat(device).st_ino
+        locks = Path("/proc/locks").read_text().splitlines()
+    except OSError:
+        return
+    for line in locks:
+        words = line.split()
+        if "FLOCK" in words and words[5].endswith(f":{inode}"):
+            yield words[4]
+
+
+def _openers(device: str) -> Iterator[str]:
+    """Other processes that have a device open, as far as we may see."""
     target = os.path.realpath(device)
     for link in Path("/proc").glob("[0-9]*/fd/*"):
         try:
             if os.readlink(link) == target and link.parts[2] != str(os.getpid()):
-                command = Path("/proc", link.parts[2], "comm").read_text().strip()
-                return f"{command} (process {link.parts[2]})"
+                yield link.parts[2]
         except OSError:
             continue  # the process or the descriptor went away, or is not ours to see
-    return "another program"

@@ -15,9 +15,10 @@ STEP_DDEG: Final = 900
 """One face of a cube is a quarter turn, in tenths of a degree."""
 
 LIFT_DDEG: Final = 20
-"""Peak tilt below which the body never left its face. Play of the hinge, the give of a soft
-floor and the noise of the accelerometer at the jolt of the brake stay under one degree
-(common practice of the trade: twice the noise); a body that lifts at all goes well past two."""
+"""Peak tilt, or flat on a face the angle turned, below which the body never left its place.
+Play of the hinge, the give of a soft floor and the noise of the accelerometer at the jolt of the
+brake stay under one degree (common practice of the trade: twice the noise); a body that lifts at
+all goes well past two."""
 
 END_FACES: Final = frozenset({5, 6})
 """Faces on the ends of the wheel axis. No motion about that axis leads onto or off them."""
@@ -46,17 +47,19 @@ def _cut_before_brake(facts: Facts) -> bool:
 
 def _adrift(facts: Facts) -> bool:
     tipped = (facts.face_before in END_FACES) != (facts.face_after in END_FACES)
-    return not facts.settled or facts.face_after == 0 or (tipped and facts.face_before != 0)
+    return not facts.settled or facts.face_after == 0 or tipped
 
 
-def _never_lifted(facts: Facts) -> bool:
-    return abs(facts.peak_tilt_ddeg) < LIFT_DDEG and faces_turned(facts) == 0
+def _never_moved(facts: Facts) -> bool:
+    # With the axis upright the body turns flat on its face: tilt stays nothing all the while.
+    flat = facts.face_before in END_FACES
+    return abs(facts.turned_ddeg if flat else facts.peak_tilt_ddeg) < LIFT_DDEG
 
 
 _VERDICTS: Final[tuple[tuple[Outcome, Callable[[Facts], bool]], ...]] = (
     (Outcome.CUT, _cut_before_brake),
     (Outcome.ADRIFT, _adrift),
-    (Outcome.STUCK, _never_lifted),
+    (Outcome.STUCK, _never_moved),
     (Outcome.OVER, lambda facts: faces_turned(facts) >= 2),
     (Outcome.LANDED, lambda facts: faces_turned(facts) == 1),
 )

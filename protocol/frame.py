@@ -94,6 +94,7 @@ class FrameDecoder:
             pieces[0] = self._held + pieces[0]
         self._held = pieces.pop()[:_RAW_BYTES]
         found: list[bytes | Dropped] = []
+        dropped_before = self.dropped
         for piece in pieces:
             # The common path, written out: a call for each frame costs a tenth of the whole.
             try:
@@ -103,9 +104,9 @@ class FrameDecoder:
                 continue
             if _crc32c(body) == _GOOD_RESIDUE and CHECK_BYTES < len(body) <= MAX_FRAME_BYTES:
                 found.append(body[:-CHECK_BYTES])
-                self.frames += 1
             elif piece:
                 found.append(self._drop(piece, body))
+        self.frames += len(found) - (self.dropped - dropped_before)
         return found
 
     def reset(self) -> None:

@@ -5,12 +5,13 @@ settings. Knows no wheel and no brake (mechanics.py). SI units, radians, angles 
 """
 
 import math
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Final
 
 from sim_link.kinds import Kind, hinge_radius_m, rest_elevation_rad
 
 GRAVITY_M_S2: Final = 9.81
+_HALVINGS: Final = 50
 
 
 @dataclass(frozen=True, slots=True)
@@ -18,8 +19,8 @@ class Hold:
     """Hold torque T(theta) = dV/dtheta about one hinge edge, theta from rest to ``end_rad``.
 
     V = m g r (sin phi - sin phi0) + T0 theta0 (1 - e^(-theta/theta0)) + tf theta, where
-    phi = phi0 + theta. ``end_rad`` is where the motion no longer needs the wheel: top dead
-    centre for a floor pivot and a crest, the end of the turn for a wall.
+    phi = phi0 + theta. ``end_rad`` is where the motion no longer needs the wheel: the
+    crown of V for a floor pivot and a crest, the end of the turn for a wall.
     """
 
     weight_moment_N_m: float
@@ -50,12 +51,32 @@ def holding_magnet_N_m(kind: Kind) -> float:
 
 
 def floor_hold(kind: Kind, face_up: int = 1, sense: int = 1) -> Hold:
-    """Hold of a pivot about a bottom edge, up to top dead centre; ``face_up`` is 1 to 4."""
+    """Hold of a pivot about a bottom edge, up to its crown; ``face_up`` is 1 to 4.
+
+    The crown is where the hold torque turns: top dead centre, or a little past it where
+    magnets still pull there (2e-6 rad for a reach of 0.06 rad and 1.5 times the weight's torque;
+    it matters for far-reaching ones). Never past the landing.
+    """
     elevation = rest_elevation_rad(kind, face_up, sense)
-    return Hold(
+    top_rad = math.pi / 2 - elevation
+    hold = Hold(
         weight_moment_N_m=kind.mass_kg * GRAVITY_M_S2 * hinge_radius_m(kind, face_up, sense),
         elevation_rad=elevation,
-        end_rad=math.pi / 2 - elevation,
+        end_rad=top_rad,
         magnet_torque_N_m=holding_magnet_N_m(kind),
         magnet_angle_rad=kind.magnet_angle_rad,
     )
+    if hold.magnet_torque_N_m == 0.0:
+        return hold
+    return replace(hold, end_rad=_crown_rad(hold, top_rad))
+
+
+def _crown_rad(hold: Hold, top_rad: float) -> float:
+    """Angle past top dead centre where weight and magnets balance; the torque falls there."""
+    low, high = top_rad, math.pi / 2
+    if hold.torque_N_m(high) >= 0.0:
+        return high
+    for _ in range(_HALVINGS):
+        middle = (low + high) / 2
+        low, high = (middle, high) if hold.torque_N_m(middle) > 0.0 else (low, middle)
+    return high

@@ -52,13 +52,15 @@ def connect_to_write(path: Path, mode: str) -> sqlite3.Connection:
 
     ``mode``: ``rwc`` makes the file where it is missing, ``rw`` does not. Raises sqlite3.Error.
     """
-    return sqlite3.connect(
+    connection = sqlite3.connect(
         f"{path.absolute().as_uri()}?mode={mode}",
         uri=True,
         timeout=BUSY_S,
         isolation_level=None,
         check_same_thread=False,
     )
+    connection.execute("PRAGMA fullfsync = ON")  # macOS: fsync alone stops at the drive
+    return connection
 
 
 def connect_to_read(path: Path) -> sqlite3.Connection:
@@ -69,11 +71,12 @@ def connect_to_read(path: Path) -> sqlite3.Connection:
     """
     if not path.is_file():
         raise LogUnavailableError(f"there is no log at {path}")
+    path = path.resolve()  # the WAL lies beside the file itself, not beside a link to it
     wal = path.with_name(path.name + "-wal")
     attempts = ["mode=ro"] if wal.exists() else ["mode=ro", "mode=ro&immutable=1"]
     for attempt in attempts:
         connection = sqlite3.connect(
-            f"{path.resolve().as_uri()}?{attempt}",
+            f"{path.as_uri()}?{attempt}",
             uri=True,
             timeout=BUSY_S,
             isolation_level=None,

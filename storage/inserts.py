@@ -25,7 +25,8 @@ _BASE_COLUMNS: Final[dict[str, tuple[str, ...]]] = {
     RECORDS: ("record", "t_ns", "sort", "body"),
 }
 _CHUNKS: Final = (64, 8, 1)
-"""Rows a statement, largest first; three sizes, so that few statements need preparing."""
+"""Rows a statement, largest first; three sizes, so that few statements need preparing. SQLite
+binds 32,766 values a statement, before version 3.32 only 999: the largest size then falls out."""
 
 Groups = dict[str, list[tuple[Any, ...]]]
 
@@ -89,7 +90,10 @@ class Inserter:
         self, connection: sqlite3.Connection, table: str, rows: Sequence[tuple[Any, ...]]
     ) -> None:
         start = 0
+        most = connection.getlimit(sqlite3.SQLITE_LIMIT_VARIABLE_NUMBER) // len(columns_of(table))
         for size in _CHUNKS:
+            if size > most:
+                continue
             stop = start + (len(rows) - start) // size * size
             if stop > start:
                 flat = (
@@ -100,7 +104,6 @@ class Inserter:
             start = stop
 
     def _statement(self, table: str, size: int) -> str:
-        """64 rows of the widest table, 21 columns, bind 1,344 values; SQLite allows 32,766."""
         statement = self._statements.get((table, size))
         if statement is None:
             columns = columns_of(table)

@@ -7,6 +7,7 @@ to belong to another process. SQLite's lock, since it is the same on every syste
 """
 
 import sqlite3
+from contextlib import suppress
 from pathlib import Path
 
 from storage.connect import explain, primary_code
@@ -25,14 +26,18 @@ class SessionOwner:
         self._file = owner_file(path, uid)
         try:
             self._connection = _connect(self._file, "rwc")
+        except sqlite3.Error as error:
+            raise LogUnavailableError(explain(error, self._file)) from error
+        try:
             _lock(self._connection)
         except sqlite3.Error as error:
+            self._connection.close()
             raise LogUnavailableError(explain(error, self._file)) from error
 
     def release(self) -> None:
         """Give the lock up and remove its file. Safe to call twice."""
         self._connection.close()
-        self._file.unlink(missing_ok=True)
+        _remove(self._file)
 
 
 def owner_lives(path: Path, uid: str) -> bool:
@@ -52,7 +57,14 @@ def owner_lives(path: Path, uid: str) -> bool:
 
 def forget_owner(path: Path, uid: str) -> None:
     """Remove the lock file that a dead owner left."""
-    owner_file(path, uid).unlink(missing_ok=True)
+    _remove(owner_file(path, uid))
+
+
+def _remove(file: Path) -> None:
+    """An empty file that cannot be removed, say because another process looks at it on Windows,
+    harms nobody: nothing but its lock means anything."""
+    with suppress(OSError):
+        file.unlink(missing_ok=True)
 
 
 def _connect(file: Path, mode: str) -> sqlite3.Connection:

@@ -47,7 +47,7 @@ FROM sessions AS s ORDER BY session"""
 _TRIAL_COLUMNS: Final = (
     "module, motion, setting, speed_rpm, outcome, simulated, session, trial, brake_ms, time_utc"
 )
-_COUNTED: Final = f"SELECT {_TRIAL_COLUMNS} FROM trials_counted"
+_COUNTED: Final = f"SELECT {_TRIAL_COLUMNS} FROM trials_counted WHERE 1"
 _ALL_OUTCOMES: Final = (
     f"SELECT {_TRIAL_COLUMNS} FROM motions_named WHERE (trial > 0 OR source IS NOT 'sheet')"
 )
@@ -154,11 +154,10 @@ class LogReader:
         A sheet's return motions are no trials.
         """
         question = _ALL_OUTCOMES if all_outcomes else _COUNTED
-        question = f"SELECT * FROM ({question.replace('time_utc', 'time_utc, command', 1)})"
         if session is not None:
-            question += " WHERE session = :session"
+            question += " AND session = :session"
         found = self._all(question + " ORDER BY session, command", session=session)
-        return [TrialRow(*row[:10])._replace(simulated=bool(row[5])) for row in found]
+        return [TrialRow(*row)._replace(simulated=bool(row[5])) for row in found]
 
     def table(self, name: str, session: int) -> list[tuple[Any, ...]]:
         """Return a derived table's rows of one session, ordered by key, without the session.

@@ -22,7 +22,6 @@ from storage.schema import open_log
 __all__ = ["DERIVED_TABLES", "delete_derived", "replace_derived"]
 
 _SPOOL_ROWS: Final = 10_000
-_NAMES: Final = {row_type: table.name for row_type, table in TABLES.items()}
 
 
 def delete_derived(path: Path, session: int) -> None:
@@ -72,7 +71,7 @@ def _spool(connection: sqlite3.Connection, session: int, rows: Iterable[Row]) ->
     while block := list(islice(stream, _SPOOL_ROWS)):
         groups: dict[str, list[tuple[object, ...]]] = {}
         for row in block:
-            groups.setdefault(_NAMES[type(row)], []).append(row)
+            groups.setdefault(TABLES[type(row)].name, []).append(row)
         inserter.insert(connection, groups)
     connection.execute("COMMIT")
 

@@ -113,13 +113,12 @@ def _prepare(connection: sqlite3.Connection, path: Path) -> None:
             continue
         if mode != "wal":
             raise LogUnavailableError(f"{path} lies where SQLite's WAL mode does not work")
-        connection.execute("PRAGMA fullfsync = ON")  # macOS: fsync alone stops at the drive
         return
 
 
 def _migrate(connection: sqlite3.Connection, path: Path) -> None:
     """Apply what is pending, mark included, in one transaction, so that no half log is left."""
-    from sqlite_utils import Database  # noqa: PLC0415  (0.3 s)
+    from sqlite_utils import Database
 
     connection.execute("BEGIN IMMEDIATE")
     try:
@@ -135,8 +134,8 @@ def _migrate(connection: sqlite3.Connection, path: Path) -> None:
 
 def migrations() -> "Migrations":
     """Return the migrations as sqlite-utils applies them."""
-    from sqlite_utils import Database  # noqa: PLC0415
-    from sqlite_utils.migrations import Migrations  # noqa: PLC0415
+    from sqlite_utils import Database
+    from sqlite_utils.migrations import Migrations
 
     registered = Migrations(MIGRATION_SET)
 

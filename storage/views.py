@@ -11,15 +11,18 @@ CREATE VIEW motions_named AS
 SELECT
     motions.session,
     motions.command,
-    strftime(
-        '%Y-%m-%dT%H:%M:%fZ',
-        sessions.opened_utc,
-        printf(
-            '%+.3f seconds',
-            (commands.t_ns - sessions.opened_t_ns) / 1e9 / nullif(sessions.pace, 0)
-        )
+    coalesce(
+        strftime(
+            '%Y-%m-%dT%H:%M:%fZ',
+            sessions.opened_utc,
+            printf(
+                '%+.3f seconds',
+                (commands.t_ns - sessions.opened_t_ns) / 1e9 / nullif(sessions.pace, 0)
+            )
+        ),
+        sessions.opened_utc
     ) AS time_utc,
-    coalesce(nullif(modules.name, ''), modules.identity) AS module,
+    coalesce(nullif(modules.name, ''), modules.identity, commands.identity, '') AS module,
     modules.kind,
     commands.identity,
     commands.boot,

@@ -34,7 +34,7 @@ BATCH_ENTRIES: Final = 5_000
 class WriterLimits:
     """``batch_s``: how long an entry waits for others. ``retry_s``: between two attempts on a
     disk that fails. ``backlog_rows``: records and rows held in memory at most; 500,000 are
-    some 180 MB, or eight minutes of a hundred modules at five messages a second."""
+    some 190 MB, or eight minutes of a hundred modules at five messages a second."""
 
     batch_s: float = 0.1
     retry_s: float = 1.0

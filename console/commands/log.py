@@ -102,7 +102,7 @@ class ReviewChoice:
     log: Path | None
     csv: Path | None
     session: str | None
-    by: tuple[str, ...]
+    by: str | None
     with_simulated: bool
 
 
@@ -110,14 +110,13 @@ def review(choice: ReviewChoice, as_json: bool) -> int:
     """Print rates with their intervals."""
     from console.review.document import review_document
     from console.review.overview import overview
-    from console.review.rates import DEFAULT_BY
+    from console.review.rates import DEFAULT_BY, parse_by
     from console.review.text import review_text
 
     if choice.csv is not None and (choice.log is not None or choice.session is not None):
         raise InputError("--from takes its trials from a CSV file; leave out --log and --session")
-    counted = overview(
-        _trials(choice), choice.by or DEFAULT_BY, with_simulated=choice.with_simulated
-    )
+    by = DEFAULT_BY if choice.by is None else parse_by(choice.by)
+    counted = overview(_trials(choice), by, with_simulated=choice.with_simulated)
     if as_json:
         print_json(review_document(counted))
     else:

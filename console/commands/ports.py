@@ -8,10 +8,9 @@ from collections.abc import Sequence
 from dataclasses import asdict, dataclass
 
 from console.commands.output import print_json, print_line
-from console.port import holder_of, permission_advice
+from console.port import UNKNOWN_HOLDER, holder_of, permission_advice
 
 _FREE = ""
-UNKNOWN_HOLDER = "another program"
 
 
 @dataclass(frozen=True, slots=True)

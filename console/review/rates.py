@@ -71,7 +71,7 @@ def wilson_interval(landed: int, trials: int) -> tuple[float, float]:
     it promises with few trials too, and also where all of them or none landed.
     ``trials`` is at least 1. Raises ValueError where ``landed`` is not from 0 to ``trials``.
     """
-    from scipy.stats import binomtest  # noqa: PLC0415  (costs a second; not at start)
+    from scipy.stats import binomtest
 
     interval = binomtest(landed, trials).proportion_ci(CONFIDENCE, method="wilson")
     return float(interval.low), float(interval.high)

@@ -9,7 +9,7 @@ wrong, and what moves. What room is left goes to outcomes and doing.
 """
 
 from collections.abc import Callable, Iterable
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Final
 
 from rich.cells import cell_len, set_cell_size
@@ -35,6 +35,8 @@ from protocol.codes import Flags
 NAME_CELLS: Final = 12
 """Widest name or kind: what a Nameplate carries, in bytes."""
 SHORTEST_NAME_CELLS: Final = 6
+BATTERY_BAND_V: Final = 0.015
+"""Half more than the last digit shown."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -74,6 +76,23 @@ class Plan:
             else:
                 spans.extend(drawn)
         return tuple(_merged(spans))
+
+
+class SteadyBattery:
+    """Keeps a shown voltage until the measured one has left a band around it: a cell at rest
+    flickers by a hundredth of a volt between two messages, and a column of flickering digits
+    hides what changes."""
+
+    def __init__(self) -> None:
+        self._shown_V: dict[int, float] = {}
+
+    def steadied(self, module: ModuleView) -> ModuleView:
+        """The module with the voltage to show, at most ``BATTERY_BAND_V`` off."""
+        shown_V = self._shown_V.get(module.module, module.battery_V)
+        if abs(module.battery_V - shown_V) > BATTERY_BAND_V:
+            shown_V = module.battery_V
+        self._shown_V[module.module] = shown_V
+        return module if shown_V == module.battery_V else replace(module, battery_V=shown_V)
 
 
 def plan_columns(width: int, names: Iterable[str] = (), kinds: Iterable[str] = ()) -> Plan:

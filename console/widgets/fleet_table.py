@@ -19,7 +19,7 @@ from textual.scroll_view import ScrollView
 from textual.strip import Strip
 
 from console.view import FleetView
-from console.widgets.fleet_columns import Plan, plan_columns
+from console.widgets.fleet_columns import Plan, SteadyBattery, plan_columns
 from console.widgets.lines import TONE_CLASSES, TONE_CSS, Lines, strip_of
 from console.widgets.words import Line, Tone, module_trouble
 
@@ -64,6 +64,7 @@ class FleetTable(ScrollView, can_focus=True):
         self._plan_for: tuple[int, int, int] = (0, 0, 0)
         self._drawn: dict[int, Line] = {}
         self._cursor = 0
+        self._battery = SteadyBattery()
 
     @property
     def cursor(self) -> int:
@@ -174,7 +175,8 @@ class FleetTable(ScrollView, can_focus=True):
     def _line(self, row: int) -> Line:
         if self._view is None:
             return ()
-        return self._plan.row(self._view.modules[row], self._view.t_ns, row == self._cursor)
+        module = self._battery.steadied(self._view.modules[row])
+        return self._plan.row(module, self._view.t_ns, row == self._cursor)
 
     def _refresh_row(self, row: int) -> None:
         y = row - self.scroll_offset.y

@@ -110,11 +110,11 @@ def cut(spans: Sequence[Span], width: int) -> Line:
 
 def names_within(names: Sequence[str], width: int) -> str:
     """List names as far as they fit, then how many more there are; at least one is shown."""
-    shown: list[str] = []
-    for index, name in enumerate(names):
-        rest = len(names) - index - 1
+    listed = names[0] if names else ""
+    for index, name in enumerate(names[1:], 2):
+        rest = len(names) - index
         tail = f" +{rest} more" if rest else ""
-        if shown and cell_len(", ".join([*shown, name]) + tail) > width:
-            return ", ".join(shown) + f" +{rest + 1} more"
-        shown.append(name)
-    return ", ".join(shown)
+        if cell_len(f"{listed}, {name}{tail}") > width and cell_len(", ".join(names)) > width:
+            return f"{listed} +{rest + 1} more"
+        listed = f"{listed}, {name}"
+    return listed

@@ -94,8 +94,7 @@ def stop_parts(picture: Picture, width: int) -> Iterable[Part]:
         ]
     count = len(stop.confirmed) + len(stop.missing)
     head = Part(f"# ALL-STOP {stop.stop_number} IN FORCE", Tone.BANNER)
-    confirmed = Part(f"{len(stop.confirmed)} of {count} confirmed", Tone.STRONG)
-    # Dropped before the names of who is missing: with those, lifting is not what comes next.
+    confirmed = Part(f"confirmed {len(stop.confirmed)}/{count}", Tone.STRONG)
     lift = Part("" if picture.replay else f"lift: clear {stop.stop_number}", Tone.PLAIN, 1)
     missing = _named("! missing", picture.missing, Tone.ALERT, width, head, confirmed, lift)
     return [head, confirmed, missing, lift]
@@ -109,18 +108,19 @@ def fleet_parts(picture: Picture, width: int) -> Iterable[Part]:
     head = Part(f"modules {count}", Tone.PLAIN)
     moving = Part("nothing moves", Tone.PLAIN)
     if picture.moving:
-        title = f"moving {len(picture.moving)}:"
-        moving = _named(title, picture.moving, Tone.MOVING, width // 2, head)
+        moving = _named("moving", picture.moving, Tone.MOVING, width // 2, head)
     if not picture.wrong:
         return [head, moving, Part("nothing wrong", Tone.PLAIN)]
     named = [f"{name} {word}" for name, word in picture.wrong]
-    title = f"! wrong {len(named)}:"
-    return [head, moving, _named(title, named, Tone.ALERT, width, head, moving)]
+    return [head, moving, _named("! wrong", named, Tone.ALERT, width, head, moving)]
 
 
 def _named(title: str, names: Sequence[str], tone: Tone, width: int, *beside: Part) -> Part:
-    """A title and as many names as fit beside the other parts; empty where there are none."""
+    """A title, how many, and as many names as fit beside the other parts; empty for none."""
     if not names:
         return Part("", tone)
     taken = sum(cell_len(part.text) + len(GAP) for part in beside if part.text)
-    return Part(f"{title} {names_within(names, width - taken - len(title) - 1)}", tone)
+    counted = f"{title} {len(names)}"
+    room = width - taken - len(counted) - len(": ")
+    listed = names_within(names, room)
+    return Part(f"{counted}: {listed}" if cell_len(listed) <= room else counted, tone)

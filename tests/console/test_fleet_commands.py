@@ -1,5 +1,6 @@
 """A command's life: each way to its one ending, repeats, late words, and what stays shut."""
 
+from collections.abc import Sequence
 from typing import Any
 
 import pytest
@@ -10,6 +11,7 @@ from console.errors import LogError
 from console.fleet import FleetReducer
 from console.view import Outcome
 from protocol.codes import Activity, AnswerState, Flags, Reason
+from protocol.exchange import CommandExchange, Ended, Ending, Send
 from protocol.message import Flash, Message, Rest, Spin
 from storage.records import (
     CommandExpired,
@@ -21,6 +23,7 @@ from storage.records import (
 )
 from storage.rows import CommandRow, MotionRow, OrderRow
 from tests.support.wire_script import (
+    ADDRESS,
     BOOT,
     EPOCH,
     IDENTITY,
@@ -293,6 +296,13 @@ def test_a_repeat_is_counted_and_changes_nothing_else(first: list[Any], again: M
     assert fold.ended == ended
 
 
+def test_unknown_after_the_end_is_no_repeat() -> None:
+    """It answers a question that crossed with the end; no answer was taken twice."""
+    fold = Fold(called().heard(facts()))
+    fold.script.heard(answer(1, UNKNOWN))
+    assert fold.on() == []
+
+
 @pytest.mark.parametrize(
     "contrary",
     [answer(1, REFUSED, Reason.BUSY), answer(1, CUT), answer(1, UNKNOWN), facts(turned_ddeg=0)],
@@ -503,6 +513,15 @@ def test_a_withdrawn_command_that_was_accepted_is_not_called_cut_on_unknown() ->
     assert (command(fold).ending, command(fold).final) == ("unseen", 0)
 
 
+@pytest.mark.parametrize("state", [REFUSED, UNKNOWN])
+def test_a_withdrawn_command_disowned_by_a_new_boot_stays_open(state: AnswerState) -> None:
+    script = called()
+    script.add(StopPressed, 1, "key")
+    fold = Fold(script.sent(query()).heard(answer(1, state, Reason.OTHER_BOOT)))
+    assert (command(fold).ending, command(fold).final) == ("unseen", 0)
+    assert command(fold).reason == "other_boot"
+
+
 def test_a_command_given_after_the_stop_was_lifted_is_not_withdrawn() -> None:
     script = called()
     script.add(StopPressed, 1, "key")
@@ -568,6 +587,13 @@ def test_the_command_in_hand_is_told_in_words() -> None:
     fold.script.sent(pivot(2)).heard(facts(2))
     fold.on()
     assert fold.view.modules[0].doing == ""
+
+
+def test_what_was_sent_is_told_before_what_waits() -> None:
+    script = ordered(1).order(planned(2, motion="rest", setting=0, direction=0, speed_rpm=0))
+    assert Fold(script).view.modules[0].doing == "pivot floor forward at 4400"
+    script.sent(Rest(EPOCH, BOOT, 2, 0x1111))
+    assert Fold(script).view.modules[0].doing == "rest"
 
 
 def test_the_ribbon_holds_the_last_twenty_outcomes_in_order() -> None:
@@ -649,3 +675,80 @@ def test_whatever_comes_there_is_one_ending_and_only_unseen_is_resolved(words: l
     assert fold.ended == ([] if row.ending is None else [1])
     assert len(fold.table("motions")) == len(fold.ended)
     assert fold.reducer.open_commands() == ([1] if row.ending is None else [])
+
+
+REPLIES = st.sampled_from(
+    [
+        answer(1, ACCEPTED, expect_ms=900),
+        answer(1, REFUSED, Reason.BUSY),
+        answer(1, REFUSED, Reason.OTHER_BOOT),
+        answer(1, REFUSED, Reason.OTHER_EPOCH),
+        answer(1, REFUSED, Reason.NUMBER_PASSED),
+        answer(1, REFUSED, Reason.OTHER_IDENTITY),
+        answer(1, FINISHED),
+        answer(1, CUT, Reason.RESTED),
+        answer(1, UNKNOWN),
+        answer(1, UNKNOWN, Reason.OTHER_BOOT),
+        facts(),
+        facts(reason=Reason.STOPPED),
+        presence(),
+        presence(boot=BOOT + 1),
+        telemetry(5, boot=BOOT + 1),
+    ]
+)
+
+
+class Console:
+    """An exchange and a reducer side by side, as the console joins them: what the exchange
+    sends and what it gives up become records."""
+
+    def __init__(self) -> None:
+        self.fold = Fold(ordered())
+        self.exchange = CommandExchange()
+        self.t_ns = 0
+        self.ended: list[Ended] = []
+        self.take(self.exchange.submit(1, ADDRESS, pivot(), self.t_ns))
+
+    def take(self, effects: Sequence[Send | Ended]) -> None:
+        for effect in effects:
+            if isinstance(effect, Send):
+                self.fold.script.sent(effect.message)
+            else:
+                self.ended.append(effect)
+                if effect.how is Ending.UNSEEN and command(self.fold).ending is None:
+                    self.fold.script.add(CommandExpired, 1)
+            self.fold.on()
+
+    def heard(self, message: Message) -> None:
+        self.fold.script.heard(message)
+        self.fold.on()
+        self.take(self.exchange.receive(ADDRESS, message, self.t_ns))
+
+    def stop(self) -> None:
+        self.fold.script.add(StopPressed, 1, "key")
+        self.fold.on()
+        self.take(self.exchange.withdraw(ADDRESS))
+
+    def wait(self) -> None:
+        due_ns = self.exchange.next_wake_ns
+        if due_ns is not None:
+            self.t_ns = max(self.t_ns, due_ns)
+            self.take(self.exchange.wake(self.t_ns))
+
+
+@settings(max_examples=400, deadline=None)
+@given(st.lists(st.one_of(REPLIES, st.sampled_from(["wait", "stop"])), max_size=14))
+def test_the_reducer_comes_to_the_exchange_s_end_at_the_same_word(deeds: list[Any]) -> None:
+    """The exchange decides live, the reducer from the records alone; nobody may wait for one of
+    them for ever, and the log must hold what was decided."""
+    console = Console()
+    for deed in [*deeds, *["wait"] * 40]:
+        if isinstance(deed, str):
+            getattr(console, deed)()
+        else:
+            console.heard(deed)
+        first = [
+            row.ending for row in console.fold.rows if isinstance(row, CommandRow) and row.ending
+        ]
+        assert [each.how.value for each in console.ended] == first[:1]
+    assert len(console.ended) == 1

@@ -7,7 +7,7 @@ from hypothesis import example, given
 from hypothesis import strategies as st
 
 from protocol.codes import SIMULATED_BIT, Flags, identity_bits
-from storage.records import BytesIn, LinkChanged
+from storage.records import BytesIn, CommandExpired, LinkChanged
 from storage.rows import ModuleRow, TelemetryRow
 from tests.support.wire_script import (
     ADDRESS,
@@ -155,6 +155,13 @@ def test_a_module_with_a_new_address_is_still_answered_for() -> None:
     assert fold.table("modules")[0].address == 0x11
 
 
+def test_a_late_report_from_a_new_address_resolves_what_was_unseen() -> None:
+    script = met().order(planned()).sent(pivot())
+    script.add(CommandExpired, 1)
+    fold = Fold(script.heard(presence(), facts(), address=0x11))
+    assert fold.table("commands")[0].ending == "finished"
+
+
 def test_a_module_heard_over_two_links_stays_with_the_first_while_it_is_open() -> None:
     script = met()
     script.add(LinkChanged, 1, "sim://?modules=1", "open", "")
@@ -292,6 +299,8 @@ def test_an_overtaken_message_is_kept_but_is_not_the_newest() -> None:
         (list(range(100)), 1.0),
         ([*range(32), 63], 1 / 32),
         ([*range(32), 62], 2 / 32),
+        ([100, 68], 1.0),
+        ([100, 69], 2 / 32),
     ],
 )
 def test_signal_is_the_share_of_the_last_32_that_came(sequences: list[int], share: float) -> None:
@@ -313,6 +322,8 @@ def newer(one: int, two: int) -> bool:
 @given(st.integers(0, 65535), st.integers(0, 65535))
 @example(0, 65535)
 @example(32767, 0)
+@example(0, 32768)
+@example(32768, 0)
 def test_which_is_the_newest_follows_serial_arithmetic(first: int, second: int) -> None:
     script = met().heard(telemetry(first, face_up=2), telemetry(second, face_up=3))
     expected = 3 if newer(second, first) else 2

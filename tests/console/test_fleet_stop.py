@@ -88,6 +88,13 @@ def test_a_second_press_asks_everybody_again() -> None:
     assert fold.alarms == ["all-stop", "all-stop"]
 
 
+def test_a_press_with_a_number_passed_keeps_the_newest() -> None:
+    script = two().heard(presence(stop_number=9))
+    script.add(StopPressed, 4, "key")
+    stop = Fold(script).view.stop
+    assert (stop.stop_number, stop.in_force) == (9, True)
+
+
 def test_only_a_clear_of_the_newest_lifts_it() -> None:
     script = pressed(2)
     script.add(StopLifted, 1, "key")

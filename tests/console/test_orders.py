@@ -121,6 +121,7 @@ def test_bad_orders_say_what_was_expected_and_where(text: str, words: list[str])
     message = str(caught.value)
     assert re.search(".*".join(map(re.escape, words)), message), message
     assert "\n" not in message
+    assert len(message) < 160
 
 
 LATER = [
@@ -270,7 +271,8 @@ def test_completions_put_odd_names_in_quotation_marks() -> None:
     names = ["my box", "birch"]
     assert complete("m", names) == ['"my box"']
     assert complete('"my', names) == ['"my box"']
-    assert complete('"my b', names) == ['"my box"']
+    assert complete('"my ', names) == ['"my box"']
+    assert complete('birch, "my b', names) == ['"my box"']
     assert parse_order('"my box" rest', names) == rest("my box")
 
 

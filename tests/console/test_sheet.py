@@ -134,7 +134,7 @@ def test_missing_keys_are_named(key: str) -> None:
     ("line", "words"),
     [
         ("pauses_s = 1.0", "pauses_s: unknown key; did you mean 'pause_s'"),
-        ("until = 3", "until: unknown key; there are title, modules"),
+        ("wobble = 3", "wobble: unknown key; there are title, modules"),
         ("[pause]\nx = 1", "pause: unknown key"),
     ],
 )

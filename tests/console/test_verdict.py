@@ -64,7 +64,16 @@ def test_a_fall_onto_the_end_of_the_axis_is_adrift() -> None:
 
 def test_flat_on_the_end_of_the_axis_may_land() -> None:
     """With the axis upright all along, a quarter turn about it is one face."""
-    assert verdict(facts(face_before=5, face_after=5)) is Outcome.LANDED
+    flat = {"face_before": 5, "face_after": 5, "peak_tilt_ddeg": 0}
+    assert verdict(facts(**flat)) is Outcome.LANDED
+    assert verdict(facts(**flat, turned_ddeg=300)) is Outcome.SHORT
+    assert verdict(facts(**flat, turned_ddeg=15)) is Outcome.STUCK
+
+
+def test_a_drifting_gyro_makes_no_lift_of_a_stuck_body() -> None:
+    """The angle turned is integrated and drifts; the tilt is measured against gravity."""
+    stayed = {"face_after": 1, "turned_ddeg": 45, "peak_tilt_ddeg": 3}
+    assert verdict(facts(**stayed)) is Outcome.STUCK
 
 
 def test_backwards_is_not_landed() -> None:

@@ -1,7 +1,7 @@
 """The module's side of "at most once": what is fresh, what is a repeat, what is refused."""
 
 import pytest
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from protocol.codes import AnswerState, Reason
@@ -14,6 +14,9 @@ from protocol.command_memory import (
 )
 from protocol.errors import LocalProtocolError
 from protocol.message import Answer, Command, Facts, Flash, Pivot, Query, Rest, Spin
+
+STEADY = settings(derandomize=True, deadline=None)
+"""The same examples each time, and no deadline on a busy machine."""
 
 BOOT, EPOCH, IDENTITY = 77, 1000, 0x8000_0000_0012_BEEF
 BITS = 0xBEEF
@@ -72,6 +75,7 @@ def test_serial_arithmetic_at_its_borders() -> None:
     assert not is_newer(0, than=32_768)
 
 
+@STEADY
 @given(st.integers(0, 65_535), st.integers(0, 65_535))
 def test_of_two_numbers_at_most_one_is_newer(one: int, other: int) -> None:
     assert is_newer(one, other) + is_newer(other, one) == (
@@ -259,6 +263,7 @@ def test_answer_fills_in_epoch_and_boot() -> None:
     )
 
 
+@STEADY
 @given(
     capacity=st.integers(1, 5),
     steps=st.lists(st.tuples(st.integers(-40, 20_000), st.booleans()), max_size=80),

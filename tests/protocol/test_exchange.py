@@ -160,6 +160,7 @@ ENDS: list[tuple[str, Message, Ending | None]] = [
     ("asking", answer(1, AnswerState.REFUSED, Reason.NUMBER_PASSED), Ending.UNSEEN),
     ("recalled", UNKNOWN, Ending.CUT),
     ("recalled", answer(1, AnswerState.UNKNOWN, Reason.OTHER_BOOT), Ending.UNSEEN),
+    ("recalled", answer(1, AnswerState.REFUSED, Reason.NUMBER_PASSED), Ending.REFUSED),
     ("recalled", facts(1), Ending.FINISHED),
     ("recalled", facts(1, Reason.STOPPED), Ending.CUT),
     ("recalled", answer(1, AnswerState.REFUSED, Reason.STOP_IN_FORCE), Ending.REFUSED),

@@ -5,7 +5,7 @@ import random
 import pytest
 from cobs import cobs
 from crcmod.predefined import mkCrcFun
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from protocol.errors import LocalProtocolError
@@ -17,6 +17,9 @@ from protocol.frame import (
     FrameDecoder,
     frame,
 )
+
+STEADY = settings(derandomize=True, deadline=None)
+"""The same examples each time, and no deadline on a busy machine."""
 
 PAYLOADS = st.binary(min_size=1, max_size=MAX_PAYLOAD_BYTES)
 
@@ -101,12 +104,14 @@ def test_stuffing_of_published_rows(raw: str, stuffed: str) -> None:
     assert reference_cobs(bytes.fromhex(raw)).hex() == stuffed
 
 
+@STEADY
 @given(PAYLOADS)
 def test_frame_is_what_the_definitions_say(payload: bytes) -> None:
     check = reference_crc32c(payload).to_bytes(4, "little")
     assert frame(payload) == reference_cobs(payload + check) + b"\0"
 
 
+@STEADY
 @given(PAYLOADS)
 def test_frame_has_one_zero_byte_at_its_end_and_six_bytes_more(payload: bytes) -> None:
     framed = frame(payload)
@@ -120,6 +125,7 @@ def test_frame_refuses_empty_and_too_long(length: int) -> None:
         frame(bytes(length))
 
 
+@STEADY
 @given(st.lists(PAYLOADS, max_size=20), st.integers(1, 200))
 def test_a_clean_stream_comes_out_in_order_in_any_chunks(payloads: list[bytes], chunk: int) -> None:
     stream = b"".join(map(frame, payloads))
@@ -188,6 +194,7 @@ def test_the_longest_frame_passes_byte_by_byte() -> None:
     assert read(frame(payload), 1) == [payload]
 
 
+@STEADY
 @given(st.lists(st.binary(max_size=300), max_size=30))
 def test_holds_bounded_memory_whatever_comes(chunks: list[bytes]) -> None:
     decoder = FrameDecoder()
@@ -203,6 +210,7 @@ def test_a_stream_without_delimiters_is_one_drop() -> None:
     assert decoder.feed(b"\0" + frame(b"x")) == [Dropped(Drop.TOO_LONG, b"\x55" * 64), b"x"]
 
 
+@STEADY
 @given(PAYLOADS, st.data())
 def test_every_single_damaged_byte_is_noticed_and_left_behind(
     payload: bytes, data: st.DataObject
@@ -218,6 +226,7 @@ def test_every_single_damaged_byte_is_noticed_and_left_behind(
     assert all(isinstance(piece, Dropped) for piece in found[:-1])
 
 
+@STEADY
 @given(st.lists(st.one_of(PAYLOADS, st.binary(max_size=90).map(bytearray)), max_size=12))
 def test_resynchronises_after_any_noise_at_the_next_zero_byte(
     parts: list[bytes | bytearray],

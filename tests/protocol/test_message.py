@@ -3,7 +3,7 @@
 import struct
 
 import pytest
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from protocol.codes import CONSOLE_ADDRESS, EVERYONE_ADDRESS, WIRE_VERSION, Code
@@ -33,6 +33,9 @@ from protocol.message import (
     text_field,
 )
 
+STEADY = settings(derandomize=True, deadline=None)
+"""The same examples each time, and no deadline on a busy machine."""
+
 _RANGES = {
     "B": st.integers(0, 2**8 - 1),
     "H": st.integers(0, 2**16 - 1),
@@ -58,11 +61,13 @@ def packets(draw: st.DrawFn) -> Packet:
     return Packet(draw(_RANGES["H"]), draw(_RANGES["H"]), message)
 
 
+@STEADY
 @given(packets())
 def test_there_and_back(packet: Packet) -> None:
     assert decode(encode(packet)) == packet
 
 
+@STEADY
 @given(packets())
 def test_decode_gives_the_very_types(packet: Packet) -> None:
     got = decode(encode(packet))
@@ -144,6 +149,7 @@ def test_another_wire_version_is_refused_and_named(version: int) -> None:
         decode(bytes([version, 0x7F]) + good[2:])  # a code that this version does not know
 
 
+@STEADY
 @given(st.binary(max_size=64))
 def test_any_bytes_decode_or_are_refused_with_the_one_error(payload: bytes) -> None:
     try:
@@ -153,6 +159,7 @@ def test_any_bytes_decode_or_are_refused_with_the_one_error(payload: bytes) -> N
     assert encode(packet) == payload
 
 
+@STEADY
 @given(st.sampled_from(sorted(LAYOUTS)), st.binary(max_size=40))
 def test_any_body_under_a_good_header_does_too(code: int, body: bytes) -> None:
     payload = HEADER.pack(WIRE_VERSION, code, 1, 0x10) + body
@@ -209,6 +216,7 @@ def test_text_is_cut_at_a_characters_border(text: str, field: bytes) -> None:
     assert text.startswith(field_text(field))
 
 
+@STEADY
 @given(st.text(st.characters(codec="utf-8", exclude_characters="\0")))
 def test_text_comes_back_as_a_beginning_of_itself(text: str) -> None:
     nameplate = Nameplate(1, 2, 3, text_field(text), b"")

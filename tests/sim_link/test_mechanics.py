@@ -232,6 +232,18 @@ def test_lift_of_a_uniform_cube_on_the_floor() -> None:
     assert hold.torque_N_m(0.0) == pytest.approx(weight_side / 2)
 
 
+def test_far_reaching_magnets_move_the_crown_past_top_dead_centre() -> None:
+    """Magnets of 0.1 N m reaching 0.4 rad hold on past 45 degrees: at the crown they balance
+    the weight, which by then turns the body on."""
+    hold = floor_hold(kind_with(magnet_torque_N_m=0.1, magnet_angle_rad=0.4))
+    weight = PLAIN.mass_kg * GRAVITY_M_S2 * PLAIN.side_m / math.sqrt(2)
+    magnets = 0.1 * math.exp(-hold.end_rad / 0.4)
+    assert hold.end_rad > math.pi / 4 + 0.05
+    assert weight * math.sin(hold.end_rad - math.pi / 4) == pytest.approx(magnets)
+    stronger = floor_hold(kind_with(magnet_torque_N_m=3.0, magnet_angle_rad=0.8))
+    assert stronger.end_rad == pytest.approx(math.pi / 2)
+
+
 kinds = st.builds(
     kind_with,
     side_m=st.floats(0.03, 0.15),

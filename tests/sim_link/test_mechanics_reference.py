@@ -100,13 +100,33 @@ def test_held_threshold(name: str) -> None:
     assert below < math.pi / 4 < above
 
 
-@pytest.mark.parametrize("part", [0.6, 0.97, 1.03, 1.3])
+def _free(friction: float) -> Kind:
+    return kind_with(
+        mass_kg=0.28,
+        wheel_inertia_kg_m2=1.68e-5,
+        brake_torque_N_m=0.4,
+        held=False,
+        floor_friction=friction,
+    )
+
+
+@pytest.mark.parametrize("part", [0.6, 0.97, 0.995, 1.005, 1.03, 1.3])
 def test_free_outcome(part: float) -> None:
     """On contacts that can stick, slide and lift, the same face comes up."""
-    kind = kind_with(
-        mass_kg=0.28, wheel_inertia_kg_m2=1.68e-5, brake_torque_N_m=0.4, held=False,
-        floor_friction=0.9,
-    )  # fmt: skip
+    kind = _free(0.9)
     speed = part * floor_threshold(kind).w_min_rad_s
     turned = _angle_after(kind, speed, 5e-5, 9.0, 0.7)
     assert round(turned / (math.pi / 2)) == floor_pivot(kind, speed).faces
+
+
+@pytest.mark.parametrize("friction", [0.5, 0.9])
+def test_second_face_of_a_free_module(friction: float) -> None:
+    """It slides, leaves the floor, lands on a corner and goes on: to 1 % of MuJoCo's speed."""
+    kind = _free(friction)
+    over = floor_threshold(kind).w_over_rad_s
+    assert over is not None
+    second = 3 * math.pi / 4
+    below, above = (
+        _angle_after(kind, over * part, 2e-5, second + 0.3, 0.7) for part in (0.99, 1.01)
+    )
+    assert below < second < above

@@ -15,7 +15,7 @@ from hypothesis import strategies as st
 from sim_link import contact
 from sim_link.contact import Footing, body_of, push
 from sim_link.hold import GRAVITY_M_S2, floor_hold
-from sim_link.kinds import Kind, centre_inertia_kg_m2, edge_inertia_kg_m2
+from sim_link.kinds import Kind, centre_inertia_kg_m2, edge_inertia_kg_m2, offset_m
 from sim_link.mechanics import floor_pivot, floor_threshold
 from sim_link.motion import Moment, Phase
 from sim_link.tumble import tumble
@@ -247,6 +247,16 @@ def test_bouncing_free_module_comes_to_rest() -> None:
 
 def _fields(kind: Kind) -> dict[str, object]:
     return {name: getattr(kind, name) for name in type(kind).__slots__}
+
+
+@pytest.mark.parametrize(("sense", "next_face"), [(1, 2), (-1, 4)])
+def test_next_corner_stands_as_that_face_would(sense: int, next_face: int) -> None:
+    """Rolling one face on and being set down on that face are one posture."""
+    kind = kind_with(com_offset_m=(0.011, -0.007))
+    rolled = contact.arm_m(body_of(kind, 1, sense), 1, math.pi / 2)
+    away, up = offset_m(kind, next_face, sense)
+    half = kind.side_m / 2
+    assert rolled == pytest.approx((-(half + away), half + up))
 
 
 # --- conservation ------------------------------------------------------------------------

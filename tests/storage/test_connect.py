@@ -5,6 +5,7 @@ import shutil
 import sqlite3
 import subprocess
 import sys
+import tempfile
 from pathlib import Path
 
 import pytest
@@ -107,7 +108,7 @@ def test_a_log_on_a_medium_that_cannot_be_written() -> None:
     works without any file beside the log; writing is refused with one line."""
     if os.name != "posix":
         pytest.skip("needs POSIX permissions")
-    folder = Path("/tmp") / f"tumblewire-test-{os.getpid()}"
+    folder = Path(tempfile.gettempdir()) / f"tumblewire-test-{os.getpid()}"
     folder.mkdir()
     try:
         path = folder / "fleet.db"

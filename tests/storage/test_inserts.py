@@ -2,6 +2,7 @@
 
 import sqlite3
 from collections.abc import Iterator
+from enum import IntEnum, StrEnum
 from pathlib import Path
 from typing import Any
 
@@ -13,7 +14,7 @@ from storage.inserts import Entry, Inserter, columns_of, group
 from storage.records import BytesIn, BytesOut
 from storage.rows import TABLES, ModuleRow, RemarkRow, TelemetryRow
 from storage.schema import open_log
-from tests.support.log_samples import any_row, bytes_in, expired, module_row, telemetry
+from tests.support.log_samples import any_row, bytes_in, expired, module_row, motion_rows, telemetry
 
 
 @pytest.fixture
@@ -134,6 +135,32 @@ def model_log() -> sqlite3.Connection:
     for statement in FIRST_TABLES:
         connection.execute(statement)
     return connection
+
+
+@pytest.mark.parametrize("rows", [1, 9, 130])
+def test_an_older_sqlite_binds_fewer_values(connection: sqlite3.Connection, rows: int) -> None:
+    """999 before SQLite 3.32; 64 rows of 14 values are 896, of commands' 20 are 1,280."""
+    connection.setlimit(sqlite3.SQLITE_LIMIT_VARIABLE_NUMBER, 999)
+    commands = [motion_rows(command, "landed")[1] for command in range(rows)]
+    Inserter(1).insert(connection, group([(1, expired(1), commands)]))
+    assert count(connection, "commands") == rows
+
+
+def test_enums_and_truth_values_are_stored_plainly(connection: sqlite3.Connection) -> None:
+    """The console's outcomes and codes are enums; an SQL tool must see their values."""
+
+    class Word(StrEnum):
+        BIRCH = "birch"
+
+    class Count(IntEnum):
+        THREE = 3
+
+    row = module_row(1, Word.BIRCH)._replace(firmware=Count.THREE, simulated=True)
+    Inserter(1).insert(connection, group([(1, expired(1), [row])]))
+    found = connection.execute(
+        "SELECT name, typeof(name), firmware, typeof(firmware), simulated FROM modules"
+    ).fetchone()
+    assert found == ("birch", "text", 3, "integer", 1)
 
 
 def test_row_types_of_a_batch_may_be_mixed(connection: sqlite3.Connection) -> None:

@@ -2,6 +2,7 @@
 
 import sqlite3
 import tempfile
+import threading
 from pathlib import Path
 from typing import Any
 
@@ -19,6 +20,7 @@ from storage.rows import TABLES, Row, SheetRow
 from storage.writer import LogWriter, WriterLimits
 from tests.support.log_samples import (
     CLOSED_UTC,
+    FAST_FOLDER,
     OPENED,
     any_record,
     any_row,
@@ -58,7 +60,7 @@ def with_rows(path: Path, rows: list[Row]) -> int:
 @settings(max_examples=40, deadline=None)
 @given(st.lists(any_record(), max_size=30))
 def test_every_record_comes_back_in_order(records: list[Record]) -> None:
-    with tempfile.TemporaryDirectory() as folder:
+    with tempfile.TemporaryDirectory(dir=FAST_FOLDER) as folder:
         path = Path(folder) / "fleet.db"
         expected = list(enumerate(records, 1))
         record(path, [(number, each, []) for number, each in expected])
@@ -71,7 +73,7 @@ def test_every_record_comes_back_in_order(records: list[Record]) -> None:
 @given(st.lists(any_row(), max_size=20))
 def test_every_row_comes_back(rows: list[Row]) -> None:
     """The model: one dictionary a table, ordered by key."""
-    with tempfile.TemporaryDirectory() as folder:
+    with tempfile.TemporaryDirectory(dir=FAST_FOLDER) as folder:
         path = Path(folder) / "fleet.db"
         with_rows(path, rows)
         reader = LogReader.open(path)
@@ -148,10 +150,9 @@ def test_records_of_a_living_session_are_read(path: Path) -> None:
     for first in (1, 101, 201):
         for number in range(first, first + 100):
             writer.append(number, bytes_in(number), [])
-        written: list[str] = []
-        writer.commit(first + 100, expired(first + 100), [], written.append)
-        while not written:
-            pass
+        written = threading.Event()
+        writer.commit(first + 100, expired(first + 100), [], lambda _, w=written: w.set())
+        assert written.wait(5.0)
         assert [number for number, _ in reader.records(1)][-1] == first + 100
     assert reader.sessions()[0].ending == ""
     writer.close("closed", CLOSED_UTC)

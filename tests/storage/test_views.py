@@ -171,7 +171,9 @@ def test_a_nameless_module_shows_its_identity(fill: Fill, path: Path) -> None:
 
 def test_a_motion_without_its_module_is_not_lost(fill: Fill, path: Path) -> None:
     fill(motion_rows(1, "landed"))
-    assert ask(path, "SELECT module, outcome FROM motions_named") == [(None, "landed")]
+    assert ask(path, "SELECT module, kind, outcome FROM motions_named") == [
+        (identity(1), None, "landed")
+    ]
 
 
 @pytest.mark.parametrize(
@@ -181,6 +183,8 @@ def test_a_motion_without_its_module_is_not_lost(fill: Fill, path: Path) -> None
         ("2026-03-02T08:00:00Z", 4.0, "2026-03-02T08:00:02.500Z"),
         ("2026-12-31T23:59:55.250Z", 1.0, "2027-01-01T00:00:05.250Z"),
         ("2026-03-02T08:00:00+02:00", 1.0, "2026-03-02T06:00:10.000Z"),
+        ("2026-03-02T08:00:00Z", 0.0, "2026-03-02T08:00:00.000Z"),
+        ("on Monday", 1.0, "on Monday"),
     ],
 )
 def test_the_time_of_a_motion_in_utc(

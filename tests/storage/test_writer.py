@@ -1,6 +1,7 @@
 """The writer keeps its promises: order, durability of a commit, nothing dropped in silence."""
 
 import os
+import re
 import signal
 import sqlite3
 import subprocess
@@ -109,10 +110,10 @@ def test_what_is_appended_is_there_after_closing_in_order(path: Path) -> None:
 
 
 def test_an_append_is_written_soon_without_being_asked(path: Path) -> None:
-    """The contract says 200 ms; a second leaves room for a busy machine."""
+    """The contract says 200 ms; three seconds leave room for a busy machine."""
     writer = LogWriter.open(path, OPENED)
     writer.append(1, bytes_in(1), [])
-    until(lambda: ask(path, "SELECT count(*) FROM wire") == [(1,)], 1.0)
+    until(lambda: ask(path, "SELECT count(*) FROM wire") == [(1,)], 3.0)
     writer.close("closed", CLOSED_UTC)
 
 
@@ -285,9 +286,9 @@ def test_a_full_disk_loses_nothing(path: Path) -> None:
         writer.append(number, bytes_in(number), [telemetry(number)])
     trouble = until(writer.trouble)
     assert "full" in trouble
-    assert "2000 records wait in memory" in until(
-        lambda: "2000 records" in writer.trouble() and writer.trouble()
-    )
+    waiting = re.search(r"; (\d+) records wait in memory", trouble)
+    assert waiting is not None
+    assert 0 < int(waiting[1]) <= 2_000
     writer.commit(2_001, expired(2_001), [], answers(2_001))
     until(lambda: answers.told)
     assert answers.told[0][0] == 2_001
@@ -300,6 +301,18 @@ def test_a_full_disk_loses_nothing(path: Path) -> None:
     assert [number for number, _ in stored(path)] == list(range(1, 2_003))
     assert ask(path, "SELECT count(*) FROM telemetry") == [(2_000,)]
     assert ask(path, "SELECT lost_records, lost_rows, ending FROM sessions") == [(0, 0, "closed")]
+
+
+def test_a_disk_that_is_full_from_the_start(path: Path) -> None:
+    def full(path: Path, mode: str) -> sqlite3.Connection:
+        connection = sqlite3.connect(path, isolation_level=None, check_same_thread=False)
+        connection.execute("PRAGMA max_page_count = 5")
+        return connection
+
+    with pytest.raises(LogUnavailableError, match="full; free some space"):
+        LogWriter.open(path, OPENED, connect=full)
+    LogWriter.open(path, OPENED).close("closed", CLOSED_UTC)
+    assert ask(path, "SELECT session, ending FROM sessions") == [(1, "closed")]
 
 
 def test_a_commit_is_refused_at_once_between_two_attempts(path: Path) -> None:
@@ -358,7 +371,7 @@ def test_appending_never_waits_for_a_locked_log(path: Path) -> None:
         began_s = time.monotonic()
         writer.append(number, bytes_in(number), [])
         slowest_s = max(slowest_s, time.monotonic() - began_s)
-    assert slowest_s < 0.5  # the busy time is 2 s
+    assert slowest_s < 1.0  # the busy time is 2 s
     other.execute("ROLLBACK")
     other.close()
     writer.close("closed", CLOSED_UTC)

@@ -1,15 +1,25 @@
 """A fleet's source that a test drives by hand, and a player for replays. No clocks, no threads."""
 
+import asyncio
+from collections.abc import Awaitable, Callable
 from dataclasses import replace
+from unittest.mock import patch
 
+from textual import events
 from textual.app import App
+from textual.pilot import Pilot
 
+from console.app import FleetApp
 from console.errors import InputError
+from console.orders import complete
 from console.view import FleetView, LinkView, ModuleView, Outcome, StopView
+from console.widgets.replay_bar import ReplayControls
 from protocol.codes import SIMULATED_BIT
 
 SECOND_NS = 1_000_000_000
 NAMES = ("alder", "birch", "cedar", "elm", "hazel", "larch", "maple", "rowan")
+NEVER_S = 3600.0
+Steps = Callable[[FleetApp, "Pilot[None]"], Awaitable[None]]
 NO_STOP = StopView(stop_number=0, in_force=False, confirmed=(), missing=())
 
 
@@ -208,3 +218,49 @@ def line_with(app: App[None], piece: str) -> str:
     found = [line for line in screen_lines(app) if piece in line]
     assert len(found) == 1, f"{piece!r} stands in {len(found)} lines:\n{screen_text(app)}"
     return found[0]
+
+
+def play(
+    source: FakeFleet,
+    steps: Steps,
+    *,
+    size: tuple[int, int] = (80, 24),
+    banner: str = "",
+    controls: ReplayControls | None = None,
+    clock_ns: Callable[[], int] = lambda: 0,
+    poll_s: float = NEVER_S,
+) -> FleetApp:
+    """Run the app without a terminal and do the steps once it has drawn itself.
+
+    Its timer is put off, so that it looks at the source when the test says so and only then.
+    """
+    app = FleetApp(
+        source,
+        operator="Ida",
+        banner=banner,
+        controls=controls,
+        completions=lambda text: complete(text, NAMES),
+        clock_ns=clock_ns,
+    )
+
+    async def run() -> None:
+        async with app.run_test(size=size) as pilot:
+            await look(app, pilot)
+            await steps(app, pilot)
+
+    with patch("console.app.POLL_S", poll_s):
+        asyncio.run(run())
+    return app
+
+
+async def look(app: FleetApp, pilot: "Pilot[None]") -> None:
+    """Let what was asked of the screens be done, then have the app look at its source."""
+    await pilot.pause()
+    app.poll()
+    await pilot.pause()
+
+
+async def typed(pilot: "Pilot[None]", text: str) -> None:
+    """Enter a text where the focus is, as a terminal pastes: one event, not one a key."""
+    pilot.app.post_message(events.Paste(text))
+    await pilot.pause()

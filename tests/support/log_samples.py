@@ -1,5 +1,6 @@
 """Samples for tests that touch the log: records and rows of every type, made up here."""
 
+import os
 import sqlite3
 import types
 from dataclasses import fields, is_dataclass
@@ -37,6 +38,9 @@ OPENED: Final = SessionOpened(
     program="tumblewire 0.1.0",
 )
 CLOSED_UTC: Final = "2026-03-02T09:30:00Z"
+
+FAST_FOLDER: Final = "/dev/shm" if os.access("/dev/shm", os.W_OK) else None
+"""A folder in memory, or None for the system's folder of temporary files."""
 
 NOTE_TYPES: Final[tuple[type[Any], ...]] = get_args(NoteRecord)
 RECORD_TYPES: Final[tuple[type[Any], ...]] = (BytesIn, BytesOut, *NOTE_TYPES)

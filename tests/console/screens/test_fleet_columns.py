@@ -5,7 +5,7 @@ from hypothesis import strategies as st
 from rich.cells import cell_len
 
 from console.view import Outcome
-from console.widgets.fleet_columns import COLUMNS, plan_columns
+from console.widgets.fleet_columns import COLUMNS, SteadyBattery, plan_columns
 from console.widgets.words import Line
 from protocol.codes import Flags
 from tests.support.fake_fleet import SECOND_NS, busy_view, module
@@ -102,6 +102,26 @@ def test_a_low_battery_is_marked_beside_its_voltage() -> None:
     row = text_of(plan_columns(79).row(low, NOW, under_cursor=False))
     assert "3.31 V!" in row
     assert "# stopped" in row
+
+
+@given(st.lists(st.integers(-9, 9), min_size=1, max_size=40))
+def test_a_flickering_voltage_stays_and_is_never_far_off(flicker: list[int]) -> None:
+    steady = SteadyBattery()
+    first = 3.9 + flicker[0] / 1000
+    for thousandths in flicker:
+        now = module(1, "alder", battery_V=3.9 + thousandths / 1000)
+        shown = steady.steadied(now)
+        assert abs(shown.battery_V - now.battery_V) <= 0.015 + 1e-9
+        if max(flicker) - min(flicker) <= 14:
+            assert shown.battery_V == first
+
+
+def test_a_falling_voltage_is_followed_module_by_module() -> None:
+    steady = SteadyBattery()
+    for milli in range(4000, 3500, -5):
+        fallen = steady.steadied(module(1, "alder", battery_V=milli / 1000))
+        assert steady.steadied(module(2, "birch", battery_V=4.1)).battery_V == 4.1
+    assert fallen.battery_V < 3.53
 
 
 def test_a_module_never_heard_shows_no_measured_value() -> None:

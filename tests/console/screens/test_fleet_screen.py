@@ -1,56 +1,27 @@
 """The Fleet screen as a person sees it: rows, orders, narrow and wide, many modules."""
 
-import asyncio
-from collections.abc import Awaitable, Callable
 from dataclasses import replace
 from pathlib import Path
 
 import pytest
 from textual.pilot import Pilot
 
-from console.app import FleetApp
-from console.orders import complete
+from console.app import POLL_S, FleetApp
 from console.widgets.fleet_table import FleetTable
 from console.widgets.lines import Lines
 from tests.support.fake_fleet import (
-    NAMES,
     FakeFleet,
     busy_view,
     eight,
     fleet_view,
     line_with,
+    look,
     module,
+    play,
     screen_lines,
     screen_text,
+    typed,
 )
-
-POLL_S = 0.3
-"""More than two polls of the screen."""
-Steps = Callable[[FleetApp, "Pilot[None]"], Awaitable[None]]
-
-
-def play(source: FakeFleet, steps: Steps, size: tuple[int, int] = (80, 24)) -> None:
-    """Run the app on a terminal of ``size`` and do the steps once it has drawn itself."""
-
-    async def run() -> None:
-        app = FleetApp(
-            source,
-            operator="Ida",
-            completions=lambda text: complete(text, NAMES),
-            clock_ns=lambda: 0,
-        )
-        async with app.run_test(size=size) as pilot:
-            await pilot.pause(POLL_S)
-            await steps(app, pilot)
-
-    asyncio.run(run())
-
-
-async def typed(pilot: "Pilot[None]", text: str) -> None:
-    """Type a text key by key."""
-    names = {" ": "space", ",": "comma", "?": "question_mark"}
-    await pilot.press(*(names.get(each, each) for each in text))
-    await pilot.pause()
 
 
 def test_every_module_has_its_line_with_glyph_and_word() -> None:
@@ -91,17 +62,17 @@ def test_160_by_50_uses_the_room() -> None:
         line_with(app, "cedar silent, hazel battery, larch tilted")
         line_with(app, "restarted since last seen")
 
-    play(FakeFleet(busy_view()), steps, (160, 50))
+    play(FakeFleet(busy_view()), steps, size=(160, 50))
 
 
 def test_a_changed_terminal_size_brings_columns_back() -> None:
     async def steps(app: FleetApp, pilot: "Pilot[None]") -> None:
         assert "signal" not in screen_text(app)
         await pilot.resize_terminal(160, 40)
-        await pilot.pause(POLL_S)
+        await look(app, pilot)
         assert "signal" in screen_text(app)
         await pilot.resize_terminal(60, 24)
-        await pilot.pause(POLL_S)
+        await look(app, pilot)
         assert "outcomes:" in screen_text(app)
         assert all(len(line) == 60 for line in screen_lines(app))
         assert "heard" not in line_with(app, "name ")
@@ -121,7 +92,7 @@ def test_only_the_changed_row_is_drawn_again(monkeypatch: pytest.MonkeyPatch) ->
         drawn.clear()
         source.change(3, wheel_rpm=1234, activity=1)
         source.change(6, battery_V=3.9)
-        await pilot.pause(POLL_S)
+        await look(app, pilot)
         assert sorted(drawn) == [2, 5]
         assert "1234/9000" in line_with(app, "cedar    ok")
 
@@ -141,21 +112,33 @@ def test_nothing_is_drawn_while_time_passes_and_nothing_changes(
             lambda self, y, draw=draw: (drawn.append(f"{self} {y}"), draw(self, y))[1],
         )
 
-    async def steps(_app: FleetApp, pilot: "Pilot[None]") -> None:
+    async def steps(app: FleetApp, pilot: "Pilot[None]") -> None:
         drawn.clear()
         for _ in range(4):
             source.pass_time(0.5)
-            await pilot.pause(POLL_S / 2)
+            await look(app, pilot)
         assert drawn == []
 
     play(source, steps)
+
+
+def test_the_screen_looks_at_its_source_by_itself() -> None:
+    source = FakeFleet(fleet_view(*eight()))
+
+    async def steps(app: FleetApp, pilot: "Pilot[None]") -> None:
+        source.change(3, wheel_rpm=1234, activity=1)
+        await pilot.pause(3 * POLL_S)
+        assert "1234/9000" in line_with(app, "cedar    ok")
+
+    assert POLL_S == 1 / 8
+    play(source, steps, poll_s=POLL_S)
 
 
 def test_an_order_is_given_and_its_result_shown() -> None:
     source = FakeFleet(fleet_view(*eight()))
 
     async def steps(app: FleetApp, pilot: "Pilot[None]") -> None:
-        await typed(pilot, "birch rest")
+        await pilot.press(*"birch", "space", *"rest")
         assert "birch rest" in line_with(app, "order>")
         await pilot.press("enter")
         await pilot.pause()
@@ -247,6 +230,16 @@ def test_tab_on_an_empty_line_goes_to_the_table_and_enter_names_a_module() -> No
     play(source, steps)
 
 
+def test_a_click_puts_the_cursor_there_and_orders_nothing() -> None:
+    async def steps(app: FleetApp, pilot: "Pilot[None]") -> None:
+        await pilot.click(FleetTable, offset=(5, 3))
+        await look(app, pilot)
+        line_with(app, ">elm")
+        assert "elm" not in line_with(app, "order>")
+
+    play(FakeFleet(fleet_view(*eight())), steps)
+
+
 def test_typing_in_the_table_goes_to_the_order_line() -> None:
     async def steps(app: FleetApp, pilot: "Pilot[None]") -> None:
         await pilot.press("tab", "e", "l", "m")
@@ -268,7 +261,7 @@ def test_a_clear_by_number_lifts_the_stop_and_a_wrong_one_does_not() -> None:
         line_with(app, "refused: clear 7 -- all-stop 7 is not the newest: clear 1")
         await typed(pilot, "clear 1")
         await pilot.press("enter")
-        await pilot.pause(POLL_S)
+        await look(app, pilot)
         assert source.cleared == [(1, "Ida")]
         line_with(app, "all-stop not in force")
 
@@ -281,17 +274,17 @@ def test_a_thousand_modules_scroll_under_a_fixed_header() -> None:
     async def steps(app: FleetApp, pilot: "Pilot[None]") -> None:
         assert "m0001" in screen_text(app)
         await pilot.press(*["pagedown"] * 5)
-        await pilot.pause(POLL_S)
+        await look(app, pilot)
         assert "m0001" not in screen_text(app)
         line_with(app, "rpm/limit")
         await pilot.press("tab", "end")
-        await pilot.pause(POLL_S)
+        await look(app, pilot)
         line_with(app, ">m1000")
         source.change(1000, wheel_rpm=777, activity=1)
-        await pilot.pause(POLL_S)
+        await look(app, pilot)
         assert "777/9000" in line_with(app, ">m1000")
         await pilot.press("home")
-        await pilot.pause(POLL_S)
+        await look(app, pilot)
         line_with(app, ">m0001")
 
     play(source, steps)
@@ -303,7 +296,7 @@ def test_f3_goes_to_trouble_far_down_the_table() -> None:
 
     async def steps(app: FleetApp, pilot: "Pilot[None]") -> None:
         await pilot.press("f3")
-        await pilot.pause(POLL_S)
+        await look(app, pilot)
         assert "! tilted" in line_with(app, ">m0250")
 
     play(source, steps)
@@ -324,7 +317,7 @@ def test_modules_that_come_later_get_their_lines() -> None:
     async def steps(app: FleetApp, pilot: "Pilot[None]") -> None:
         line_with(app, "none heard yet")
         source.now = fleet_view(*eight()[:2], module(3, "long-name-12"))
-        await pilot.pause(POLL_S)
+        await look(app, pilot)
         line_with(app, "long-name-12   ok")
         line_with(app, "modules 3  nothing moves")
 
@@ -337,7 +330,7 @@ def test_log_trouble_and_a_lost_link_come_into_sight() -> None:
     async def steps(app: FleetApp, pilot: "Pilot[None]") -> None:
         source.trouble = "disk full"
         source.now = replace(source.now, links=(replace(source.now.links[0], state="lost"),))
-        await pilot.pause(POLL_S)
+        await look(app, pilot)
         assert "! LOG NOT WRITING: disk full" in screen_lines(app)[0]
         assert "! link LOST sim://" in screen_lines(app)[0]
 
@@ -348,19 +341,16 @@ def test_a_stuck_engine_is_called_out() -> None:
     source = FakeFleet(fleet_view(*eight()))
     now_ns = [0]
 
-    async def run() -> None:
-        app = FleetApp(source, operator="Ida", clock_ns=lambda: now_ns[0])
-        async with app.run_test(size=(80, 24)) as pilot:
-            await pilot.pause(POLL_S)
-            assert "NOT ANSWERING" not in screen_text(app)
-            now_ns[0] = 4_500_000_000
-            await pilot.pause(POLL_S)
-            line_with(app, "CONSOLE NOT ANSWERING for 4 s")
-            source.pass_time(1)
-            await pilot.pause(POLL_S)
-            assert "NOT ANSWERING" not in screen_text(app)
+    async def steps(app: FleetApp, pilot: "Pilot[None]") -> None:
+        assert "NOT ANSWERING" not in screen_text(app)
+        now_ns[0] = 4_500_000_000
+        await look(app, pilot)
+        line_with(app, "CONSOLE NOT ANSWERING for 4 s")
+        source.pass_time(1)
+        await look(app, pilot)
+        assert "NOT ANSWERING" not in screen_text(app)
 
-    asyncio.run(run())
+    play(source, steps, clock_ns=lambda: now_ns[0])
 
 
 def test_names_from_the_link_cannot_drive_the_terminal() -> None:
@@ -397,7 +387,7 @@ def test_other_themes_work() -> None:
     async def steps(app: FleetApp, pilot: "Pilot[None]") -> None:
         for theme in ("textual-light", "nord", "gruvbox"):
             app.theme = theme
-            await pilot.pause(POLL_S / 2)
+            await look(app, pilot)
             line_with(app, "larch  ! tilted")
 
     play(FakeFleet(busy_view()), steps)
@@ -409,4 +399,4 @@ def test_a_picture_can_be_taken(tmp_path: Path) -> None:
         path.write_text(app.export_screenshot(), encoding="utf-8")
         assert "cedar" in path.read_text(encoding="utf-8")
 
-    play(FakeFleet(busy_view()), steps, (160, 50))
+    play(FakeFleet(busy_view()), steps, size=(160, 50))

@@ -1,15 +1,23 @@
 """The help: complete, narrow enough, opened by key and by word."""
 
-import asyncio
+from textual.pilot import Pilot
 
 from console.app import FleetApp
 from console.orders import parse_order
 from console.screens.help import ORDERS, help_text
 from console.widgets.status import STOP_KEY
 from console.widgets.words import ACTIVITIES, OUTCOMES, STATES
-from tests.support.fake_fleet import NAMES, FakeFleet, eight, fleet_view, line_with, screen_text
+from tests.support.fake_fleet import (
+    NAMES,
+    FakeFleet,
+    eight,
+    fleet_view,
+    line_with,
+    look,
+    play,
+    screen_text,
+)
 
-POLL_S = 0.3
 DESK_WORDS = ("stop", "clear")
 
 
@@ -39,31 +47,27 @@ def test_its_example_orders_are_orders() -> None:
 
 
 def test_a_typed_help_opens_it_and_both_keys_close_it() -> None:
-    async def run() -> None:
-        app = FleetApp(FakeFleet(fleet_view(*eight())), operator="Ida", clock_ns=lambda: 0)
-        async with app.run_test(size=(80, 24)) as pilot:
-            for close in ("escape", "f1"):
-                await pilot.press(*"help", "enter")
-                await pilot.pause(POLL_S)
-                assert "KEYS" in screen_text(app)
-                line_with(app, "escape or f1 back")
-                line_with(app, "link open")
-                await pilot.press(close)
-                await pilot.pause(POLL_S)
-                line_with(app, "order>")
+    async def steps(app: FleetApp, pilot: "Pilot[None]") -> None:
+        for close in ("escape", "f1"):
+            await pilot.press(*"help", "enter")
+            await look(app, pilot)
+            assert "KEYS" in screen_text(app)
+            line_with(app, "escape or f1 back")
+            line_with(app, "link open")
+            await pilot.press(close)
+            await look(app, pilot)
+            line_with(app, "order>")
 
-    asyncio.run(run())
+    play(FakeFleet(fleet_view(*eight())), steps)
 
 
 def test_it_scrolls_to_its_end_in_24_lines() -> None:
-    async def run() -> None:
-        app = FleetApp(FakeFleet(fleet_view(*eight())), operator="Ida", clock_ns=lambda: 0)
-        async with app.run_test(size=(80, 24)) as pilot:
-            await pilot.press("f1")
-            await pilot.pause(POLL_S)
-            assert "licensed practice" not in screen_text(app)
-            await pilot.press(*["pagedown"] * 6)
-            await pilot.pause(POLL_S)
-            line_with(app, "licensed practice")
+    async def steps(app: FleetApp, pilot: "Pilot[None]") -> None:
+        await pilot.press("f1")
+        await look(app, pilot)
+        assert "licensed practice" not in screen_text(app)
+        await pilot.press(*["pagedown"] * 6)
+        await look(app, pilot)
+        line_with(app, "licensed practice")
 
-    asyncio.run(run())
+    play(FakeFleet(fleet_view(*eight())), steps)

@@ -1,7 +1,6 @@
 """Replay: the bar, its keys, and that no order can be given."""
 
-import asyncio
-from collections.abc import Awaitable, Callable
+from typing import Any
 
 import pytest
 from textual.pilot import Pilot
@@ -12,31 +11,22 @@ from tests.support.fake_fleet import (
     SECOND_NS,
     FakeFleet,
     FakePlayer,
+    Steps,
     busy_view,
     eight,
     fleet_view,
     line_with,
+    look,
+    play,
     screen_lines,
     screen_text,
 )
 
-POLL_S = 0.3
-Steps = Callable[[FleetApp, "Pilot[None]"], Awaitable[None]]
 
-
-def play(
-    source: FakeFleet, player: FakePlayer, steps: Steps, size: tuple[int, int] = (80, 24)
-) -> None:
-    """Run the app as a replay and do the steps once it has drawn itself."""
+def replay(source: FakeFleet, player: FakePlayer, steps: Steps, **options: Any) -> None:
+    """Run the app as a replay; the player must have all that the bar asks of one."""
     controls: ReplayControls = player
-
-    async def run() -> None:
-        app = FleetApp(source, operator="Ida", banner="REPLAY", controls=controls)
-        async with app.run_test(size=size) as pilot:
-            await pilot.pause(POLL_S)
-            await steps(app, pilot)
-
-    asyncio.run(run())
+    play(source, steps, banner="REPLAY", controls=controls, **options)
 
 
 def test_the_bar_shows_position_speed_and_keys_in_80_columns() -> None:
@@ -54,7 +44,7 @@ def test_the_bar_shows_position_speed_and_keys_in_80_columns() -> None:
         assert "REPLAY" in screen_lines(app)[0]
         assert player.advanced > 0
 
-    play(FakeFleet(busy_view()), player, steps)
+    replay(FakeFleet(busy_view()), player, steps)
 
 
 def test_keys_drive_the_player_and_the_bar_follows() -> None:
@@ -71,10 +61,10 @@ def test_keys_drive_the_player_and_the_bar_follows() -> None:
         assert player.asked == ["step", "next fault"]
         player.ended = True
         player.position_ns = 3600 * SECOND_NS
-        await pilot.pause(POLL_S)
+        await look(app, pilot)
         assert "[####################]" in line_with(app, "| ended")
 
-    play(FakeFleet(busy_view()), player, steps)
+    replay(FakeFleet(busy_view()), player, steps)
 
 
 def test_the_order_line_is_closed_and_says_why() -> None:
@@ -87,7 +77,7 @@ def test_the_order_line_is_closed_and_says_why() -> None:
         assert source.orders == []
         assert "a replay never transmits" in line_with(app, "order>")
 
-    play(source, FakePlayer(), steps)
+    replay(source, FakePlayer(), steps)
 
 
 def test_quitting_a_replay_asks_nothing_though_a_wheel_turned_then() -> None:
@@ -96,39 +86,28 @@ def test_quitting_a_replay_asks_nothing_though_a_wheel_turned_then() -> None:
         await pilot.pause()
         assert app._exit is True
 
-    play(FakeFleet(busy_view()), FakePlayer(), steps)
+    replay(FakeFleet(busy_view()), FakePlayer(), steps)
 
 
 def test_a_replay_that_stands_is_no_stuck_engine() -> None:
     source, player, now_ns = FakeFleet(fleet_view(*eight())), FakePlayer(), [0]
 
-    async def run() -> None:
-        app = FleetApp(
-            source,
-            operator="Ida",
-            banner="REPLAY",
-            controls=player,
-            clock_ns=lambda: now_ns[0],
-        )
-        async with app.run_test(size=(80, 24)) as pilot:
-            await pilot.pause(POLL_S)
-            now_ns[0] = 60 * SECOND_NS
-            await pilot.pause(POLL_S)
-            assert "NOT ANSWERING" not in screen_text(app)
+    async def steps(app: FleetApp, pilot: "Pilot[None]") -> None:
+        now_ns[0] = 60 * SECOND_NS
+        await look(app, pilot)
+        assert "NOT ANSWERING" not in screen_text(app)
 
-    asyncio.run(run())
+    replay(source, player, steps, clock_ns=lambda: now_ns[0])
 
 
 def test_live_there_is_no_bar_and_its_keys_do_nothing() -> None:
-    async def run() -> None:
-        app = FleetApp(FakeFleet(fleet_view(*eight())), operator="Ida", clock_ns=lambda: 0)
-        async with app.run_test(size=(80, 24)) as pilot:
-            await pilot.press("f5", "f6", "f7", "f8", "f9")
-            await pilot.pause(POLL_S)
-            assert "next fault" not in screen_text(app)
-            line_with(app, "order>")
+    async def steps(app: FleetApp, pilot: "Pilot[None]") -> None:
+        await pilot.press("f5", "f6", "f7", "f8", "f9")
+        await look(app, pilot)
+        assert "next fault" not in screen_text(app)
+        line_with(app, "order>")
 
-    asyncio.run(run())
+    play(FakeFleet(fleet_view(*eight())), steps)
 
 
 @pytest.mark.parametrize(

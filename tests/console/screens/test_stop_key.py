@@ -5,14 +5,13 @@ special characters INTR, QUIT, SUSP, EOF, START, STOP; and from ASCII (ECMA-6): 
 letter is that letter's code less 64, so ctrl+i, j, m, h and [ are Tab, LF, CR, BS and ESC.
 """
 
-import asyncio
 import os
 import shutil
 import subprocess
 import sys
 import time
 import uuid
-from collections.abc import Awaitable, Callable, Iterator
+from collections.abc import Callable, Iterator
 from pathlib import Path
 
 import pytest
@@ -28,25 +27,12 @@ from tests.support.fake_fleet import (
     eight,
     fleet_view,
     line_with,
+    look,
+    play,
     screen_text,
 )
 
-POLL_S = 0.3
 ROOT = Path(__file__).parents[3]
-Steps = Callable[[FleetApp, "Pilot[None]"], Awaitable[None]]
-
-
-def play(source: FakeFleet, steps: Steps, banner: str = "") -> FleetApp:
-    """Run the app on 80 by 24 and do the steps once it has drawn itself."""
-    app = FleetApp(source, operator="Ida", banner=banner, clock_ns=lambda: 0)
-
-    async def run() -> None:
-        async with app.run_test(size=(80, 24)) as pilot:
-            await pilot.pause(POLL_S)
-            await steps(app, pilot)
-
-    asyncio.run(run())
-    return app
 
 
 def test_the_key_is_one_byte_with_no_other_meaning_to_a_terminal() -> None:
@@ -72,7 +58,7 @@ def test_from_the_order_line_with_an_order_half_typed(key: str) -> None:
 
     async def steps(app: FleetApp, pilot: "Pilot[None]") -> None:
         await pilot.press("e", "l", "m", key)
-        await pilot.pause(POLL_S)
+        await look(app, pilot)
         assert source.stops == ["key"]
         line_with(app, "ALL-STOP 1 IN FORCE")
         line_with(app, "ok: all-stop given")
@@ -96,14 +82,14 @@ def test_from_the_help_which_shows_that_it_is_in_force() -> None:
 
     async def steps(app: FleetApp, pilot: "Pilot[None]") -> None:
         await pilot.press("f1")
-        await pilot.pause(POLL_S)
+        await look(app, pilot)
         assert "KEYS" in screen_text(app)
         await pilot.press(STOP_KEY)
-        await pilot.pause(POLL_S)
+        await look(app, pilot)
         assert source.stops == ["key"]
         line_with(app, "ALL-STOP 1 IN FORCE")
         await pilot.press("escape")
-        await pilot.pause(POLL_S)
+        await look(app, pilot)
         line_with(app, "order>")
 
     play(source, steps)
@@ -114,10 +100,10 @@ def test_from_the_dialog_that_asks_before_quitting() -> None:
 
     async def steps(app: FleetApp, pilot: "Pilot[None]") -> None:
         await pilot.press("ctrl+q")
-        await pilot.pause(POLL_S)
+        await look(app, pilot)
         line_with(app, "2 wheels turn: birch, elm")
         await pilot.press(STOP_KEY)
-        await pilot.pause(POLL_S)
+        await look(app, pilot)
         assert source.stops == ["key"]
         line_with(app, "ALL-STOP 1 IN FORCE")
         line_with(app, "2 wheels turn: birch, elm")
@@ -130,10 +116,10 @@ def test_from_the_palette() -> None:
 
     async def steps(app: FleetApp, pilot: "Pilot[None]") -> None:
         await pilot.press("ctrl+p")
-        await pilot.pause(POLL_S)
+        await look(app, pilot)
         assert "Search for commands" in screen_text(app)
         await pilot.press(STOP_KEY)
-        await pilot.pause(POLL_S)
+        await look(app, pilot)
         assert source.stops == ["key"]
         line_with(app, "ALL-STOP 1 IN FORCE")
 
@@ -162,7 +148,7 @@ def test_a_replay_never_transmits_a_stop() -> None:
         assert source.stops == []
         line_with(app, "a replay never transmits; in a terminal: tumblewire stop")
 
-    play(source, steps, "REPLAY")
+    play(source, steps, banner="REPLAY")
 
 
 def test_quitting_asks_nothing_where_no_wheel_turns() -> None:
@@ -180,17 +166,17 @@ def test_rest_first_waits_for_the_wheels_and_then_leaves() -> None:
 
     async def steps(app: FleetApp, pilot: "Pilot[None]") -> None:
         await pilot.press("ctrl+q")
-        await pilot.pause(POLL_S)
+        await look(app, pilot)
         await pilot.press("r")
-        await pilot.pause(POLL_S)
+        await look(app, pilot)
         assert source.orders == ["all rest"]
         line_with(app, "Waiting for the wheels to rest.")
         source.change(2, wheel_rpm=0, activity=0)
-        await pilot.pause(POLL_S)
+        await look(app, pilot)
         line_with(app, "1 wheel turns: elm")
         assert app._exit is False
         source.change(4, wheel_rpm=0, activity=0)
-        await pilot.pause(POLL_S)
+        await look(app, pilot)
         assert app._exit is True
 
     play(source, steps)
@@ -201,14 +187,14 @@ def test_a_person_may_stay_or_leave_at_once() -> None:
 
     async def steps(app: FleetApp, pilot: "Pilot[None]") -> None:
         await pilot.press("ctrl+q")
-        await pilot.pause(POLL_S)
+        await look(app, pilot)
         await pilot.press("escape")
-        await pilot.pause(POLL_S)
+        await look(app, pilot)
         assert "wheels turn" not in screen_text(app)
         await pilot.press("ctrl+q")
-        await pilot.pause(POLL_S)
+        await look(app, pilot)
         await pilot.press("right", "enter")
-        await pilot.pause(POLL_S)
+        await look(app, pilot)
         assert app._exit is True
         assert source.orders == []
 
@@ -221,9 +207,9 @@ def test_a_refused_rest_is_shown_in_the_dialog() -> None:
 
     async def steps(app: FleetApp, pilot: "Pilot[None]") -> None:
         await pilot.press("ctrl+q")
-        await pilot.pause(POLL_S)
+        await look(app, pilot)
         await pilot.press("r")
-        await pilot.pause(POLL_S)
+        await look(app, pilot)
         line_with(app, "refused: no link is open")
 
     play(source, steps)

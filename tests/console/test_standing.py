@@ -1,0 +1,101 @@
+"""The two schedules: calling the roll, and repeating stops and clears until confirmed."""
+
+import itertools
+from dataclasses import replace
+
+from console.standing import (
+    ROLL_CALM_PERIOD_NS,
+    ROLL_HASTE_PERIOD_NS,
+    ROLL_OPENING_PERIOD_NS,
+    STOP_CALM_AFTER,
+    STOP_CALM_PERIOD_NS,
+    STOP_PERIOD_NS,
+    RollCaller,
+    StopKeeper,
+    unexplained,
+)
+from console.view import FleetView, StopView
+from tests.support.fake_fleet import eight, fleet_view
+
+EPOCH = 1_760_000_000
+
+
+def calls(roll: RollCaller, unexplained_now: bool, until_ns: int, step_ns: int) -> list[int]:
+    return [t_ns for t_ns in range(0, until_ns, step_ns) if roll.due(unexplained_now, t_ns)]
+
+
+def test_the_roll_is_called_often_at_first_and_then_calmly() -> None:
+    times = calls(RollCaller(), False, 30_000_000_000, ROLL_OPENING_PERIOD_NS // 3)
+    gaps = [later - earlier for earlier, later in itertools.pairwise(times)]
+    assert times[0] == 0
+    assert gaps[:3] == [ROLL_OPENING_PERIOD_NS] * 3
+    assert all(gap == ROLL_CALM_PERIOD_NS for gap in gaps[3:])
+    assert len(gaps) > 4
+
+
+def test_a_stranger_hastens_the_roll() -> None:
+    times = calls(RollCaller(), True, 10_000_000_000, 100_000_000)
+    gaps = {later - earlier for earlier, later in itertools.pairwise(times[4:])}
+    assert gaps == {ROLL_HASTE_PERIOD_NS}
+
+
+def test_hurry_calls_at_the_next_chance() -> None:
+    roll = RollCaller()
+    assert [roll.due(False, 300_000_000 * count) for count in range(5)] == [True] * 4 + [False]
+    roll.hurry()
+    assert roll.due(False, 1_300_000_000)
+
+
+def test_who_is_unexplained() -> None:
+    modules = eight()
+    assert not unexplained(modules, EPOCH, False)
+    assert unexplained(modules, EPOCH, True)
+    assert unexplained(modules, EPOCH + 1, False)
+    assert unexplained((replace(modules[0], kind=""), *modules[1:]), EPOCH, False)
+
+
+def stopped(missing: tuple[int, ...], in_force: bool = True) -> FleetView:
+    return fleet_view(*eight(), stop=StopView(4, in_force, (), missing))
+
+
+def due_names(keeper: StopKeeper, view: FleetView, t_ns: int) -> list[str]:
+    return [module.name for module in keeper.due(view, t_ns)]
+
+
+def test_a_stop_is_repeated_to_those_who_have_not_confirmed() -> None:
+    keeper = StopKeeper()
+    keeper.hurry(0)
+    assert due_names(keeper, stopped((2, 4)), STOP_PERIOD_NS - 1) == []
+    assert due_names(keeper, stopped((2, 4)), STOP_PERIOD_NS) == ["birch", "elm"]
+    assert due_names(keeper, stopped((4,)), STOP_PERIOD_NS) == []
+    assert due_names(keeper, stopped((4,)), 2 * STOP_PERIOD_NS) == ["elm"]
+    assert due_names(keeper, stopped(()), 3 * STOP_PERIOD_NS) == []
+    assert keeper.next_ns is None
+
+
+def test_repeating_never_ends_but_grows_calm() -> None:
+    keeper = StopKeeper()
+    keeper.hurry(0)
+    times = [
+        t_ns
+        for t_ns in range(0, 60_000_000_000, STOP_PERIOD_NS // 3)
+        if keeper.due(stopped((1,)), t_ns)
+    ]
+    gaps = [later - earlier for earlier, later in itertools.pairwise(times)]
+    assert gaps[: STOP_CALM_AFTER - 1] == [STOP_PERIOD_NS] * (STOP_CALM_AFTER - 1)
+    assert set(gaps[STOP_CALM_AFTER:]) == {STOP_CALM_PERIOD_NS}
+
+
+def test_a_module_that_comes_later_gets_the_stop_too() -> None:
+    keeper = StopKeeper()
+    assert due_names(keeper, stopped(()), 0) == []
+    assert due_names(keeper, stopped((3,)), 50) == []
+    assert due_names(keeper, stopped((3,)), 50 + STOP_PERIOD_NS) == ["cedar"]
+
+
+def test_a_clear_is_repeated_to_those_still_latched() -> None:
+    keeper = StopKeeper()
+    keeper.hurry(0)
+    latched = tuple(replace(each, latched=each.name == "hazel") for each in eight())
+    view = fleet_view(*latched, stop=StopView(4, False, (), ()))
+    assert due_names(keeper, view, STOP_PERIOD_NS) == ["hazel"]

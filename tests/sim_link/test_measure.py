@@ -1,0 +1,147 @@
+"""What sensors make of the truth: units by hand, widths, noise of the stated size."""
+
+import math
+
+import pytest
+from hypothesis import given
+from hypothesis import strategies as st
+
+from protocol.codes import Activity, Flags, Reason
+from protocol.message import Packet, Pivot, decode, encode
+from sim_link import mechanics
+from sim_link.drive import Drive
+from sim_link.errors import SimStateError
+from sim_link.measure import Reporter, _field, facts, uptime_ms, wheel_rpm
+from sim_link.mechanics import MotionResult
+from sim_link.randomness import Draws
+from tests.support.virtual_console import MS, S, spec_of
+
+COMMAND = Pivot(1000, 5, 3, 0x1234, 1, 1, 6000)
+RESULT = MotionResult(
+    faces=1,
+    turned_rad=math.pi / 2,
+    peak_tilt_rad=1.7,
+    peak_rate_rad_s=10.0,
+    brake_s=0.0123,
+    settle_s=0.456,
+    settled=True,
+)
+
+
+def braked(monkeypatch: pytest.MonkeyPatch, seed: int = 1) -> tuple[Drive, Draws, int]:
+    monkeypatch.setattr(mechanics, "floor_pivot", lambda *_: RESULT)
+    draws = Draws(seed, 42)
+    drive = Drive(spec_of(), draws)
+    drive.start_pivot(1, 6000, 0)
+    t_ns = 0
+    while drive.due_ns is not None:
+        t_ns = drive.due_ns
+        drive.step()
+    return drive, draws, t_ns
+
+
+def test_facts_are_in_their_units(monkeypatch: pytest.MonkeyPatch) -> None:
+    drive, draws, t_ns = braked(monkeypatch)
+    said = facts(COMMAND, Reason.NONE, drive, draws, t_ns)
+    assert (said.epoch, said.boot, said.number, said.reason) == (1000, 5, 3, 0)
+    assert (said.face_before, said.face_after, said.settled) == (1, 2, 1)
+    assert said.turned_ddeg == pytest.approx(900, abs=25)  # a quarter turn
+    assert said.peak_tilt_ddeg == pytest.approx(974, abs=25)  # 1.7 rad is 97.4 degrees
+    assert said.peak_rate_dps == pytest.approx(573, rel=0.05)  # 10 rad/s is 573 degrees/s
+    assert said.brake_us == pytest.approx(12_300, rel=0.05)
+    assert said.settle_ms == pytest.approx(456, abs=20)
+    assert said.wheel_at_brake_rpm == pytest.approx(6000, abs=30)
+    assert 0 < said.sag_mV < 2000
+    assert said.spin_up_ms == pytest.approx(1885, rel=0.04)  # Iw w / tau
+
+
+def test_noise_is_keyed_and_of_the_stated_size(monkeypatch: pytest.MonkeyPatch) -> None:
+    errors = []
+    for seed in range(150):
+        drive, draws, t_ns = braked(monkeypatch, seed)
+        said = facts(COMMAND, Reason.NONE, drive, draws, t_ns)
+        assert said == facts(COMMAND, Reason.NONE, drive, draws, t_ns)
+        errors.append(said.turned_ddeg - 900)
+    spread = math.sqrt(sum(e * e for e in errors) / len(errors))
+    assert spread == pytest.approx(5.0, rel=0.25)  # half a degree; 150 draws
+
+
+def test_a_motion_cut_before_its_brake_has_no_brake_figures() -> None:
+    draws = Draws(1, 42)
+    drive = Drive(spec_of(), draws)
+    drive.start_pivot(1, 6000, 0)
+    drive.rest(400 * MS)
+    assert drive.due_ns is not None
+    t_ns = drive.due_ns
+    drive.step()
+    said = facts(COMMAND, Reason.RESTED, drive, draws, t_ns)
+    assert said.reason == Reason.RESTED
+    assert (said.peak_rate_dps, said.wheel_at_brake_rpm, said.brake_us, said.settle_ms) == (0,) * 4
+    assert abs(said.turned_ddeg) < 30
+
+
+def test_facts_before_any_motion_are_our_mistake() -> None:
+    draws = Draws(1, 1)
+    with pytest.raises(SimStateError):
+        facts(COMMAND, Reason.NONE, Drive(spec_of(), draws), draws, 0)
+
+
+@given(st.floats(-1e9, 1e9))
+def test_a_sensor_at_its_stop_stays_there(value: float) -> None:
+    assert -0x8000 <= _field(value, (-0x8000, 0x7FFF)) <= 0x7FFF
+    if abs(value) < 30_000:
+        assert abs(_field(value, (-0x8000, 0x7FFF)) - value) <= 0.5
+
+
+def test_telemetry_fits_its_message_in_every_activity() -> None:
+    draws = Draws(1, 9)
+    drive, reporter = Drive(spec_of(), draws), Reporter(spec_of().identity, draws)
+    drive.start_pivot(1, 9000, 0)
+    t_ns, seen = 0, set()
+    while drive.due_ns is not None:
+        for part in (0.1, 0.9):
+            now_ns = t_ns + int(part * (drive.due_ns - t_ns))
+            message = reporter.telemetry(drive, True, 77, 0, now_ns)
+            assert decode(encode(Packet(1, 0x10, message))).message == message
+            assert message.flags & Flags.LATCHED
+            seen.add(message.activity)
+        t_ns = drive.due_ns
+        drive.step()
+    assert seen == {Activity.SPINNING_UP, Activity.BRAKING, Activity.SETTLING}
+
+
+def test_telemetry_counts_and_says_when_the_body_moves() -> None:
+    draws = Draws(1, 9)
+    drive, reporter = Drive(spec_of(), draws), Reporter(spec_of().identity, draws)
+    still = reporter.telemetry(drive, False, 77, 2 * S, 5 * S)
+    assert (still.sequence, still.time_ms, still.flags) == (1, 3000, 0)
+    assert (still.face_up, still.wheel_rpm, still.identity_bits) == (1, 0, 0x1234)
+    assert 4000 < still.battery_mV < 4200
+    assert 1500 < still.temperature_cC < 3000
+    drive.start_pivot(1, 6000, 5 * S)
+    drive.step()
+    moving = reporter.telemetry(drive, False, 77, 2 * S, (drive.due_ns or 0))
+    assert (moving.sequence, moving.face_up) == (2, 0)
+    assert moving.flags & Flags.UNSETTLED
+    reporter.restart()
+    assert reporter.telemetry(drive, False, 78, 9 * S, 9 * S).sequence == 1
+
+
+def test_sequence_wraps_at_16_bits() -> None:
+    draws = Draws(1, 9)
+    reporter = Reporter(1, draws)
+    reporter._sequence = 0xFFFF
+    assert reporter.telemetry(Drive(spec_of(), draws), False, 1, 0, 0).sequence == 0
+
+
+def test_a_wheel_that_hardly_turns_reads_zero() -> None:
+    drive = Drive(spec_of(), Draws(1, 1))
+    drive.wheel.ramp(0.05, 1.0, 0)  # 0.48 rpm
+    assert wheel_rpm(drive, S) == 0
+    drive.wheel.ramp(-200.0, 1000.0, S)
+    assert wheel_rpm(drive, 2 * S) == -1910  # 200 rad/s are 1909.9 rpm
+
+
+def test_uptime_wraps_at_32_bits() -> None:
+    assert uptime_ms(S, 3 * S) == 2000
+    assert uptime_ms(0, (1 << 32) * MS + 5 * MS) == 5

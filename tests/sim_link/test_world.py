@@ -1,0 +1,291 @@
+"""The whole simulated fleet in virtual time: outcomes, determinism, at most once, all-stop."""
+
+import hashlib
+from collections import Counter
+
+import pytest
+
+from protocol.codes import Activity, AnswerState, Reason
+from protocol.frame import frame
+from protocol.message import (
+    Answer,
+    Clear,
+    Facts,
+    Nameplate,
+    RollCall,
+    Stop,
+    Stopped,
+    Telemetry,
+    encode,
+)
+from sim_link.errors import SimInputError
+from sim_link.options import Fault, FaultKind, SimOptions
+from sim_link.tally import TallyEntry
+from sim_link.world import World
+from tests.support.virtual_console import (
+    EPOCH,
+    MS,
+    S,
+    VirtualConsole,
+    pivot,
+    rest,
+    spin,
+    to_all,
+    to_module,
+)
+
+PAVERS, PEBBLES = (0x10, 0x12, 0x14, 0x16), (0x11, 0x13, 0x15, 0x17)
+BAD_RADIO = {"loss": 0.2, "damage": 0.05, "repeat": 0.3, "reorder": 0.2, "delay_ms": 20.0}
+
+
+def console(**options: object) -> VirtualConsole:
+    return VirtualConsole(World(SimOptions(**options)))  # type: ignore[arg-type]
+
+
+def facts_of(host: VirtualConsole, address: int, number: int) -> Facts:
+    (facts,) = (m for m in host.replies(address, number) if isinstance(m, Facts))
+    return facts
+
+
+def test_everyone_answers_the_roll_call() -> None:
+    host = console(seed=7)
+    assert set(host.call_roll()) == set(range(0x10, 0x18))
+    plates = [p.message for p in host.heard if isinstance(p.message, Nameplate)]
+    assert len(plates) == 8
+
+
+def test_a_fleet_lands_falls_short_and_goes_over_where_it_should() -> None:
+    host = console(seed=7)
+    present = host.call_roll()
+    for number, speed_rpm in enumerate((3600, 5200, 8900), 1):
+        for address, presence in present.items():
+            host.say(to_module(pivot(presence, number, speed_rpm), address))
+        host.run(10 * S)
+    faces = {
+        number: Counter(
+            (facts.face_after - facts.face_before) % 4
+            for facts in (facts_of(host, address, number) for address in present)
+        )
+        for number in (1, 2, 3)
+    }
+    assert faces[1] == {0: 8}
+    assert faces[2] == {1: 8}
+    assert faces[3] == {1: 4, 2: 4}
+    over = [facts_of(host, address, 3).turned_ddeg for address in PEBBLES]
+    assert all(turned == pytest.approx(1800, abs=40) for turned in over)
+
+
+def history(seed: int, **options: object) -> str:
+    """Run one scripted sitting and return the digest of every byte the console got."""
+    host = console(seed=seed, **BAD_RADIO, **options)
+    present = host.call_roll()
+    for number in (1, 2):
+        for address in sorted(present):
+            host.say(to_module(pivot(present[address], number, 4300), address))
+        host.run(3 * S)
+        host.say(to_all(Stop(number)))
+        host.run(2 * S)
+        host.say(to_all(Clear(number)))
+    return hashlib.sha256(host.raw).hexdigest()
+
+
+def test_one_seed_one_history_byte_for_byte() -> None:
+    assert history(5) == history(5)
+
+
+def test_another_seed_is_another_history() -> None:
+    assert len({history(seed) for seed in (5, 6, 7)}) == 3
+
+
+def test_reading_more_often_changes_nothing() -> None:
+    raws = []
+    for step_ms in (1, 7, 333):
+        host = console(seed=3, **BAD_RADIO)
+        host.say(to_all(RollCall(EPOCH)))
+        host.run(4 * S, step_ms * MS)
+        raws.append(host.raw)
+    assert raws[0] == raws[1] == raws[2]
+
+
+@pytest.mark.parametrize("seed", [1, 2, 3])
+def test_at_most_once_over_a_bad_radio(seed: int) -> None:
+    tally: list[TallyEntry] = []
+    options = SimOptions(
+        seed=seed, fault=(Fault(FaultKind.RESTART_ON_BRAKE, "maple"),), **BAD_RADIO
+    )
+    host = VirtualConsole(World(options, tally.append))
+    for _ in range(8):
+        host.call_roll()
+    boots = {address: presence.boot for address, presence in host.present.items()}
+    for number in range(1, 6):
+        for _ in range(6):  # each command again and again, as a console with no patience
+            for address, presence in host.present.items():
+                first = presence._replace(boot=boots[address])
+                host.say(to_module(pivot(first, number), address))
+            host.run(700 * MS)
+    host.run(10 * S)
+    counts = Counter((entry.identity, entry.boot, entry.number) for entry in tally)
+    assert set(counts.values()) == {1}
+    # The restarted one took nothing more under its old boot number; the others did nearly all.
+    maple = Counter(entry.name for entry in tally)["maple"]
+    assert maple == 1
+    assert len(tally) > 30
+    assert {entry.motion for entry in tally} == {"pivot"}
+
+
+def test_every_motion_that_moved_a_body_is_in_the_tally() -> None:
+    tally: list[TallyEntry] = []
+    host = VirtualConsole(World(SimOptions(seed=2, repeat=1.0, reorder=0.5), tally.append))
+    present = host.call_roll()
+    for number in (1, 2, 3):
+        for address in PAVERS:
+            host.say(to_module(pivot(present[address], number, 5500), address))
+        host.run(6 * S)
+    for module in host.world.modules:
+        moved = round(module.drive.body.turned_rad / 1.5707963)
+        assert moved == sum(entry.identity == module.spec.identity for entry in tally)
+
+
+@pytest.mark.parametrize("wait_ms", [1, 300, 900, 1500])
+def test_all_stop_rests_every_wheel_and_moves_nobody(wait_ms: int) -> None:
+    host = console(seed=4)
+    present = host.call_roll()
+    before = [module.drive.body.posture(host.t_ns) for module in host.world.modules]
+    for address, presence in present.items():
+        if address in PAVERS:
+            host.say(to_module(pivot(presence, 1, 9000), address))
+        else:
+            host.say(to_module(spin(presence, 1, -6000, 60_000), address))
+    host.run(wait_ms * MS)
+    host.say(to_all(Stop(1)))
+    host.run(8 * S)
+    confirmed = {p.source for p in host.heard if isinstance(p.message, Stopped)}
+    assert confirmed == set(present)
+    for module, posture in zip(host.world.modules, before, strict=True):
+        assert module.drive.activity is Activity.STILL
+        assert module.drive.wheel.speed_rad_s(host.t_ns) == 0.0
+        assert module.drive.body.posture(host.t_ns) == posture
+        assert module.drive.body.turned_rad == 0.0
+    for address in PAVERS:
+        assert facts_of(host, address, 1).reason == Reason.STOPPED
+    for address in PEBBLES:
+        assert host.replies(address, 1)[-1].state == AnswerState.CUT  # type: ignore[union-attr]
+
+
+def test_a_broadcast_reaches_each_module_by_its_own_luck() -> None:
+    host = console(seed=1, modules=40, loss=0.5)
+    host.say(to_all(Stop(1)))
+    host.run(S)
+    latched = sum(module.latched for module in host.world.modules)
+    assert 8 <= latched <= 32
+
+
+def test_rest_beside_a_motion_is_answered_with_both_ends() -> None:
+    host = console(seed=1)
+    present = host.call_roll()
+    host.say(to_module(pivot(present[0x10], 1, 8000), 0x10))
+    host.run(500 * MS)
+    host.say(to_module(rest(present[0x10], 2), 0x10))
+    host.run(5 * S)
+    assert facts_of(host, 0x10, 1).reason == Reason.RESTED
+    states = [m.state for m in host.replies(0x10, 2) if isinstance(m, Answer)]
+    assert states == [AnswerState.ACCEPTED, AnswerState.FINISHED]
+
+
+def test_faults_show_on_the_wire() -> None:
+    faults = (Fault(FaultKind.SILENT, "birch"), Fault(FaultKind.LOW_BATTERY, "elm"))
+    host = console(seed=1, fault=faults)
+    present = host.call_roll()
+    host.run(5 * S)
+    talkers = {p.source for p in host.heard if isinstance(p.message, Telemetry)}
+    assert 0x11 in present
+    assert 0x11 not in {p.source for p in host.run(5 * S)}
+    assert {0x10, 0x13} <= talkers
+    host.say(to_module(pivot(present[0x13], 1), 0x13))
+    host.run(S)
+    (answer,) = host.replies(0x13, 1)
+    assert isinstance(answer, Answer)
+    assert answer.reason == Reason.BATTERY_LOW
+
+
+def test_the_line_paces_both_ways() -> None:
+    # 9,600 baud: 960 bytes a second. The roll call of 22 bytes takes 23 ms to the bridge, and
+    # nothing of the answers is across before.
+    host = console(seed=7, rate=9600)
+    call = frame(encode(to_all(RollCall(EPOCH))))
+    host.world.write(call, 0)
+    assert host.world.unsent(0) == len(call)
+    across_ns = len(call) * 10 * S // 9600
+    assert host.world.read(across_ns) == b""
+    assert host.world.unsent(across_ns + MS) == 0
+    got = len(host.world.read(across_ns + 300 * MS))
+    assert got == pytest.approx(0.3 * 960, abs=2)
+
+
+def test_what_is_unsent_can_be_dropped() -> None:
+    host = console(seed=7, rate=1200)
+    host.world.write(frame(encode(to_all(RollCall(EPOCH)))), 0)
+    host.world.discard_unsent(10 * MS)
+    assert host.world.unsent(10 * MS) <= 1
+    host.run(3 * S)
+    assert host.present == {}
+
+
+def test_noise_on_the_line_is_dropped_and_the_next_frame_heard() -> None:
+    host = console(seed=7)
+    host.world.write(b"\x05rubbish\x00" + bytes(range(1, 200)) + b"\0", 0)
+    assert len(host.call_roll()) == 8
+    assert host.world.counts.dropped_at_bridge == 2
+
+
+def test_good_frames_that_mean_nothing_are_dropped() -> None:
+    host = console(seed=7)
+    host.world.write(frame(b"\x09\x01\xff\xff\x01\x00"), 0)  # another wire version
+    host.say(to_module(RollCall(EPOCH), 0x99))  # nobody's address
+    host.run(100 * MS)
+    assert host.present == {}
+    assert host.world.counts.dropped_at_bridge == 1
+
+
+def test_damage_is_counted_where_it_is_noticed() -> None:
+    host = console(seed=7, damage=1.0)
+    host.call_roll()
+    host.run(2 * S)
+    assert host.world.counts.dropped_at_modules > 0
+    assert host.heard == []
+    assert host.world.counts.frames_to_console > 0
+
+
+def test_next_event_is_never_in_the_past_and_always_comes() -> None:
+    world = World(SimOptions(seed=9, delay_ms=30.0))
+    t_ns = 0
+    for _ in range(300):
+        due_ns = world.next_event_ns
+        assert due_ns is not None
+        assert due_ns >= t_ns
+        t_ns = due_ns
+        world.read(t_ns)
+    assert t_ns > 5 * S
+
+
+def test_time_does_not_run_backwards() -> None:
+    host = console(seed=7)
+    host.run(5 * S)
+    before = len(host.heard)
+    assert host.world.read(S) == b""
+    host.say(to_all(RollCall(EPOCH)))
+    host.run(S)
+    assert len(host.heard) > before
+
+
+def test_a_thousand_modules_each_keep_their_time() -> None:
+    world = World(SimOptions(seed=1, modules=1000))
+    assert len(world.modules) == 1000
+    world.advance(2 * S)
+    reports = [module.next_wake_ns for module in world.modules]
+    assert all(2 * S < report_ns <= 2 * S + 500 * MS for report_ns in reports)
+
+
+def test_bad_fleets_and_faults_are_refused_before_anything_runs() -> None:
+    with pytest.raises(SimInputError, match="no such module"):
+        World(SimOptions(fault=(Fault(FaultKind.SILENT, "bob"),)))
