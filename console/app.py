@@ -116,7 +116,7 @@ class FleetApp(App[None]):
     def action_stop_all(self) -> None:
         """All-stop, now."""
         if self._banner == REPLAY:
-            self._fleet.say(f"{NEVER_TRANSMITS}; in a terminal: tumblewire stop", refused=True)
+            self._fleet.say(f"{NEVER_TRANSMITS}; press it in the live console", refused=True)
             return
         try:
             self._source.stop("key")

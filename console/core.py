@@ -9,6 +9,7 @@ Must not know: threads, clocks, screens, sheets, SQL.
 """
 
 from collections.abc import Callable, Sequence
+from functools import partial
 from typing import Final, Protocol
 
 from console.errors import InputError
@@ -22,7 +23,7 @@ from console.view import CommandView, FleetView, ModuleView
 from protocol.codes import CONSOLE_ADDRESS, EVERYONE_ADDRESS
 from protocol.exchange import CommandExchange, Ended, Ending, Send
 from protocol.frame import frame
-from protocol.message import Clear, Message, Packet, RollCall, Stop, encode
+from protocol.message import Clear, Message, Packet, Rest, RollCall, Stop, encode
 from storage.records import (
     BytesIn,
     BytesOut,
@@ -83,7 +84,6 @@ class SessionCore:
         self._command_number = 0
         self._wire_numbers: dict[int, int] = {}
         self._on_end: dict[int, OnEnd] = {}
-        self._planned: dict[int, tuple[int, list[Row]]] = {}
         self.open_links = set(range(len(self._outboxes)))
 
     # -- records -------------------------------------------------------------------------
@@ -158,18 +158,29 @@ class SessionCore:
 
     def _record_order(self, given: OrderGiven, wait: bool) -> None:
         number, step = self._apply(given)
-        if not wait:
+        if wait:
+            done = partial(self._answer, given)
+            self._log.commit(number, given, step.rows, done)
+        else:
             self._log.append(number, given, step.rows)
-            self._send(given, given.t_ns)
-            return
-        self._planned[given.order] = (number, step.rows)
-        self._log.commit(number, given, step.rows, lambda why_not: self._answer(given, why_not))
+            self._rest(given)
+
+    def _rest(self, given: OrderGiven) -> None:
+        """Send rests at once; they take the place of whatever those modules still had to do."""
+        for planned in given.commands:
+            module = self.fleet.module(planned.module)
+            if module is not None:
+                self._outboxes[module.link].drop_plain(module.address)
+                self._effects(self._exchange.withdraw(_destination(module)), given.t_ns)
+        self._send(given, given.t_ns)
 
     def committed(self, given: OrderGiven, why_not: str, t_ns: int) -> None:
-        """The log's answer on an order: send its commands, or end them as refused."""
-        number, rows = self._planned.pop(given.order)
+        """The log's answer on an order: send its commands, or end them as refused.
+
+        A log that refused an order keeps it, to write it once it can: what was asked for is
+        part of the session, and so is that it was not done.
+        """
         if why_not:
-            self._log.append(number, given, rows)
             self.note(OrderVoided(t_ns, given.order, why_not))
         else:
             self._send(given, t_ns)
@@ -248,7 +259,7 @@ class SessionCore:
         for effect in effects:
             if isinstance(effect, Send):
                 link, address = divmod(effect.destination, 1 << LINK_SHIFT)
-                self._push(link, address, effect.message)
+                self._push(link, address, effect.message, urgent=isinstance(effect.message, Rest))
             elif effect.how is Ending.UNSEEN:
                 view = self.fleet.command(effect.command)
                 if view is not None and not view.ending:
@@ -260,7 +271,7 @@ class SessionCore:
 
     def _push(self, link: int, address: int, message: Message, urgent: bool = False) -> None:
         payload = encode(Packet(address, CONSOLE_ADDRESS, message))
-        self._outboxes[link].push(frame(payload), urgent)
+        self._outboxes[link].push(address, frame(payload), urgent)
 
 
 def _destination(module: ModuleView) -> int:

@@ -11,17 +11,22 @@ import queue
 import threading
 from collections.abc import Callable, Sequence
 from concurrent.futures import Future
-from dataclasses import dataclass
+from contextlib import suppress
+from dataclasses import dataclass, replace
 from typing import Any, Final
 
 from console.clock import SessionClock, utc_now
 from console.core import OnEnd, SessionCore
-from console.errors import InputError
+from console.errors import EngineError, InputError
 from console.link import LinkReader, Outbox
 from console.orders import Order, parse_order
 from console.port import Port
 from console.view import FleetView
+from protocol.codes import CONSOLE_ADDRESS, EVERYONE_ADDRESS
+from protocol.frame import frame
+from protocol.message import Packet, Stop, encode
 from protocol.pacing import LinePacer
+from storage.errors import StorageError
 from storage.records import (
     LinkChanged,
     OrderGiven,
@@ -36,6 +41,8 @@ from storage.writer import LogWriter
 VIEW_PERIOD_NS: Final = 50_000_000
 """How often a new picture is made at most: twice as often as a screen looks."""
 ANSWER_WAIT_S: Final = 2.0
+LAST_STOPS: Final = 3
+"""How often the all-stop of a failing engine is sent: it cannot wait for confirmations."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -70,6 +77,8 @@ class Engine:
         self._view = self._core.view(0)
         self._viewed_ns = 0
         self._unseen_change = False
+        self._failure: Exception | None = None
+        self._log_lost = ""
         self._ended = False
         self._thread = threading.Thread(target=self._run, name="engine", daemon=True)
 
@@ -80,10 +89,18 @@ class Engine:
         self._thread.start()
 
     def close(self, why: str = "closed") -> None:
-        """End the session in order: last record, log, ports, threads. Safe to call twice."""
+        """End the session in order: last record, log, ports, threads. Safe to call twice.
+
+        Raises EngineError where the engine failed by a fault of its own.
+        """
         self._inbox.put(_Request(lambda t_ns: self._close(why, t_ns)))
         if self._thread.ident is not None:
             self._thread.join()
+        if self._failure is not None:
+            failure = repr(self._failure)
+            raise EngineError(
+                f"the engine failed ({failure}); all-stop was sent"
+            ) from self._failure
 
     @property
     def session(self) -> int:
@@ -103,8 +120,10 @@ class Engine:
         return self._view
 
     def log_trouble(self) -> str:
-        """Why the log does not write now, or an empty text."""
-        return self._log.trouble()
+        """Why nothing is written now, or an empty text."""
+        if self._failure is not None:
+            return f"the engine failed: {self._failure!r}"
+        return self._log_lost or self._log.trouble()
 
     def link_open(self) -> bool:
         """Whether any link is still open."""
@@ -150,7 +169,7 @@ class Engine:
         self._inbox.put(_Request(lambda t_ns: self._core.note(make(t_ns))))
 
     def _ask(self, act: Callable[[int], Any]) -> Any:
-        if not self._thread.is_alive():
+        if self._ended or not self._thread.is_alive():
             raise InputError("the session is closed")
         reply: Future[Any] = Future()
         self._inbox.put(_Request(act, reply))
@@ -175,15 +194,41 @@ class Engine:
     # -- the engine's thread -------------------------------------------------------------
 
     def _run(self) -> None:
+        try:
+            self._conduct()
+        except Exception as error:  # noqa: BLE001 - whatever it is, the wheels must rest
+            self._fail(error)
+        while not self._inbox.empty():
+            self._do(self._inbox.get())
+
+    def _fail(self, error: Exception) -> None:
+        """A fault of ours: all-stop goes out as bytes alone, and ``close`` tells what it was."""
+        self._failure = error
+        self._ended = True
+        stop = Stop(self._core.fleet.newest_stop + 1)
+        data = frame(encode(Packet(EVERYONE_ADDRESS, CONSOLE_ADDRESS, stop)))
+        for reader in self._readers:
+            reader.end()
+        for port in self._ports:
+            with suppress(OSError):
+                port.write(data * LAST_STOPS)
+            port.close()
+        self._core.open_links.clear()
+        self._view = replace(self._view, closed=True)
+        self._close_log("failed", utc_now())
+
+    def _conduct(self) -> None:
         self._core.note(self._opened)
         for link, port in enumerate(self._ports):
             self._core.note(LinkChanged(self._clock.now_ns(), link, port.url, "open", ""))
         for reader in self._readers:
             reader.start()
-        while not self._ended:
+        while True:
             requests = self._take()
             for request in requests:
                 self._do(request)
+            if self._ended:
+                return
             self._unseen_change |= bool(requests)
             now_ns = self._clock.now_ns()
             self._core.wake(now_ns)
@@ -255,6 +300,12 @@ class Engine:
             reader.join()
         for port in self._ports:
             port.close()
-        self._log.close("closed", utc)
+        self._close_log("closed", utc)
         self._publish(t_ns, force=True)
         self._ended = True
+
+    def _close_log(self, ending: str, utc: str) -> None:
+        try:
+            self._log.close(ending, utc)
+        except StorageError as error:
+            self._log_lost = str(error)

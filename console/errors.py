@@ -24,3 +24,9 @@ class LogError(ConsoleError):
     """The log is bad, or was lost."""
 
     exit_status = 3
+
+
+class EngineError(ConsoleError):
+    """The engine failed by a fault of its own; every wheel was told to rest."""
+
+    exit_status = 3

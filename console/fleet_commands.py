@@ -18,6 +18,7 @@ from storage.records import CommandExpired, OrderGiven, OrderVoided
 
 NOT_RECORDED: Final = "not recorded"
 STOPPED: Final = reason_text(Reason.STOPPED)
+RESTED: Final = reason_text(Reason.RESTED)
 
 
 # -- what the console did ----------------------------------------------------------------
@@ -28,6 +29,8 @@ def plan_order(state: FleetState, at: Moment, record: OrderGiven) -> None:
     write_order(at, record)
     for planned in record.commands:
         module = state.ordered_module(planned)
+        if planned.motion == "rest":
+            withdraw_commands(state, at, module, RESTED)
         command = CommandState(planned, record.order, at.t_ns, module)
         state.commands[planned.command] = command
         _enter_wire_key(state, command)
@@ -87,10 +90,18 @@ def expire(state: FleetState, at: Moment, record: CommandExpired) -> None:
 def stop_commands(state: FleetState, at: Moment) -> None:
     """At an all-stop: end what was never sent, and mark the rest as withdrawn."""
     for module in state.modules.values():
-        for command in list(module.in_hand.values()):
-            command.withdrawn = True
-            if command.sends == 0:
-                end_command(state, at, command, "cut", STOPPED)
+        withdraw_commands(state, at, module, STOPPED)
+
+
+def withdraw_commands(state: FleetState, at: Moment, module: ModuleState, why: str) -> None:
+    """End what was never sent to a module, and mark what was: it is only asked about now.
+
+    A rest goes ahead of all that waits and is never taken back, so it is as good as sent.
+    """
+    for command in list(module.in_hand.values()):
+        command.withdrawn = why
+        if command.sends == 0 and command.planned.motion != "rest":
+            end_command(state, at, command, "cut", why)
 
 
 # -- what the module said ----------------------------------------------------------------
@@ -165,7 +176,8 @@ def _reason(command: CommandState, answer: Answer) -> str | None:
     if answer.reason != Reason.NONE:
         return reason_text(answer.reason)
     if answer.state == AnswerState.UNKNOWN:
-        return STOPPED if command.withdrawn and not command.accepted else "unknown to the module"
+        never_had_it = command.withdrawn and not command.accepted
+        return command.withdrawn if never_had_it else "unknown to the module"
     return None
 
 

@@ -102,8 +102,9 @@ class ModuleState:
 
 @dataclass(slots=True, eq=False)
 class CommandState:
-    """One command. ``asking``: a question about it is out, unanswered; ``withdrawn``: an
-    all-stop came after it had been sent; ``final``: nothing can change its ending any more."""
+    """One command. ``asking``: a question about it is out, unanswered; ``withdrawn``: why
+    it is not to be sent again, stopped or rested, or empty; ``final``: nothing can change its
+    ending any more."""
 
     planned: PlannedCommand
     order: int
@@ -113,7 +114,7 @@ class CommandState:
     repeats_ignored: int = 0
     accepted: bool = False
     asking: bool = False
-    withdrawn: bool = False
+    withdrawn: str = ""
     ending: str | None = None
     reason: str | None = None
     final: bool = False

@@ -60,28 +60,38 @@ class Outbox:
     def __init__(self, pacer: LinePacer) -> None:
         self._pacer = pacer
         self._urgent: deque[bytes] = deque()
-        self._plain: deque[bytes] = deque()
+        self._plain: deque[tuple[int, bytes]] = deque()
 
-    def push(self, frame: bytes, urgent: bool = False) -> None:
-        """Append a frame; an urgent one goes before all that are not."""
-        (self._urgent if urgent else self._plain).append(frame)
+    def push(self, address: int, frame: bytes, urgent: bool = False) -> None:
+        """Append a frame for an address; an urgent one goes before all that are not."""
+        if urgent:
+            self._urgent.append(frame)
+        else:
+            self._plain.append((address, frame))
 
-    def drop_plain(self) -> int:
-        """Forget what is not urgent, because all-stop erases it; return how many frames."""
-        count = len(self._plain)
-        self._plain.clear()
-        return count
+    def drop_plain(self, address: int | None = None) -> int:
+        """Forget what is not urgent, for one address or for all, because a rest or an all-stop
+        erases it; return how many frames."""
+        before = len(self._plain)
+        kept = [] if address is None else [each for each in self._plain if each[0] != address]
+        self._plain = deque(kept)
+        return before - len(kept)
+
+    def _next(self) -> bytes | None:
+        if self._urgent:
+            return self._urgent[0]
+        return self._plain[0][1] if self._plain else None
 
     def next_ready_ns(self, t_ns: int) -> int | None:
         """When the next frame may be handed over; None where nothing waits."""
-        queue = self._urgent or self._plain
-        return self._pacer.ready_ns(len(queue[0]), t_ns) if queue else None
+        frame = self._next()
+        return None if frame is None else self._pacer.ready_ns(len(frame), t_ns)
 
     def pop_ready(self, t_ns: int) -> bytes | None:
         """Take the next frame if the wire has room for it now."""
-        ready_ns = self.next_ready_ns(t_ns)
-        if ready_ns is None or ready_ns > t_ns:
+        frame = self._next()
+        if frame is None or self._pacer.ready_ns(len(frame), t_ns) > t_ns:
             return None
-        frame = (self._urgent or self._plain).popleft()
+        (self._urgent or self._plain).popleft()
         self._pacer.sent(len(frame), t_ns)
         return frame

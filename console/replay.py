@@ -43,7 +43,10 @@ class ReplayPlayer:
         self._reducer = FleetReducer()
         self._next = 0
         self._start_ns = self._records[0][1].t_ns if self._records else 0
-        self._length_ns = max(self._records[-1][1].t_ns - self._start_ns, 0) if self._records else 0
+        # Not the last one's time: bytes carry that of their reading, and may be a little older
+        # than what was recorded before them.
+        latest_ns = max((record.t_ns for _, record in self._records), default=self._start_ns)
+        self._length_ns = latest_ns - self._start_ns
         self._position_ns = 0
         self._looked_ns: int | None = None
         self._playing = False
@@ -92,7 +95,7 @@ class ReplayPlayer:
 
     @property
     def length_ns(self) -> int:
-        """Nanoseconds from the first record to the last."""
+        """Nanoseconds from the first record to the latest."""
         return self._length_ns
 
     @property

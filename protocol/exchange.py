@@ -115,6 +115,9 @@ class CommandExchange:
     def submit(self, command: int, destination: int, message: Command, t_ns: int) -> list[Step]:
         """Take a command, ``command`` being its name in what comes back.
 
+        The low 16 bits of ``destination`` are the module's address; what stands above them (the
+        number of a link, say) only tells modules of one address apart.
+
         Raises LocalProtocolError for a destination that is not one module, for number 0, and
         for a name or a number that is still in use.
         """
@@ -171,7 +174,7 @@ class CommandExchange:
         return [step for step in steps if isinstance(step, Ended)]
 
     def _check(self, command: int, destination: int, message: Command) -> None:
-        if not FIRST_MODULE_ADDRESS <= destination <= LAST_MODULE_ADDRESS:
+        if not FIRST_MODULE_ADDRESS <= destination & 0xFFFF <= LAST_MODULE_ADDRESS:
             raise LocalProtocolError(f"a command goes to one module, not to 0x{destination:04x}")
         if command in self._open:
             raise LocalProtocolError(f"command {command} has not ended yet")

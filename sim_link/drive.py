@@ -148,8 +148,13 @@ class Drive:
         return self._cue(Cue.REST, t_ns)
 
     def step(self) -> Activity:
-        """Make the change that is due at ``due_ns`` and return the activity entered."""
-        t_ns = self.due_ns or 0
+        """Make the change that is due at ``due_ns`` and return the activity entered.
+
+        Raises SimStateError where nothing is due.
+        """
+        t_ns = self.due_ns
+        if t_ns is None:
+            raise SimStateError("nothing is due: the drive is still")
         if self.activity is Activity.SPINNING_UP and self.motion is not None:
             self._cue(Cue.BRAKE_DUE if self.motion.brakes else Cue.HOLD_DUE, t_ns)
         else:

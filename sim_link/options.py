@@ -12,9 +12,11 @@ from typing import Any, Final, NamedTuple
 from urllib.parse import parse_qsl, urlsplit
 
 from sim_link.errors import SimInputError
-from sim_link.randomness import MAX_SEED
 
 MAX_MODULES: Final = 2000
+
+_MAX_SEED: Final = (1 << 64) - 1
+"""As in randomness.py, which takes longer to import than a command line should."""
 
 
 class FaultKind(StrEnum):
@@ -173,7 +175,7 @@ OPTIONS: Final[dict[str, Option]] = {
         ),
         Option(
             "seed",
-            _integer(0, MAX_SEED),
+            _integer(0, _MAX_SEED),
             "a whole number from 0 to 2**64 - 1 is needed",
             "one seed, one history",
         ),

@@ -215,6 +215,7 @@ class Serial(serial.SerialBase):
     def _drained(self, limit: int, deadline_s: float | None) -> bool:
         """Wait until at most ``limit`` bytes are unsent; False where the time ran out."""
         while True:
+            self._take()  # else what waits to be read would be the next event, for ever
             world, clock = self._opened()
             if world.unsent(clock.now_ns()) <= limit or self._write_cancelled:
                 return True

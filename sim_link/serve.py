@@ -30,7 +30,17 @@ _HELD_BYTES: Final = 8192
 """What is kept for a reader that is slow; beyond it the newest frames are lost."""
 _STALE_S: Final = 0.5
 """Nobody read for so long: what is kept would be old news to whoever reads next."""
-_GONE: Final = frozenset({errno.EIO, errno.EPIPE, errno.ECONNRESET, errno.ENOTCONN})
+_GONE: Final = frozenset(
+    {
+        errno.EIO,
+        errno.EPIPE,
+        errno.ECONNRESET,
+        errno.ECONNABORTED,
+        errno.ENOTCONN,
+        errno.ETIMEDOUT,
+        errno.EHOSTUNREACH,
+    }
+)
 """What a pseudo-terminal or a socket says when nobody is at the other end (any more)."""
 
 
@@ -159,8 +169,8 @@ class _Listener(_Endpoint):
     def _accept(self) -> None:
         try:
             client, _ = self._listener.accept()
-        except BlockingIOError:
-            return
+        except (BlockingIOError, ConnectionAbortedError):
+            return  # it left before it was taken
         client.setblocking(False)
         client.setsockopt(socket.IPPROTO_TCP, socket.TCP_NODELAY, 1)
         self._held.clear()

@@ -5,6 +5,7 @@ Owns how the two are put together. Knows nothing of what the screen draws.
 
 from pathlib import Path
 
+from console.commands.stopping import SCREEN_SIGNALS, await_confirmation, stop_on_signal
 from console.engine import Engine
 from console.errors import InputError, LogError
 from console.opening import PRACTICE_LINK, SessionOptions, open_session, operator_name
@@ -25,7 +26,11 @@ def run_live(options: SessionOptions) -> int:
             controls=None,
             completions=lambda text: _complete(engine, text),
         )
-        app.run()
+        with stop_on_signal(engine, SCREEN_SIGNALS, then=app.exit):
+            app.run()
+        stopped = engine.view().stop.in_force
+        if stopped and not await_confirmation(engine):
+            return 1
     finally:
         engine.close()
     return 0 if engine.link_open() and not engine.log_trouble() else 3

@@ -4,26 +4,20 @@ Owns the progress bars, what signals do, and the object that ``--json`` prints. 
 an all-stop: it goes out at once, is confirmed, and then the program ends.
 """
 
-import signal
 import sys
-import threading
 from collections.abc import Callable, Iterator
 from contextlib import contextmanager
 from pathlib import Path
-from types import FrameType
-from typing import Any, Final
+from typing import Any
 
 import click
 
 from console.commands.output import print_json, print_line, say
+from console.commands.stopping import await_confirmation, stop_on_signal
 from console.dispatch import SheetRun, Tally, TrialEnd
-from console.engine import Engine
 from console.opening import SessionOptions, open_session
 from console.sheet import Sheet, load_sheet, plan
 from console.view import Outcome
-
-STOP_SIGNALS: Final = (signal.SIGINT, signal.SIGTERM, signal.SIGHUP)
-CONFIRM_WAIT_S: Final = 10.0
 
 
 def run_sheet(sheet_path: Path, options: SessionOptions, as_json: bool) -> int:
@@ -32,14 +26,14 @@ def run_sheet(sheet_path: Path, options: SessionOptions, as_json: bool) -> int:
     trials = plan(sheet)
     engine = open_session(options)
     try:
-        with _stop_on_signal(engine):
+        with stop_on_signal(engine):
             engine.open_sheet(sheet_path.name, sheet.text, sheet.seed, len(trials))
             with _progress(sheet, len(trials)) as told:
                 run = SheetRun(engine, sheet, trials, told)
                 tally = run.run()
             engine.close_sheet(tally.stopped or "")
-            if tally.stopped is not None and engine.link_open():
-                _await_stop(engine)
+            if tally.stopped is not None and engine.view().stop.in_force:
+                await_confirmation(engine)
         simulated = engine.view().simulated
         trouble = engine.log_trouble()
     finally:
@@ -59,38 +53,6 @@ def _status(tally: Tally) -> int:
     if tally.stopped is None:
         return 0
     return 3 if tally.stopped == "link lost" else 1
-
-
-@contextmanager
-def _stop_on_signal(engine: Engine) -> Iterator[None]:
-    """While inside, an interrupt, a termination or a hang-up is an all-stop."""
-
-    def stop(number: int, frame: FrameType | None) -> None:
-        del frame
-        engine.stop(signal.Signals(number).name)
-
-    if threading.current_thread() is not threading.main_thread():
-        yield
-        return
-    before = {number: signal.signal(number, stop) for number in STOP_SIGNALS}
-    try:
-        yield
-    finally:
-        for number, handler in before.items():
-            signal.signal(number, handler)
-
-
-def _await_stop(engine: Engine) -> None:
-    """Wait until every module has confirmed the all-stop, and say who has not."""
-    gate = threading.Event()
-    step_s = 0.05
-    for _ in range(int(CONFIRM_WAIT_S / step_s)):
-        if not engine.view().stop.in_force or not engine.view().stop.missing:
-            return
-        gate.wait(step_s)
-    names = {module.module: module.name for module in engine.view().modules}
-    missing = ", ".join(names[module] for module in engine.view().stop.missing)
-    say(f"tumblewire: all-stop not confirmed by {missing}; do not go near, cut their power if safe")
 
 
 @contextmanager

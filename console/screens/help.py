@@ -36,7 +36,8 @@ KEYS: Final = (
 FROZEN: Final = f"""\
   If the screen is frozen no key works here, {STOP_KEY} neither. Then:
   1. Keep hands and faces away from the modules: a wheel may be turning.
-  2. In another terminal on this computer type: tumblewire stop
+  2. In another terminal on this computer type: pkill -TERM tumblewire
+     That is an all-stop first; then the console ends.
   3. A wheel turns no longer than it was ordered to: each module rests
      it by itself at the end, whatever becomes of this console.
   4. Go near only when every wheel is at rest. An all-stop stays in

@@ -97,6 +97,32 @@ def test_rest_does_not_wait_for_the_log() -> None:
     assert session.core.fleet.modules_by_name()["birch"].wheel_rpm == 0
 
 
+def test_rest_takes_the_place_of_what_waits() -> None:
+    session = opened()
+    session.order("birch spin at 3000 for 30 s")
+    session.order("birch pivot forward at 5200")
+    session.run_for(2)
+    session.order("birch rest")
+    session.settle()
+    session.run_for(10)
+    assert [entry.motion for entry in session.tally] == ["spin", "rest"]
+    [motion] = motions(session)
+    assert motion.outcome == "cut"
+    endings = {row.command: row.ending for row in session.log.rows if isinstance(row, CommandRow)}
+    assert endings == {1: "cut", 2: "cut", 3: "finished"}
+
+
+def test_rest_takes_the_place_of_what_the_log_still_writes() -> None:
+    session = opened()
+    session.log.held = []
+    session.order("birch pivot forward at 5200")
+    session.order("birch rest")
+    session.log.held[0]("")
+    session.settle()
+    session.run_for(5)
+    assert [entry.motion for entry in session.tally] == ["rest"]
+
+
 def test_an_order_is_given_whole_or_not_at_all() -> None:
     session = opened()
     session.order("elm spin at 3000 for 30 s")

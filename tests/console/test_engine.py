@@ -1,5 +1,7 @@
 """The engine's threads over a simulated port, in real time at a high pace."""
 
+import os
+import pty
 import threading
 import time
 from collections.abc import Callable, Iterator
@@ -7,9 +9,12 @@ from pathlib import Path
 
 import pytest
 
+from console.core import SessionCore
 from console.engine import Engine
-from console.errors import InputError, LinkError, LogError
+from console.errors import EngineError, InputError, LinkError, LogError
 from console.opening import SessionOptions, open_session, operator_name
+from protocol.frame import FrameDecoder
+from protocol.message import Message, Stop, decode
 from storage.reader import LogReader
 
 LINK = "sim://?seed=7&pace=20"
@@ -123,6 +128,37 @@ def test_two_links_make_one_fleet(log: Path, tmp_path: Path) -> None:
         assert landed == {"birch", "far-birch"}
     finally:
         engine.close()
+
+
+def test_an_engine_that_fails_sends_all_stop_and_says_so(
+    log: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    master, slave = pty.openpty()
+    engine = open_session(SessionOptions((os.ttyname(slave),), log))
+
+    def fail(self: SessionCore, t_ns: int) -> None:
+        raise ZeroDivisionError("a fault of ours")
+
+    assert wait_for(lambda: bool(os.read(master, 4096)))
+    monkeypatch.setattr(SessionCore, "wake", fail)
+    assert wait_for(lambda: engine.view().closed)
+    assert Stop(1) in stops_heard(master)
+    assert "a fault of ours" in engine.log_trouble()
+    assert not engine.link_open()
+    with pytest.raises(InputError, match="closed"):
+        engine.order("all rest")
+    with pytest.raises(EngineError, match="all-stop was sent"):
+        engine.close()
+    reader = LogReader.open(log)
+    assert [each.ending for each in reader.sessions()] == ["failed"]
+    reader.close()
+    os.close(master)
+    os.close(slave)
+
+
+def stops_heard(master: int) -> list[Message]:
+    pieces = FrameDecoder().feed(os.read(master, 4096))
+    return [decode(piece).message for piece in pieces if isinstance(piece, bytes)]
 
 
 # -- opening ----------------------------------------------------------------------------------

@@ -1,6 +1,7 @@
 """A command's life: each way to its one ending, repeats, late words, and what stays shut."""
 
 from collections.abc import Sequence
+from dataclasses import replace
 from typing import Any
 
 import pytest
@@ -17,6 +18,7 @@ from storage.records import (
     CommandExpired,
     OrderGiven,
     OrderVoided,
+    PlannedCommand,
     SessionClosed,
     StopLifted,
     StopPressed,
@@ -506,6 +508,50 @@ def test_a_withdrawn_command_that_never_arrived_is_cut() -> None:
     )
 
 
+def resting(number: int) -> Rest:
+    """A rest of that number."""
+    return Rest(EPOCH, BOOT, number, 0x1111)
+
+
+def rest_order(number: int) -> PlannedCommand:
+    """The same, planned."""
+    return planned(number, motion="rest", setting=0, direction=0, speed_rpm=0)
+
+
+def test_a_rest_takes_the_place_of_what_waits_and_withdraws_what_was_sent() -> None:
+    script = called(1).order(planned(2)).order(rest_order(3)).sent(resting(3))
+    fold = Fold(script)
+    assert command(fold, 1).ending is None
+    row = command(fold, 2)
+    assert (row.ending, row.reason, row.final) == ("cut", "rested", 1)
+    assert command(fold, 3).ending is None
+    script.sent(query(1)).heard(answer(1, UNKNOWN))
+    fold.on()
+    assert (command(fold, 1).ending, command(fold, 1).reason) == ("cut", "rested")
+
+
+@pytest.mark.parametrize("again", ["stop", "rest"])
+def test_a_rest_on_its_way_is_not_taken_back(again: str) -> None:
+    """It goes ahead of all that waits, and no stop and no other rest drops it."""
+    script = ordered(1).order(rest_order(2))
+    if again == "stop":
+        script.add(StopPressed, 1, "key")
+    else:
+        script.order(rest_order(3))
+    fold = Fold(script)
+    assert command(fold, 2).ending is None
+    script.sent(resting(2)).heard(answer(2, FINISHED))
+    fold.on()
+    assert (command(fold, 2).sends, command(fold, 2).ending) == (1, "finished")
+
+
+def test_a_rest_of_one_module_leaves_the_others_alone() -> None:
+    other = IDENTITY + 1
+    script = ordered(1).heard(presence(identity=other), address=0x11)
+    script.order(replace(rest_order(2), module=2, identity=other))
+    assert command(Fold(script), 1).ending is None
+
+
 def test_a_withdrawn_command_that_was_accepted_is_not_called_cut_on_unknown() -> None:
     script = called().heard(answer(1, ACCEPTED))
     script.add(StopPressed, 1, "key")
@@ -590,10 +636,13 @@ def test_the_command_in_hand_is_told_in_words() -> None:
 
 
 def test_what_was_sent_is_told_before_what_waits() -> None:
-    script = ordered(1).order(planned(2, motion="rest", setting=0, direction=0, speed_rpm=0))
-    assert Fold(script).view.modules[0].doing == "pivot floor forward at 4400"
-    script.sent(Rest(EPOCH, BOOT, 2, 0x1111))
+    script = called(1).order(planned(2)).order(rest_order(3)).sent(resting(3))
+    script.order(planned(4, speed_rpm=4700)).heard(facts(1))
     assert Fold(script).view.modules[0].doing == "rest"
+    script = ordered(1).order(planned(2, motion="flash", setting=0, direction=0, speed_rpm=0))
+    assert Fold(script).view.modules[0].doing == "pivot floor forward at 4400"
+    script.sent(Flash(EPOCH, BOOT, 2, 0x1111, 2000))
+    assert Fold(script).view.modules[0].doing == "flash"
 
 
 def test_the_ribbon_holds_the_last_twenty_outcomes_in_order() -> None:

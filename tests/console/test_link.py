@@ -75,33 +75,41 @@ def pop_all(outbox: Outbox, t_ns: int) -> list[bytes]:
 
 def test_urgent_frames_go_first_and_the_rest_in_turn() -> None:
     outbox = Outbox(LinePacer(921_600))
-    outbox.push(b"a")
-    outbox.push(b"b")
-    outbox.push(b"S", urgent=True)
-    outbox.push(b"T", urgent=True)
+    outbox.push(16, b"a")
+    outbox.push(16, b"b")
+    outbox.push(16, b"S", urgent=True)
+    outbox.push(16, b"T", urgent=True)
     assert pop_all(outbox, 0) == [b"S", b"T", b"a", b"b"]
 
 
 def test_all_stop_erases_what_is_not_urgent() -> None:
     outbox = Outbox(LinePacer(921_600))
-    outbox.push(b"a")
-    outbox.push(b"b")
-    outbox.push(b"S", urgent=True)
+    outbox.push(16, b"a")
+    outbox.push(16, b"b")
+    outbox.push(16, b"S", urgent=True)
     assert outbox.drop_plain() == 2
     assert pop_all(outbox, 0) == [b"S"]
     assert outbox.next_ready_ns(0) is None
 
 
+def test_a_rest_erases_what_waits_for_its_module_only() -> None:
+    outbox = Outbox(LinePacer(921_600))
+    outbox.push(16, b"a")
+    outbox.push(17, b"b")
+    outbox.push(16, b"c")
+    assert outbox.drop_plain(16) == 2
+    assert pop_all(outbox, 0) == [b"b"]
+
+
 def test_no_more_than_ten_milliseconds_wait_before_the_wire() -> None:
     outbox = Outbox(LinePacer(9_600))  # 10 bits a byte: 1.04 ms a byte, by hand
     for _ in range(100):
-        outbox.push(bytes(5))
+        outbox.push(16, bytes(5))
     assert len(pop_all(outbox, 0)) <= 3
     ready_ns = outbox.next_ready_ns(0)
     assert ready_ns is not None
     assert 0 < ready_ns <= 11 * MS
     total = 0
-    for t_ns in range(0, 1_000 * MS, MS):
+    for t_ns in range(0, 250 * MS, MS):
         total += sum(len(frame) for frame in pop_all(outbox, t_ns))
-    assert total <= 485  # the rest of the 500 bytes need 0.5 s
-    assert total > 450
+    assert 230 <= total <= 250  # 0.25 s of the line are 240 bytes, by hand

@@ -191,6 +191,19 @@ def test_a_long_gap_is_folded_in_bursts() -> None:
     assert player.view().links[0].bytes_in == BURST_RECORDS + 98
 
 
+def test_records_slightly_out_of_time_are_played_to_the_end() -> None:
+    """Bytes carry the time of their reading, and may be recorded after something newer."""
+    records = every_second(4)
+    late = BytesIn(102 * SECOND, 0, from_module(telemetry(40, wheel_rpm=40)))
+    player = ReplayPlayer([*records, (5, late)])
+    assert player.length_ns == 3 * SECOND
+    player.play()
+    player.advance(0)
+    player.advance(3 * SECOND)
+    assert player.ended
+    assert wheel(player) == 40
+
+
 def test_no_records_at_all_is_an_end_and_not_an_error() -> None:
     player = ReplayPlayer([])
     player.play()

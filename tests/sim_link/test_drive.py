@@ -208,7 +208,9 @@ def test_motions_count_on_and_luck_changes_with_them() -> None:
     assert len(set(brakes)) == 3
 
 
-def test_a_step_without_a_motion_is_our_mistake() -> None:
+def test_a_step_with_nothing_due_is_our_mistake() -> None:
     drive = drive_of()
+    with pytest.raises(SimStateError, match="nothing is due"):
+        drive.step()
     with pytest.raises(SimStateError):
         drive._enter_braking(0)

@@ -1,5 +1,6 @@
 """The radio path: what it loses, damages, repeats and delays, how often, and the same again."""
 
+import itertools
 import math
 
 import pytest
@@ -73,7 +74,7 @@ def test_without_reordering_frames_stay_in_order_whatever_the_delay() -> None:
 def test_reordered_frames_are_overtaken() -> None:
     path = channel(reorder=0.3)
     times = [path.offer(FRAME, i * 2 * MS)[0][0] for i in range(300)]
-    overtaken = sum(later < earlier for earlier, later in zip(times, times[1:], strict=False))
+    overtaken = sum(later < earlier for earlier, later in itertools.pairwise(times))
     assert overtaken > 30
     assert all(0 <= t - i * 2 * MS <= 60 * MS for i, t in enumerate(times))
 

@@ -1,6 +1,7 @@
 """Draws: the documented key and hash by hand, published quantiles, and sanity of many draws."""
 
 import hashlib
+import itertools
 import math
 
 import pytest
@@ -79,7 +80,7 @@ def test_uniform_draws_fill_bins_evenly() -> None:
 
 def test_neighbouring_counts_do_not_go_together() -> None:
     values = [uniform(3, 1, count, "pairs") - 0.5 for count in range(4000)]
-    pairs = zip(values, values[1:], strict=False)
+    pairs = itertools.pairwise(values)
     correlation = sum(a * b for a, b in pairs) / sum(a * a for a in values)
     assert abs(correlation) < 4 / math.sqrt(len(values))
 

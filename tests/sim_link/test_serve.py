@@ -16,7 +16,7 @@ from protocol.frame import FrameDecoder, frame
 from protocol.message import Message, Presence, RollCall, Telemetry, decode, encode
 from sim_link.errors import SimInputError
 from sim_link.options import SimOptions
-from sim_link.serve import serve_pty, serve_tcp
+from sim_link.serve import _PseudoTerminal, serve_pty, serve_tcp
 from tests.support.virtual_console import EPOCH, flash, pivot, to_all, to_module
 
 ROLL_CALL = frame(encode(to_all(RollCall(EPOCH))))
@@ -83,23 +83,21 @@ def test_a_pseudo_terminal_survives_a_console_that_comes_again() -> None:
 def test_a_pseudo_terminal_is_raw_both_ways() -> None:
     # Carriage return, line feed, end of file, interrupt, flow control: none is touched. The
     # bytes come as noise before a frame; after the delimiter the frame is heard.
-    with served(pty()) as name:
-        with serial.Serial(name, timeout=0.1) as link:
-            link.write(b"\r\n\x03\x04\x11\x13\x1a\x7f\0" + ROLL_CALL)
-            assert len(hear(lambda: link.read(256), Presence, 8)) == 8
+    with served(pty()) as name, serial.Serial(name, timeout=0.1) as link:
+        link.write(b"\r\n\x03\x04\x11\x13\x1a\x7f\0" + ROLL_CALL)
+        assert len(hear(lambda: link.read(256), Presence, 8)) == 8
 
 
 @pty_only
 def test_news_and_not_history_for_whoever_reads_late() -> None:
-    with served(pty()) as name:
-        with serial.Serial(name, timeout=0.1) as link:
-            hear(lambda: link.read(256), Telemetry, 8)
-            time.sleep(1.5)  # 30 s of fleet time: 17 kB that nobody reads
-            link.reset_input_buffer()
-            time.sleep(0.1)
-            fresh = hear(lambda: link.read(256), Telemetry, 40)[-1][1]
-            assert isinstance(fresh, Telemetry)
-            assert fresh.time_ms > 30_000
+    with served(pty()) as name, serial.Serial(name, timeout=0.1) as link:
+        hear(lambda: link.read(256), Telemetry, 8)
+        time.sleep(1.5)  # 30 s of fleet time: 17 kB that nobody reads
+        link.reset_input_buffer()
+        time.sleep(0.1)
+        fresh = hear(lambda: link.read(256), Telemetry, 40)[-1][1]
+        assert isinstance(fresh, Telemetry)
+        assert fresh.time_ms > 30_000
 
 
 @pty_only
@@ -151,10 +149,9 @@ def test_tcp_keeps_a_second_client_waiting_until_the_first_left() -> None:
 
 
 def test_tcp_is_reached_by_pyserial_too() -> None:
-    with served(tcp()) as name:
-        with serial.serial_for_url(f"socket://{name}", timeout=0.1) as link:
-            link.write(ROLL_CALL)
-            assert len(hear(lambda: link.read(256), Presence, 8)) == 8
+    with served(tcp()) as name, serial.serial_for_url(f"socket://{name}", timeout=0.1) as link:
+        link.write(ROLL_CALL)
+        assert len(hear(lambda: link.read(256), Presence, 8)) == 8
 
 
 def test_a_client_that_breaks_off_does_no_harm() -> None:
@@ -194,6 +191,18 @@ def test_a_tally_that_cannot_be_written_is_told_before_anything_is_announced(
             threading.Event(),
         )
     assert names == []
+
+
+@pty_only
+def test_a_slave_that_nobody_has_open_is_no_error() -> None:
+    terminal = _PseudoTerminal()
+    os.close(terminal._slave)  # now the master reports EIO, at once and every time
+    terminal._slave = os.open(os.devnull, os.O_RDWR)
+    start_s = time.monotonic()
+    assert terminal.receive(0.1) == b""
+    assert time.monotonic() - start_s > 0.05
+    terminal.send(b"lost")
+    terminal.close()
 
 
 def test_a_system_without_pseudo_terminals_is_told(monkeypatch: pytest.MonkeyPatch) -> None:

@@ -21,7 +21,8 @@ GRAIN_NS = 1_000_000
 
 
 class MemoryLog:
-    """A log in memory. ``durable`` False: every commit is refused with ``why_not``."""
+    """A log in memory. It answers each commit at once with ``why_not``, or holds the answers in
+    ``held`` where that is a list; as the real one, it keeps what it refused to commit."""
 
     def __init__(self) -> None:
         self.records: list[tuple[int, Record]] = []
@@ -39,9 +40,8 @@ class MemoryLog:
         self, number: int, record: Record, rows: Sequence[Row], done: Callable[[str], None]
     ) -> None:
         self.events.append(f"commit {type(record).__name__}")
-        if not self.why_not:
-            self.records.append((number, record))
-            self.rows.extend(rows)
+        self.records.append((number, record))
+        self.rows.extend(rows)
         if self.held is None:
             done(self.why_not)
         else:

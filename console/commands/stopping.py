@@ -1,0 +1,63 @@
+"""Signals as an all-stop, and waiting until it is confirmed; for every command that drives.
+
+Owns which signals those are and what is said of modules that have not confirmed.
+"""
+
+import signal
+import threading
+from collections.abc import Callable, Iterator
+from contextlib import contextmanager
+from types import FrameType
+from typing import Final
+
+from console.commands.output import say
+from console.engine import Engine
+
+HEADLESS_SIGNALS: Final = (signal.SIGINT, signal.SIGTERM, signal.SIGHUP)
+SCREEN_SIGNALS: Final = (signal.SIGTERM, signal.SIGHUP)
+"""A screen reads its own keys, the interrupt key among them."""
+CONFIRM_WAIT_S: Final = 10.0
+_GLANCE_S: Final = 0.05
+
+
+@contextmanager
+def stop_on_signal(
+    engine: Engine,
+    signals: tuple[signal.Signals, ...] = HEADLESS_SIGNALS,
+    then: Callable[[], None] = lambda: None,
+) -> Iterator[None]:
+    """While inside, each of the signals is an all-stop; ``then`` is called after it."""
+
+    def stop(number: int, frame: FrameType | None) -> None:
+        del frame
+        engine.stop(signal.Signals(number).name)
+        then()
+
+    if threading.current_thread() is not threading.main_thread():
+        yield  # only the main thread may set handlers; whoever runs it elsewhere has its own
+        return
+    before = {number: signal.signal(number, stop) for number in signals}
+    try:
+        yield
+    finally:
+        for number, handler in before.items():
+            signal.signal(number, handler)
+
+
+def await_confirmation(engine: Engine) -> bool:
+    """Wait until every module has confirmed the all-stop in force; say who has not in time."""
+    gate = threading.Event()
+    for _ in range(round(CONFIRM_WAIT_S / _GLANCE_S)):
+        stop = engine.view().stop
+        if stop.in_force and not stop.missing:
+            return True
+        if not engine.link_open():
+            break
+        gate.wait(_GLANCE_S)
+    view = engine.view()
+    missing = [each.name for each in view.modules if each.module in view.stop.missing]
+    say(
+        f"tumblewire: all-stop not confirmed by {', '.join(missing) or 'anybody'}. "
+        "Keep away: their wheels may be turning"
+    )
+    return False
