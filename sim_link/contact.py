@@ -49,10 +49,12 @@ class Push(NamedTuple):
 
 
 class Footing(NamedTuple):
-    """How the body stands: on which corner, under what push, sticking (``way`` 0) or sliding
-    (1 forward, -1 back)."""
+    """How the body stands: on which corner, off which face (the one it last lay on: the
+    corner's own or the next), under what push, sticking (``way`` 0) or sliding (1 forward,
+    -1 back)."""
 
     corner: int
+    face: int
     drive: Push
     way: int = 0
 
@@ -104,16 +106,17 @@ def lowest_corner(angle_rad: float) -> int:
     return math.floor(angle_rad / QUARTER)
 
 
-def magnet_N_m(body: Body, corner: int, angle_rad: float) -> float:
-    """Magnets' hold T0 e^(-tilt/theta0) of the face that the body opens from this corner.
+def magnet_N_m(body: Body, footing: Footing, angle_rad: float) -> float:
+    """Magnets' hold T0 e^(-tilt/theta0) back to the face last lain on, against forward.
 
-    The pull of the face it closes on is left out, as in the hold curve: it acts only within
-    theta0 of the landing and adds at most T0 theta0 to the energy that the landing destroys.
+    The pull of the face ahead is left out, as in the hold curve: it acts only within theta0
+    of the landing and adds at most T0 theta0 to the energy, most of which the landing takes.
     """
     if body.magnet_torque_N_m == 0.0:
         return 0.0
-    tilt = angle_rad - corner * QUARTER
-    return body.magnet_torque_N_m * math.exp(-tilt / body.magnet_angle_rad)
+    tilt = abs(angle_rad - footing.face * QUARTER)
+    hold = body.magnet_torque_N_m * math.exp(-tilt / body.magnet_angle_rad)
+    return hold if footing.face == footing.corner else -hold
 
 
 def stick(body: Body, footing: Footing, angle_rad: float, rate_rad_s: float) -> Pull:
@@ -123,10 +126,10 @@ def stick(body: Body, footing: Footing, angle_rad: float, rate_rad_s: float) -> 
     F = m (rz theta'' - rx theta'^2). With the wheel locked N = 0 is the lift-off condition
     theta'^2 = g (1 - (m r^2/Ie) cos^2 phi) / (r sin phi).
     """
-    corner, (torque, inertia), _ = footing
-    rx, rz = arm_m(body, corner, angle_rad)
+    torque, inertia = footing.drive
+    rx, rz = arm_m(body, footing.corner, angle_rad)
     mass = body.mass_kg
-    moment = torque + mass * GRAVITY_M_S2 * rx - magnet_N_m(body, corner, angle_rad)
+    moment = torque + mass * GRAVITY_M_S2 * rx - magnet_N_m(body, footing, angle_rad)
     angular = moment / (inertia + mass * (rx * rx + rz * rz))
     squared = rate_rad_s * rate_rad_s
     normal = mass * (GRAVITY_M_S2 - rx * angular - rz * squared)
@@ -141,7 +144,7 @@ def slide(body: Body, footing: Footing, angle_rad: float, rate_rad_s: float) -> 
     about 1.15 for a uniform cube) rigid sliding has no answer; the corner then jams and is
     taken to stick.
     """
-    corner, (torque, inertia), way = footing
+    corner, _, (torque, inertia), way = footing
     rx, rz = arm_m(body, corner, angle_rad)
     mass = body.mass_kg
     lever = rx + way * body.friction * rz

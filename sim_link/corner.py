@@ -65,7 +65,7 @@ def _footing(body: Body, state: State) -> Footing | None:
     where the floor would have to pull.
     """
     drive = contact.push(body, state.slipping)
-    sticking = Footing(state.corner, drive)
+    sticking = Footing(state.corner, state.face, drive)
     if body.held:
         return sticking
     way = int(math.copysign(1, state.slide_m_s)) if state.slide_m_s else 0
@@ -74,7 +74,7 @@ def _footing(body: Body, state: State) -> Footing | None:
         if abs(hinged.friction_N) <= body.friction * hinged.normal_N:
             return sticking
         way = -1 if hinged.friction_N > 0.0 else 1
-    sliding = Footing(state.corner, drive, way)
+    sliding = Footing(state.corner, state.face, drive, way)
     pull = contact.slide(body, sliding, state.angle_rad, state.rate_rad_s)
     return sliding if pull.normal_N > 0.0 else None
 

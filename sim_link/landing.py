@@ -22,11 +22,11 @@ _STILL_ENERGY: Final = 1e-4
 def lie_flat(body: Body, state: State, face: int) -> None:
     """Lie on a face without moving: lift again if the brake beats the hold, else run down."""
     state.angle_rad, state.rate_rad_s, state.slide_m_s = face * QUARTER, 0.0, 0.0
-    state.corner = face
+    state.corner = state.face = face
     state.phase = Phase.FLAT
     if not state.slipping:
         return
-    footing = contact.Footing(face, contact.push(body, slipping=True))
+    footing = contact.Footing(face, face, contact.push(body, slipping=True))
     lifts = contact.stick(body, footing, state.angle_rad, 0.0).angular_rad_s2 > 0.0
     if lifts and state.wheel_rad_s > 0.0:
         state.phase = Phase.CORNER
@@ -43,7 +43,7 @@ def come_down(body: Body, state: State) -> None:
     """
     before, old = state.rate_rad_s, state.corner
     face, new = (old + 1, old + 1) if before > 0.0 else (old, old - 1)
-    state.angle_rad = face * QUARTER
+    state.angle_rad, state.face = face * QUARTER, face
     rx, rz = contact.arm_m(body, old, state.angle_rad)
     _strike(body, state, new, (state.slide_m_s + before * rz, -before * rx))
     if state.phase is Phase.FLIGHT:

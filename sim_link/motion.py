@@ -59,13 +59,14 @@ class MotionResult:
 @dataclass(slots=True)
 class State:
     """What changes during a motion. ``corner`` is the one it stands on or last stood on,
-    ``slide_m_s`` that corner's forward speed; height and velocities hold in flight only."""
+    ``face`` the one it last lay on, ``slide_m_s`` the corner's forward speed; height and velocities hold in flight only."""
 
     t_s: float
     wheel_rad_s: float
     slipping: bool = True
     phase: Phase = Phase.CORNER
     corner: int = 0
+    face: int = 0
     angle_rad: float = 0.0
     rate_rad_s: float = 0.0
     slide_m_s: float = 0.0

@@ -119,6 +119,16 @@ def test_bounce_can_carry_a_held_module_back() -> None:
         assert result.peak_tilt_rad == pytest.approx(math.pi / 2, abs=1e-6)
 
 
+@pytest.mark.parametrize("part", [0.3, 0.9, 0.999])
+def test_magnets_far_stronger_than_the_weight_give_no_energy(part: float) -> None:
+    """Fallen back onto its face at a high rate, the module must open that face again to go on
+    backwards: magnets that let go freely would roll it for ever."""
+    kind = _hinged(0.031, 0.06, 5e-6, 1.0, magnet_torque_N_m=0.5, magnet_angle_rad=0.12)
+    result = floor_pivot(kind, part * floor_threshold(kind).w_min_rad_s)
+    assert (result.faces, result.settled) == (0, True)
+    assert result.settle_s < 0.5
+
+
 def test_a_wheel_at_rest_moves_nothing() -> None:
     result = floor_pivot(kind_with(brake_onset_s=0.002), 0.0)
     assert result.faces == 0
@@ -197,7 +207,7 @@ def test_friction_needed_to_stick_at_the_start(ratio: float, slides: bool) -> No
     kind = kind_with(brake_torque_N_m=ratio * weight, held=False, floor_friction=0.55)
     inertia = edge_inertia_kg_m2(kind) - kind.wheel_inertia_kg_m2
     x = kind.side_m * (ratio - 1) * weight / inertia / (2 * GRAVITY_M_S2)
-    pull = contact.stick(body_of(kind), Footing(0, push(body_of(kind), slipping=True)), 0.0, 0.0)
+    pull = contact.stick(body_of(kind), Footing(0, 0, push(body_of(kind), slipping=True)), 0.0, 0.0)
     assert pull.friction_N / pull.normal_N == pytest.approx(x / (1 + x))
     early = followed(kind, 400.0)[1]
     corner_speed = early.vx_m_s - early.rate_rad_s * early.height_m
@@ -207,7 +217,7 @@ def test_friction_needed_to_stick_at_the_start(ratio: float, slides: bool) -> No
 def test_normal_force_vanishes_at_the_textbook_rate() -> None:
     """Locked and flat on the floor: theta'^2 = 1.25 g/a for a uniform cube."""
     kind = kind_with(held=False)
-    footing = Footing(0, push(body_of(kind), slipping=False))
+    footing = Footing(0, 0, push(body_of(kind), slipping=False))
     rate = math.sqrt(1.25 * GRAVITY_M_S2 / kind.side_m)
     assert contact.stick(body_of(kind), footing, 0.0, rate * 0.9999).normal_N > 0
     assert contact.stick(body_of(kind), footing, 0.0, rate * 1.0001).normal_N < 0

@@ -35,7 +35,7 @@ def test_it_says_what_to_do_when_the_screen_is_frozen() -> None:
     text = help_text()
     frozen = text[text.index("FROZEN") : text.index("ORDERS")]
     assert STOP_KEY in frozen
-    assert "tumblewire stop" in frozen
+    assert "pkill -TERM tumblewire" in frozen
 
 
 def test_its_example_orders_are_orders() -> None:

@@ -146,7 +146,7 @@ def test_a_replay_never_transmits_a_stop() -> None:
         await pilot.press(STOP_KEY)
         await pilot.pause()
         assert source.stops == []
-        line_with(app, "a replay never transmits; in a terminal: tumblewire stop")
+        line_with(app, "a replay never transmits; press it in the live console")
 
     play(source, steps, banner="REPLAY")
 

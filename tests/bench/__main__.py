@@ -1,0 +1,61 @@
+"""`python -m tests.bench`: each measured number with its limit; `--json` for a program.
+
+Exits with 1 where a limit is missed, so that nobody has to read to notice.
+"""
+
+import argparse
+import json
+import operator
+import sys
+from collections.abc import Callable
+from typing import NamedTuple
+
+from tests.bench.decoding import decode_vs_floor
+from tests.bench.ingesting import ingest_vs_floor
+from tests.bench.measure import Figure
+
+
+class Bench(NamedTuple):
+    """A named number, how it is measured, and the limit it is held to."""
+
+    name: str
+    measure: Callable[[], Figure]
+    holds: Callable[[float, float], bool]
+    limit: float
+    words: str
+
+
+BENCHES = (
+    Bench("decode_vs_floor", decode_vs_floor, operator.ge, 0.5, "at least"),
+    Bench("ingest_vs_floor", ingest_vs_floor, operator.ge, 0.4, "at least"),
+)
+
+
+def main() -> int:
+    """Measure all, or those named."""
+    parser = argparse.ArgumentParser(prog="python -m tests.bench", description=__doc__)
+    parser.add_argument("names", nargs="*", help="only these")
+    parser.add_argument("--json", action="store_true", help="one JSON object on standard output")
+    chosen = parser.parse_args()
+    known = {bench.name for bench in BENCHES}
+    strange = set(chosen.names) - known
+    if strange:
+        parser.error(f"no such number: {', '.join(sorted(strange))}; known: {', '.join(known)}")
+    missed = 0
+    document = {}
+    for bench in BENCHES:
+        if chosen.names and bench.name not in chosen.names:
+            continue
+        figure = bench.measure()
+        document[bench.name] = figure.as_json()
+        met = bench.holds(figure.value, bench.limit)
+        missed += not met
+        line = f"{bench.name}: {figure.value:.3f} ({bench.words} {bench.limit})"
+        print(line + ("" if met else "  MISSED"), file=sys.stderr if chosen.json else sys.stdout)
+    if chosen.json:
+        print(json.dumps(document, indent=2))
+    return 1 if missed else 0
+
+
+if __name__ == "__main__":
+    sys.exit(main())
