@@ -23,10 +23,10 @@ def corner_step(body: Body, state: State, step_s: float) -> None:
         return
     start = (state.angle_rad, state.rate_rad_s, state.slide_m_s)
     end = _runge_kutta(body, footing, start, step_s)
-    if _event(body, state, end, step_s):
+    if _event(body, state, footing, end, step_s):
 
         def happened(t_s: float) -> bool:
-            return _event(body, state, _runge_kutta(body, footing, start, t_s), t_s)
+            return _event(body, state, footing, _runge_kutta(body, footing, start, t_s), t_s)
 
         step_s = first_time(happened, step_s)
         end = _runge_kutta(body, footing, start, step_s)
@@ -41,16 +41,17 @@ def corner_step(body: Body, state: State, step_s: float) -> None:
         come_down(body, state)
 
 
-def _event(body: Body, state: State, end: _Swing, t_s: float) -> bool:
+def _event(body: Body, state: State, footing: Footing, end: _Swing, t_s: float) -> bool:
     """Whether, by this end of a step, a face has come down, the wheel has locked, or a
-    sliding corner has come to a stop.
+    sliding corner has come to a stop or needs the floor to pull.
 
     Asked at the end's own angle and wheel speed: a step may cross a turning point and an end
     angle together, and then neither angle alone tells which came first.
     """
     locked = state.slipping and wheel_after(body, state, t_s) <= end[1]
     stopped = end[2] * state.slide_m_s < 0.0
-    return locked or stopped or _off_corner(state.corner, end[0])
+    lifted = footing.way != 0 and contact.slide(body, footing, end[0], end[1]).normal_N < 0.0
+    return locked or stopped or lifted or _off_corner(state.corner, end[0])
 
 
 def _off_corner(corner: int, angle_rad: float) -> bool:

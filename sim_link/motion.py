@@ -59,7 +59,8 @@ class MotionResult:
 @dataclass(slots=True)
 class State:
     """What changes during a motion. ``corner`` is the one it stands on or last stood on,
-    ``face`` the one it last lay on, ``slide_m_s`` the corner's forward speed; height and velocities hold in flight only."""
+    ``face`` the one it last lay on, ``slide_m_s`` the corner's forward speed; height
+    and velocities hold in flight only."""
 
     t_s: float
     wheel_rad_s: float
