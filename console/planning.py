@@ -10,10 +10,9 @@ from console.errors import InputError
 from console.orders import Order
 from console.view import ModuleView
 from protocol.codes import Direction, Setting, identity_bits
+from protocol.command_memory import next_number
 from protocol.message import Command, Flash, Pivot, Rest, Spin
 from storage.records import PlannedCommand
-
-LAST_WIRE_NUMBER: Final = 0xFFFF
 
 
 def resolve(order: Order, modules: Sequence[ModuleView]) -> tuple[ModuleView, ...]:
@@ -32,9 +31,9 @@ def resolve(order: Order, modules: Sequence[ModuleView]) -> tuple[ModuleView, ..
     return tuple(by_name[name] for name in order.subjects)
 
 
-def next_number(numbers: MutableMapping[int, int], module: int) -> int:
-    """Count a module's wire numbers: from 1 to 65,535 and then from 1 again; 0 is never used."""
-    numbers[module] = numbers.get(module, 0) % LAST_WIRE_NUMBER + 1
+def count_on(numbers: MutableMapping[int, int], module: int) -> int:
+    """Count a module's wire numbers on, each module by itself (WIRE.md: never jump far)."""
+    numbers[module] = next_number(numbers.get(module, 0))
     return numbers[module]
 
 
@@ -55,7 +54,7 @@ def build_commands(
             identity=module.identity,
             boot=module.boot,
             epoch=epoch,
-            number=next_number(numbers, module.module),
+            number=count_on(numbers, module.module),
             motion=order.motion,
             setting=order.setting or 0,
             direction=order.direction or 0,

@@ -4,7 +4,7 @@ import pytest
 
 from console.errors import InputError
 from console.orders import Order, parse_order
-from console.planning import build_commands, next_number, resolve, to_message
+from console.planning import build_commands, count_on, resolve, to_message
 from protocol.codes import Direction, Setting
 from protocol.message import Flash, Pivot, Rest, Spin
 from storage.records import PlannedCommand
@@ -39,8 +39,8 @@ def test_nobody_there() -> None:
 
 def test_wire_numbers_wrap_from_65535_to_1_and_never_use_0() -> None:
     numbers = {1: 65_533}
-    assert [next_number(numbers, 1) for _ in range(4)] == [65_534, 65_535, 1, 2]
-    assert next_number(numbers, 2) == 1
+    assert [count_on(numbers, 1) for _ in range(4)] == [65_534, 65_535, 1, 2]
+    assert count_on(numbers, 2) == 1
 
 
 def test_commands_are_numbered_on_and_carry_who_they_are_for() -> None:
