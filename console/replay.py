@@ -221,10 +221,12 @@ def rebuild_session(path: Path, session: int) -> dict[str, int]:
     where the records are not whole; the tables then stay as they were.
     """
     from storage.reader import LogReader
-    from storage.rebuild import replace_derived
+    from storage.rebuild import replace_derived, tidy
 
     reader = LogReader.open(path)
     try:
-        return replace_derived(path, session, fold_rows(reader.records(session)))
+        counts = replace_derived(path, session, fold_rows(reader.records(session)))
     finally:
         reader.close()
+    tidy(path)
+    return counts

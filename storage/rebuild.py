@@ -6,12 +6,12 @@ derived; the caller folds the records and hands the rows over.
 
 import sqlite3
 from collections.abc import Iterable, Iterator
-from contextlib import contextmanager
+from contextlib import closing, contextmanager
 from itertools import islice
 from pathlib import Path
 from typing import Final
 
-from storage.connect import connect_to_read, explain
+from storage.connect import connect_to_read, connect_to_write, explain
 from storage.errors import LogUnavailableError, StorageMisuseError
 from storage.inserts import Inserter, columns_of
 from storage.owner import owner_lives
@@ -19,7 +19,7 @@ from storage.reader import DERIVED_TABLES
 from storage.rows import TABLES, Row
 from storage.schema import open_log
 
-__all__ = ["DERIVED_TABLES", "delete_derived", "replace_derived"]
+__all__ = ["DERIVED_TABLES", "delete_derived", "replace_derived", "tidy"]
 
 _SPOOL_ROWS: Final = 10_000
 
@@ -123,3 +123,16 @@ def _check_closed(connection: sqlite3.Connection, path: Path, session: int) -> N
     uid, ending = found
     if not ending and owner_lives(path.resolve(), uid):
         raise StorageMisuseError(f"session {session} is still being recorded; close it first")
+
+
+def tidy(path: Path) -> None:
+    """Copy the WAL into the file and empty it, as far as nobody else reads or writes.
+
+    A reader that closes last cannot do that, and a person who then copies the file alone would
+    leave behind what is in the WAL. Raises LogUnavailableError.
+    """
+    try:
+        with closing(connect_to_write(path, "rw")) as connection:
+            connection.execute("PRAGMA wal_checkpoint(TRUNCATE)").fetchone()
+    except sqlite3.Error as error:
+        raise LogUnavailableError(explain(error, path)) from error

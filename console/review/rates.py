@@ -73,6 +73,8 @@ def wilson_interval(landed: int, trials: int) -> tuple[float, float]:
     """
     from scipy.stats import binomtest
 
+    if not 0 <= landed <= trials:  # not every release of SciPy refuses it
+        raise ValueError(f"{landed} of {trials} is no proportion")
     interval = binomtest(landed, trials).proportion_ci(CONFIDENCE, method="wilson")
     return float(interval.low), float(interval.high)
 

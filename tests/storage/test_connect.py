@@ -85,7 +85,7 @@ def test_a_file_that_is_no_database_cannot_be_read(tmp_path: Path) -> None:
 
 
 READ = """
-import os, sys
+import os, sys, urllib.parse
 from pathlib import Path
 from storage.errors import LogUnavailableError
 from storage.reader import LogReader

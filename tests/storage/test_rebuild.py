@@ -20,7 +20,7 @@ from storage.inserts import Entry
 from storage.log_file import LogFile
 from storage.reader import DERIVED_TABLES as READER_TABLES
 from storage.reader import LogReader
-from storage.rebuild import DERIVED_TABLES, delete_derived, replace_derived
+from storage.rebuild import DERIVED_TABLES, delete_derived, replace_derived, tidy
 from storage.rows import Row
 from storage.writer import LogWriter, WriterLimits
 from tests.support.log_samples import (
@@ -235,3 +235,21 @@ def test_a_locked_log_is_told(path: Path, monkeypatch: pytest.MonkeyPatch) -> No
     other.execute("ROLLBACK")
     other.close()
     assert tables(path, 1)["modules"] == [module_row(1, "birch")]
+
+
+def test_after_tidying_the_file_alone_is_the_log(path: Path, tmp_path: Path) -> None:
+    session = record(path, [(1, bytes_in(1), ())])
+    reader = LogReader.open(path)
+    replace_derived(path, session, motion_rows(1, "landed"))
+    reader.close()
+    tidy(path)
+    copy = tmp_path / "copy.db"
+    copy.write_bytes(path.read_bytes())
+    assert ask(copy, "SELECT count(*) FROM motions") == ask(path, "SELECT count(*) FROM motions")
+    assert ask(copy, "SELECT count(*) FROM motions") != [(0,)]
+
+
+def test_tidying_a_log_that_is_not_there_is_told(path: Path) -> None:
+    with pytest.raises(LogUnavailableError):
+        tidy(path)
+    assert not path.exists()
