@@ -127,6 +127,8 @@ def _over_speed_limit(case: Case) -> str:
 
 def _battery_low(case: Case) -> str:
     battery_V = case.module.battery_V
+    if battery_V == 0.0:
+        return "its battery's voltage was not heard yet"
     if battery_V < BATTERY_LOW_V:
         return f"battery at {battery_V:.2f} V, below {BATTERY_LOW_V:.2f} V"
     if case.module.flags & Flags.BATTERY_LOW:

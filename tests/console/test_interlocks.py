@@ -90,6 +90,7 @@ CASES = [
     ("over the speed limit", module(wheel_max_rpm=4399), FLEET, "", ["4400 rpm", "4399"], "ps"),
     ("over the speed limit", module(wheel_max_rpm=0), FLEET, "", ["nameplate"], "ps"),
     ("battery low", module(battery_V=3.41), FLEET, "", ["3.41 V", "3.50 V"], "ps"),
+    ("battery low", module(battery_V=0.0), FLEET, "", ["not heard yet"], "ps"),
     ("battery low", module(flags=Flags.BATTERY_LOW), FLEET, "", ["calls", "3.92 V"], "ps"),
     ("wheel axis upright", module(face_up=5), FLEET, "", ["upright", "face 5"], "p"),
     ("wheel axis upright", module(face_up=6), FLEET, "", ["upright", "face 6"], "p"),
