@@ -3,6 +3,7 @@
 Owns how the two are put together. Knows nothing of what the screen draws.
 """
 
+import threading
 from pathlib import Path
 
 from console.commands.stopping import SCREEN_SIGNALS, await_confirmation, stop_on_signal
@@ -14,10 +15,14 @@ from console.paths import default_log_path
 
 
 def run_live(options: SessionOptions) -> int:
-    """Show the console until the person leaves; return the exit status."""
+    """Show the console until the person leaves; return the exit status.
+
+    A signal is an all-stop first; then the console ends, and not with success.
+    """
     from console.app import FleetApp
 
     engine = open_session(options)
+    signalled = threading.Event()
     try:
         app = FleetApp(
             engine,
@@ -26,14 +31,20 @@ def run_live(options: SessionOptions) -> int:
             controls=None,
             completions=lambda text: _complete(engine, text),
         )
-        with stop_on_signal(engine, SCREEN_SIGNALS, then=app.exit):
+
+        def leave() -> None:
+            signalled.set()
+            app.exit()
+
+        with stop_on_signal(engine, SCREEN_SIGNALS, then=leave):
             app.run()
-        stopped = engine.view().stop.in_force
-        if stopped and not await_confirmation(engine):
-            return 1
+        stopped = signalled.is_set() or engine.view().stop.in_force
+        confirmed = await_confirmation(engine) if stopped else True
     finally:
         engine.close()
-    return 0 if engine.link_open() and not engine.log_trouble() else 3
+    if not engine.link_open() or engine.log_trouble():
+        return 3
+    return 1 if signalled.is_set() or not confirmed else 0
 
 
 def practice_options(links: tuple[str, ...]) -> tuple[str, ...]:

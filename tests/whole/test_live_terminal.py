@@ -98,7 +98,7 @@ def test_a_terminated_console_stops_the_fleet_first(tmp_path: Path, log: Path) -
         shown.type("all spin at 3000 for 60 s")
         shown.until(lambda: all(rpm(shown.row(name)) > 2000 for name in NAMES), "wheels turning")
         os.kill(child_of(shown.process()), signal.SIGTERM)
-        shown.wait("ended with 0")
+        shown.wait("ended with 1")
         assert ask(log, "SELECT detail FROM alarms") == [("number 1, by SIGTERM",)]
         stopped = ask(log, "SELECT count(*) FROM commands WHERE ending = 'cut'")
         with terminal("live", "--link", fleet.link, "--log", str(log)) as again:
