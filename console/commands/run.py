@@ -65,7 +65,8 @@ def _progress(sheet: Sheet, planned: int) -> Iterator[Callable[[TrialEnd], None]
     bar: Any
     with click.progressbar(
         length=planned,
-        label=sheet.title[:30],
+        label=sheet.title[:24],
+        width=0,  # as wide as the terminal leaves room for, so that no line wraps
         file=sys.stderr,
         item_show_func=lambda _: "  ".join(f"{count} {each}" for each, count in counts.items()),
         show_pos=True,
