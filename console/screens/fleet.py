@@ -14,7 +14,6 @@ from textual.screen import Screen
 from textual.widgets import Static
 
 from console.screens.desk import Desk
-from console.screens.shows import ShowsPicture
 from console.widgets.fleet_table import FleetTable
 from console.widgets.lines import Lines
 from console.widgets.notices import HINTS, REPLAY_HINTS, Notices, hint_line, legend
@@ -31,7 +30,7 @@ LEAST_NOTICES = 3
 MOST_NOTICES = 12
 
 
-class FleetScreen(ShowsPicture, Screen[None]):
+class FleetScreen(Screen[None]):
     """The whole fleet at a glance, and where orders are given."""
 
     BINDINGS: ClassVar[list[BindingType]] = [

@@ -13,7 +13,6 @@ from textual.containers import VerticalScroll
 from textual.screen import Screen
 from textual.widgets import Static
 
-from console.screens.shows import ShowsPicture
 from console.widgets.lines import Lines
 from console.widgets.notices import hint_line
 from console.widgets.picture import Part, Picture
@@ -82,7 +81,7 @@ def _glyphs(words: Iterable[Word]) -> str:
     return "\n".join(f"  {line}" for line in lines)
 
 
-class HelpScreen(ShowsPicture, Screen[None]):
+class HelpScreen(Screen[None]):
     """The help, under the same status lines as everywhere."""
 
     BINDINGS: ClassVar[list[BindingType]] = [

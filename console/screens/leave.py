@@ -13,7 +13,6 @@ from textual.containers import Horizontal, Vertical
 from textual.screen import ModalScreen
 from textual.widgets import Button
 
-from console.screens.shows import ShowsPicture
 from console.widgets.lines import Lines
 from console.widgets.picture import Part, Picture, fit, names_within
 from console.widgets.status import STOP_KEY
@@ -23,7 +22,7 @@ BOX_CELLS = 66
 TEXT_CELLS = BOX_CELLS - 6
 
 
-class LeaveDialog(ShowsPicture, ModalScreen[bool]):
+class LeaveDialog(ModalScreen[bool]):
     """Dismissed with True: leave; with False: stay."""
 
     BINDINGS: ClassVar[list[BindingType]] = [

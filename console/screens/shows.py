@@ -1,14 +1,18 @@
-"""What all screens share: they take pictures of the fleet and show them.
+"""What a screen must have for the app to hand it pictures of the fleet.
 
-Owns that one interface.
+Owns that one interface; a screen has it by its form, since Textual's own base class leaves no
+room for an abstract one.
 """
+
+from typing import Protocol, runtime_checkable
 
 from console.widgets.picture import Picture
 
 
-class ShowsPicture:
-    """Mixed into a screen that the app hands each new picture."""
+@runtime_checkable
+class ShowsPicture(Protocol):
+    """A screen that shows the fleet."""
 
     def show_picture(self, picture: Picture) -> None:
         """Show it; cheap where nothing changed."""
-        raise NotImplementedError
+        ...
