@@ -110,9 +110,16 @@ def fleet_parts(picture: Picture, width: int) -> Iterable[Part]:
     if picture.moving:
         moving = _named("moving", picture.moving, Tone.MOVING, width // 2, head)
     if not picture.wrong:
-        return [head, moving, Part("nothing wrong", Tone.PLAIN)]
+        return [head, moving, _nothing_wrong(picture)]
     named = [f"{name} {word}" for name, word in picture.wrong]
     return [head, moving, _named("! wrong", named, Tone.ALERT, width, head, moving)]
+
+
+def _nothing_wrong(picture: Picture) -> Part:
+    """Nothing is wrong with what was heard; without a link that is old news, and is said so."""
+    links = picture.view.links
+    whole = picture.replay or picture.view.closed or all(each.state == "open" for each in links)
+    return Part("nothing wrong", Tone.PLAIN) if whole else Part("! as last heard", Tone.ALERT)
 
 
 def _named(title: str, names: Sequence[str], tone: Tone, width: int, *beside: Part) -> Part:

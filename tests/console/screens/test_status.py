@@ -64,6 +64,14 @@ def test_lost_link_and_log_trouble_stand_side_by_side_in_80_columns() -> None:
     assert "! LOG NOT WRITING: disk full" in text
 
 
+def test_without_its_link_a_fleet_is_not_called_well() -> None:
+    lost = LinkView(0, "a", "lost", 1, 1, 0, 1, 1)
+    assert "nothing wrong" in fleet(picture(fleet_view(*eight())))
+    unheard = fleet(picture(fleet_view(*eight(), links=(lost,))))
+    assert "nothing wrong" not in unheard
+    assert "! as last heard" in unheard
+
+
 def test_two_links_of_which_one_is_lost() -> None:
     good = LinkView(0, "a", "open", 1, 1, 0, 1, 1)
     text = path(picture(fleet_view(links=(good, replace(good, link=1, url="b", state="lost")))))
