@@ -5,6 +5,7 @@ address and identity bits. Owns restarts, address conflicts, names and the count
 that arrived. Must not know commands' rules, only that a restart ends what was in hand.
 """
 
+from collections import Counter
 from typing import Final
 
 from console.fleet_commands import readdress
@@ -66,13 +67,25 @@ def _settle_address(state: FleetState, at: Moment, module: ModuleState, address:
     if (module.link, module.address) != (at.link, address):
         module.link, module.address = at.link, address
         readdress(state, module)
+        _let_go_of_shared(state)
     for other in state.modules.values():
         if other is not module and (other.link, other.address) == (at.link, address):
             _tell_conflict(state, at, module, other)
 
 
+def _let_go_of_shared(state: FleetState) -> None:
+    """A module went to another address: whoever it shared with may be alone there now."""
+    counts = Counter((each.link, each.address) for each in state.modules.values())
+    for each in state.modules.values():
+        if each.shares_address and counts[each.link, each.address] == 1:
+            each.shares_address = False
+            state.touch(each)
+
+
 def _tell_conflict(state: FleetState, at: Moment, module: ModuleState, other: ModuleState) -> None:
-    module.shares_address = other.shares_address = True
+    for each in (module, other):
+        each.shares_address = True
+        state.touch(each)
     pair = (min(module.module, other.module), max(module.module, other.module))
     if pair in state.conflicts:
         return

@@ -36,6 +36,7 @@ def module_view(module: ModuleState) -> ModuleView:
             signal=signal(module),
             outcomes=tuple(each.outcome for each in module.ribbon if each.outcome is not None),
             doing=_doing(module),
+            shares_address=module.shares_address,
         )
     return module.view
 

@@ -105,6 +105,12 @@ def _restarted(case: Case) -> str:
     return f"it has restarted and was not called since (its epoch {its}, ours {ours})"
 
 
+def _address_shared(case: Case) -> str:
+    if not case.module.shares_address:
+        return ""
+    return f"another box answers at its address 0x{case.module.address:04x}; give one a new address"
+
+
 def _telemetry_old(case: Case) -> str:
     if case.module.heard_t_ns is None:
         return "nothing was heard of it yet"
@@ -170,6 +176,7 @@ INTERLOCKS: Final = (
     Interlock("log not writing", _SENT, _log_not_writing, Enforcer.CONSOLE, False),
     Interlock("all-stop in force", _WHEEL, _all_stop, Enforcer.BOTH, False),
     Interlock("restarted", _SENT, _restarted, Enforcer.BOTH, False),
+    Interlock("address shared", _WHEEL, _address_shared, Enforcer.CONSOLE, False),
     Interlock("telemetry too old", _WHEEL, _telemetry_old, Enforcer.CONSOLE, False),
     Interlock("over the speed limit", _WHEEL, _over_speed_limit, Enforcer.BOTH, False),
     Interlock("battery low", _WHEEL, _battery_low, Enforcer.BOTH, False),

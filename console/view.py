@@ -49,6 +49,8 @@ class ModuleView:
     outcomes: tuple[Outcome, ...]
     doing: str
     """The command in hand, in words, or empty."""
+    shares_address: bool = False
+    """Whether another box was heard at its address."""
 
 
 @dataclass(frozen=True, slots=True)

@@ -72,13 +72,15 @@ class FleetSpec:
             if fault.module not in names:
                 known = ", ".join(sorted(names)[:12])
                 raise SimInputError("fault", fault.module, f"no such module; known are {known}")
-        return replace(
-            self,
-            modules=tuple(
-                replace(module, faults=frozenset(f.kind for f in faults if f.module == module.name))
-                for module in self.modules
-            ),
-        )
+        modules = [
+            replace(module, faults=frozenset(f.kind for f in faults if f.module == module.name))
+            for module in self.modules
+        ]
+        for place, module in enumerate(modules):
+            if FaultKind.SAME_ADDRESS in module.faults:
+                neighbour = modules[place - 1 if place else 1 % len(modules)]
+                modules[place] = replace(module, address=neighbour.address)
+        return replace(self, modules=tuple(modules))
 
     def _made_up(self, place: int, address: int) -> ModuleSpec:
         kinds = list(self.kinds.values())

@@ -72,9 +72,10 @@ class World:
             )
             for place, spec in enumerate(fleet.modules)
         ]
-        self._by_address = {
-            station.module.spec.address: place for place, station in enumerate(self._stations)
-        }
+        self._by_address: dict[int, tuple[int, ...]] = {}
+        for place, station in enumerate(self._stations):
+            address = station.module.spec.address
+            self._by_address[address] = (*self._by_address.get(address, ()), place)
         self._from_console = Line(options.rate)
         self._to_console = Line(options.rate)
         self._bridge = FrameDecoder()
@@ -149,7 +150,8 @@ class World:
                 self._send(self._stations[place].hears, frame_bytes, place)
 
     def _addressed(self, payload: bytes) -> range | tuple[int, ...]:
-        """Return the modules to whose radio a frame matters: one, or all."""
+        """Return the modules to whose radio a frame matters: one, all, or those that share its
+        address by mistake."""
         try:
             destination = decode(payload).destination
         except RemoteProtocolError:
@@ -157,8 +159,7 @@ class World:
             return ()
         if destination == EVERYONE_ADDRESS:
             return range(len(self._stations))
-        place = self._by_address.get(destination)
-        return () if place is None else (place,)
+        return self._by_address.get(destination, ())
 
     def _send(self, channel: Channel, frame_bytes: bytes, place: int) -> None:
         for arrival_ns, data in channel.offer(frame_bytes, self._t_ns):

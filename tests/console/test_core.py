@@ -178,6 +178,30 @@ def test_a_module_that_restarts_never_repeats_what_it_did() -> None:
     assert len([entry for entry in session.tally if entry.name == "maple"]) == 2
 
 
+def test_of_two_modules_with_one_address_neither_moves() -> None:
+    session = VirtualSession(SimOptions.from_texts({"seed": 4, "fault": "same_address:cedar"}))
+    session.run_for(5)
+    names = [module.name for module in session.view.modules]
+    assert {"birch", "cedar"} <= set(names)
+    sharing = [module.name for module in session.view.modules if module.shares_address]
+    assert sorted(sharing) == ["birch", "cedar"]
+    assert any("address conflict" in text for _, text in session.view.notices)
+    for name in sharing:
+        with pytest.raises(InputError, match="another box answers at its address"):
+            session.order(f"{name} pivot forward at 5200")
+    session.order("alder pivot forward at 5200")
+    session.settle()
+    assert [entry.name for entry in session.tally] == ["alder"]
+
+
+def test_all_stop_reaches_both_of_two_modules_with_one_address() -> None:
+    session = VirtualSession(SimOptions.from_texts({"seed": 4, "fault": "same_address:cedar"}))
+    session.run_for(5)
+    session.core.stop_all("test", session.now_ns)
+    assert session.run_for(10, lambda: not session.view.stop.missing)
+    assert all(module.latched for module in session.view.modules)
+
+
 def test_a_silent_module_ends_unseen() -> None:
     options = SimOptions.from_texts({"seed": 4, "fault": "silent:maple"})
     session = VirtualSession(options)

@@ -148,6 +148,13 @@ def test_an_address_given_up_is_no_conflict() -> None:
     assert [module.address for module in fold.view.modules] == [0x11, 0x10]
 
 
+def test_sharing_an_address_ends_when_one_goes() -> None:
+    script = met().heard(presence(identity=OTHER))
+    assert [each.shares_address for each in Fold(script).view.modules] == [True, True]
+    script.heard(presence(identity=OTHER), address=0x12)
+    assert [each.shares_address for each in Fold(script).view.modules] == [False, False]
+
+
 def test_a_module_with_a_new_address_is_still_answered_for() -> None:
     script = met().order(planned()).sent(pivot()).heard(presence(), address=0x11)
     fold = Fold(script.heard(facts(), address=0x11))

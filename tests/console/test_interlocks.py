@@ -85,6 +85,7 @@ CASES = [
     ("all-stop in force", module(latched=True, stop_number=5), FLEET, "", ["all-stop 5"], "ps"),
     ("restarted", module(epoch=0), FLEET, "", ["epoch 0", "1772438400"], "psf"),
     ("restarted", module(epoch=1_772_438_401), FLEET, "", ["1772438401"], "psf"),
+    ("address shared", module(shares_address=True), FLEET, "", ["another box", "0x0011"], "ps"),
     ("telemetry too old", module(heard_t_ns=NOW_NS - 7 * SECOND_NS), FLEET, "", ["7.0 s"], "ps"),
     ("telemetry too old", module(heard_t_ns=None), FLEET, "", ["nothing was heard"], "ps"),
     ("over the speed limit", module(wheel_max_rpm=4399), FLEET, "", ["4400 rpm", "4399"], "ps"),
@@ -177,4 +178,9 @@ def test_every_row_is_tried_here_named_once_and_not_overridable() -> None:
 
 def test_what_only_the_console_can_know_is_enforced_by_the_console() -> None:
     console = {row.name for row in INTERLOCKS if row.enforced_by is Enforcer.CONSOLE}
-    assert console == {"link not open", "log not writing", "telemetry too old"}
+    assert console == {
+        "link not open",
+        "log not writing",
+        "address shared",
+        "telemetry too old",
+    }
