@@ -213,12 +213,17 @@ class SessionCore:
     def wake(self, t_ns: int) -> None:
         """Do what is due by now."""
         self._effects(self._exchange.wake(t_ns), t_ns)
-        strange = unexplained(self.fleet.modules(), self.fleet.epoch, self.fleet.unknown_heard)
-        if self._roll.due(strange, t_ns):
+        if self._roll.due(self._strangers, t_ns):
             self._broadcast(RollCall(self.fleet.epoch))
-        fleet = self.fleet.view(t_ns)
-        for module in self._stops.due(fleet, t_ns):
-            stop = fleet.stop
+        if self.fleet.newest_stop:
+            self._repeat_stop(t_ns)
+
+    def _strangers(self) -> bool:
+        return unexplained(self.fleet.modules(), self.fleet.epoch, self.fleet.unknown_heard)
+
+    def _repeat_stop(self, t_ns: int) -> None:
+        for module in self._stops.due(lambda: self.fleet.view(t_ns), t_ns):
+            stop = self.fleet.view(t_ns).stop
             again = Stop(stop.stop_number) if stop.in_force else Clear(stop.stop_number)
             self._push(module.link, module.address, again, urgent=True)
 

@@ -3,7 +3,7 @@
 Owns two small schedules. Time is an argument; neither sends anything, they say what is due.
 """
 
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from typing import Final
 
 from console.view import FleetView, ModuleView
@@ -14,6 +14,8 @@ ROLL_HASTE_PERIOD_NS: Final = 500_000_000
 ROLL_CALM_PERIOD_NS: Final = 10_000_000_000
 STOP_PERIOD_NS: Final = 150_000_000
 """Above the round trip of a busy half-duplex channel, below what a person would wait."""
+STOP_LOOK_NS: Final = 30_000_000
+"""How often the confirmations are looked at; a fifth of the period that they steer."""
 STOP_CALM_AFTER: Final = 40
 STOP_CALM_PERIOD_NS: Final = 1_000_000_000
 
@@ -30,13 +32,13 @@ class RollCaller:
         """Call at the next chance: a newer epoch is to be offered."""
         self.next_ns = 0
 
-    def due(self, unexplained: bool, t_ns: int) -> bool:
-        """Whether to call now. ``unexplained``: somebody is heard, but not known in full."""
-        haste_ns = ROLL_HASTE_PERIOD_NS
-        if unexplained and self._last_ns is not None:
-            self.next_ns = min(self.next_ns, self._last_ns + haste_ns)
+    def due(self, strange: Callable[[], bool], t_ns: int) -> bool:
+        """Whether to call now. ``strange``: whether somebody is heard, but not known in full;
+        asked only where the answer matters, since it looks at every module."""
         if t_ns < self.next_ns:
-            return False
+            hasty_ns = None if self._last_ns is None else self._last_ns + ROLL_HASTE_PERIOD_NS
+            if hasty_ns is None or t_ns < hasty_ns or not strange():
+                return False
         self._calls += 1
         self._last_ns = t_ns
         opening = self._calls < ROLL_OPENING_CALLS
@@ -54,6 +56,7 @@ class StopKeeper:
 
     def __init__(self) -> None:
         self._rounds = 0
+        self._looked_ns: int | None = None
         self.next_ns: int | None = None
 
     def hurry(self, t_ns: int) -> None:
@@ -61,13 +64,19 @@ class StopKeeper:
         self._rounds = 0
         self.next_ns = t_ns + STOP_PERIOD_NS
 
-    def due(self, view: FleetView, t_ns: int) -> tuple[ModuleView, ...]:
+    def due(self, look: Callable[[], FleetView], t_ns: int) -> tuple[ModuleView, ...]:
         """Modules that have not confirmed what is in force, each time a round is due.
 
         While a stop is in force: those that have not confirmed it. Otherwise: those that still
-        report a latch of it.
+        report a latch of it. ``look`` makes a picture of the fleet; it is asked for no more
+        often than STOP_LOOK_NS.
         """
-        waiting = self._waiting(view)
+        round_due = self.next_ns is not None and t_ns >= self.next_ns
+        looked_just_now = self._looked_ns is not None and t_ns < self._looked_ns + STOP_LOOK_NS
+        if looked_just_now and not round_due:
+            return ()
+        self._looked_ns = t_ns
+        waiting = self._waiting(look())
         if not waiting:
             self.next_ns = None
             return ()

@@ -99,12 +99,14 @@ class CommandExchange:
     def __init__(self, policy: ResendPolicy = _DEFAULT_POLICY) -> None:
         self._policy = policy
         self._lanes: dict[int, Lane] = {}
+        self._active: dict[int, Lane] = {}
+        """Lanes with something in hand: timers look at no others, since most modules are idle."""
         self._open: set[int] = set()
 
     @property
     def next_wake_ns(self) -> int | None:
         """When ``wake`` is next due, or None while no timer runs."""
-        dues = (entry.due_ns for lane in self._lanes.values() for entry in lane.in_hand.values())
+        dues = (entry.due_ns for lane in self._active.values() for entry in lane.in_hand.values())
         return min(dues, default=None)
 
     def busy(self, destination: int) -> bool:
@@ -150,7 +152,7 @@ class CommandExchange:
         """Run the timers that are due at ``t_ns``, the longest overdue first."""
         due = [
             (entry.due_ns, entry.command, lane, entry)
-            for lane in self._lanes.values()
+            for lane in self._active.values()
             for entry in lane.in_hand.values()
             if entry.due_ns <= t_ns
         ]
@@ -224,6 +226,7 @@ class CommandExchange:
     def _call(self, lane: Lane, entry: Entry, t_ns: int, _expect_ms: int) -> list[Step]:
         entry.phase = Phase.CALLING
         lane.in_hand[entry.message.number] = entry
+        self._active[entry.destination] = lane
         return self._send(lane, entry, t_ns)
 
     def _ask(self, lane: Lane, entry: Entry, t_ns: int, _expect_ms: int) -> list[Step]:
@@ -277,6 +280,8 @@ class CommandExchange:
 
     def _end(self, lane: Lane, entry: Entry, how: Ending) -> list[Step]:
         lane.remove(entry)
+        if not lane.in_hand:
+            self._active.pop(entry.destination, None)
         self._open.discard(entry.command)
         return [Ended(entry.command, how)]
 

@@ -9,6 +9,7 @@ from console.standing import (
     ROLL_OPENING_PERIOD_NS,
     STOP_CALM_AFTER,
     STOP_CALM_PERIOD_NS,
+    STOP_LOOK_NS,
     STOP_PERIOD_NS,
     RollCaller,
     StopKeeper,
@@ -21,7 +22,7 @@ EPOCH = 1_760_000_000
 
 
 def calls(roll: RollCaller, unexplained_now: bool, until_ns: int, step_ns: int) -> list[int]:
-    return [t_ns for t_ns in range(0, until_ns, step_ns) if roll.due(unexplained_now, t_ns)]
+    return [t_ns for t_ns in range(0, until_ns, step_ns) if roll.due(lambda: unexplained_now, t_ns)]
 
 
 def test_the_roll_is_called_often_at_first_and_then_calmly() -> None:
@@ -41,9 +42,11 @@ def test_a_stranger_hastens_the_roll() -> None:
 
 def test_hurry_calls_at_the_next_chance() -> None:
     roll = RollCaller()
-    assert [roll.due(False, 300_000_000 * count) for count in range(5)] == [True] * 4 + [False]
+    assert [roll.due(lambda: False, 300_000_000 * count) for count in range(5)] == [True] * 4 + [
+        False
+    ]
     roll.hurry()
-    assert roll.due(False, 1_300_000_000)
+    assert roll.due(lambda: False, 1_300_000_000)
 
 
 def test_who_is_unexplained() -> None:
@@ -59,7 +62,7 @@ def stopped(missing: tuple[int, ...], in_force: bool = True) -> FleetView:
 
 
 def due_names(keeper: StopKeeper, view: FleetView, t_ns: int) -> list[str]:
-    return [module.name for module in keeper.due(view, t_ns)]
+    return [module.name for module in keeper.due(lambda: view, t_ns)]
 
 
 def test_a_stop_is_repeated_to_those_who_have_not_confirmed() -> None:
@@ -79,7 +82,7 @@ def test_repeating_never_ends_but_grows_calm() -> None:
     times = [
         t_ns
         for t_ns in range(0, 60_000_000_000, STOP_PERIOD_NS // 3)
-        if keeper.due(stopped((1,)), t_ns)
+        if keeper.due(lambda: stopped((1,)), t_ns)
     ]
     gaps = [later - earlier for earlier, later in itertools.pairwise(times)]
     assert gaps[: STOP_CALM_AFTER - 1] == [STOP_PERIOD_NS] * (STOP_CALM_AFTER - 1)
@@ -89,8 +92,21 @@ def test_repeating_never_ends_but_grows_calm() -> None:
 def test_a_module_that_comes_later_gets_the_stop_too() -> None:
     keeper = StopKeeper()
     assert due_names(keeper, stopped(()), 0) == []
-    assert due_names(keeper, stopped((3,)), 50) == []
-    assert due_names(keeper, stopped((3,)), 50 + STOP_PERIOD_NS) == ["cedar"]
+    assert due_names(keeper, stopped((3,)), STOP_LOOK_NS) == []
+    assert due_names(keeper, stopped((3,)), STOP_LOOK_NS + STOP_PERIOD_NS) == ["cedar"]
+
+
+def test_the_fleet_is_not_looked_at_more_often_than_needed() -> None:
+    keeper = StopKeeper()
+    looks: list[int] = []
+
+    def look() -> FleetView:
+        looks.append(1)
+        return stopped(())
+
+    for t_ns in range(0, 1_000_000_000, 1_000_000):
+        keeper.due(look, t_ns)
+    assert len(looks) <= 1 + 1_000_000_000 // STOP_LOOK_NS
 
 
 def test_a_clear_is_repeated_to_those_still_latched() -> None:
