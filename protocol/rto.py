@@ -29,6 +29,7 @@ class RoundTripEstimator:
     """
 
     __slots__ = (
+        "_doubted",
         "_granularity_ns",
         "_initial_ns",
         "_maximum_ns",
@@ -51,6 +52,7 @@ class RoundTripEstimator:
         self._granularity_ns = granularity_ns
         self._mean_ns: int | None = None
         self._variation_ns = 0
+        self._doubted = False
 
     @property
     def mean_ns(self) -> int | None:
@@ -69,6 +71,8 @@ class RoundTripEstimator:
             wait_ns = self._initial_ns
         else:
             wait_ns = self._mean_ns + max(self._granularity_ns, _K * self._variation_ns)
+        if self._doubted:
+            wait_ns = max(wait_ns, self._initial_ns)
         return min(max(wait_ns, self._minimum_ns), self._maximum_ns)
 
     def sample(self, rtt_ns: int) -> None:
@@ -79,6 +83,7 @@ class RoundTripEstimator:
         """
         if rtt_ns < 0:
             raise LocalProtocolError(f"a round trip of {rtt_ns} ns ends before it began")
+        self._doubted = False
         if self._mean_ns is None:
             self._mean_ns = rtt_ns
             self._variation_ns = rtt_ns // 2
@@ -87,12 +92,13 @@ class RoundTripEstimator:
         self._variation_ns += (error_ns - self._variation_ns) // _BETA_INVERSE
         self._mean_ns += (rtt_ns - self._mean_ns) // _ALPHA_INVERSE
 
-    def forget(self) -> None:
-        """Go back to the initial timeout.
+    def doubt(self) -> None:
+        """Wait at least the initial timeout until the next sample.
 
         For the caller that got no answer to several sends in a row: the link may have become
-        slower than the timeout, and Karn's rule then lets no sample through that would tell
-        (RFC 6298 section 5 allows clearing the estimate in this case).
+        slower than the timeout, and Karn's rule then lets no sample through that would tell.
+        The estimate itself is kept, and not cleared as RFC 6298 section 5 would allow: after a
+        clear the first sample makes the timeout three times itself, and on a link that only
+        loses that wait costs more than all else.
         """
-        self._mean_ns = None
-        self._variation_ns = 0
+        self._doubted = True

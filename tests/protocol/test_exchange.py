@@ -316,17 +316,26 @@ def test_facts_in_place_of_a_lost_acceptance_measure_nothing() -> None:
     assert timeout_ms(desk, 3) == 120
 
 
-def test_three_sends_in_vain_put_the_estimate_in_doubt() -> None:
+def test_six_sends_in_vain_put_the_estimate_in_doubt() -> None:
     """Or a link that has become slower than the timeout would never be measured again."""
     desk = Desk(ResendPolicy(tries=10))
     exchange_one(desk, 1, 10)
     desk.submit(2, pivot(2))
     waits_ms = []
-    for _ in range(5):
+    for _ in range(8):
         before_ns = desk.t_ns
         desk.wake()
         waits_ms.append((desk.t_ns - before_ns) // MS)
-    assert waits_ms == [30, 30, 30, 250, 250]
+    assert waits_ms == [30, 30, 30, 30, 30, 30, 250, 250]
+
+
+def test_a_rest_that_is_finished_at_once_measures_the_round_trip() -> None:
+    desk = Desk()
+    exchange_one(desk, 1, 40)
+    desk.submit(2, rest(2))
+    desk.hear(answer(2, AnswerState.FINISHED), after_ms=40)
+    # By hand, RFC 6298 section 2.3: RTTVAR 20 -> 15, SRTT 40; timeout 40 + 4 * 15.
+    assert timeout_ms(desk, 3) == 100
 
 
 # One in hand for each module.

@@ -60,9 +60,10 @@ def test_bounds_hold_for_the_timeout_only() -> None:
     estimator = RoundTripEstimator(250 * MS, 30 * MS, 2000 * MS, MS)
     estimator.sample(1 * MS)
     assert (estimator.timeout_ns, estimator.mean_ns) == (30 * MS, MS)
-    estimator.forget()
-    estimator.sample(5000 * MS)
-    assert (estimator.timeout_ns, estimator.mean_ns) == (2000 * MS, 5000 * MS)
+    for _ in range(100):
+        estimator.sample(5000 * MS)
+    assert estimator.timeout_ns == 2000 * MS
+    assert estimator.mean_ns == pytest.approx(5000 * MS, rel=1e-3)
 
 
 def test_the_initial_timeout_is_bounded_too() -> None:
@@ -76,13 +77,24 @@ def test_there_is_no_floor_of_one_second() -> None:
     assert estimator.timeout_ns < 11 * MS
 
 
-def test_forget_begins_anew() -> None:
+def test_in_doubt_it_waits_the_initial_timeout_until_the_next_sample() -> None:
     estimator = RoundTripEstimator(250 * MS, 30 * MS, 2000 * MS, MS)
     estimator.sample(40 * MS)
-    estimator.forget()
+    estimator.doubt()
     assert estimator.timeout_ns == 250 * MS
+    assert estimator.mean_ns == 40 * MS
     estimator.sample(80 * MS)
-    assert (estimator.mean_ns, estimator.variation_ns) == (80 * MS, 40 * MS)
+    # By hand, RFC 6298 section 2.3: RTTVAR 20 -> 20 * 3/4 + 40 / 4 = 25, SRTT 40 -> 45.
+    assert (estimator.mean_ns, estimator.variation_ns) == (45 * MS, 25 * MS)
+    assert estimator.timeout_ns == 145 * MS
+
+
+def test_doubt_never_shortens_a_longer_timeout() -> None:
+    estimator = RoundTripEstimator(250 * MS, 30 * MS, 2000 * MS, MS)
+    estimator.sample(400 * MS)
+    before_ns = estimator.timeout_ns
+    estimator.doubt()
+    assert estimator.timeout_ns == before_ns == 1200 * MS
 
 
 @STEADY
