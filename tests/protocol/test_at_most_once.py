@@ -74,6 +74,14 @@ def test_no_breach_and_no_false_refusal(seed: int, weather: Weather) -> None:
     assert min(world.endings()[how] for how in Ending) > 20
 
 
+@pytest.mark.parametrize("share", range(8))
+def test_two_hundred_thousand_commands(share: int) -> None:
+    """Some twenty seconds in all, over air that loses up to 40 %."""
+    for seed in range(1000 + 25 * share, 1025 + 25 * share):
+        world = World(seed, FOUL if seed % 2 else FAIR).run(1000)
+        assert (seed, world.breaches(), world.false_refusals()) == (seed, [], [])
+
+
 @pytest.mark.parametrize("seed", range(6))
 def test_no_breach_where_copies_come_seconds_late(seed: int) -> None:
     world = World(seed, SLOW).run(500)

@@ -1,0 +1,73 @@
+"""The long proofs: each a size, a piece of it that one process does, and how pieces add up.
+
+A piece is named by its seed, so that a red one can be had again by itself.
+"""
+
+from collections import Counter
+from collections.abc import Callable
+from dataclasses import asdict
+from typing import NamedTuple
+
+from tests.support.console_scripts import run_script
+from tests.support.exchange_world import FAIR, FOUL, World
+from tests.support.mutations import run_mutations
+
+Figures = dict[str, int]
+
+
+class Proof(NamedTuple):
+    """One proof. ``piece(seed, size)`` returns figures; ``breaches`` among them must be 0."""
+
+    name: str
+    size: int
+    piece_size: int
+    piece: Callable[[int, int], Figures]
+    unit: str
+
+
+def exchange_piece(seed: int, size: int) -> Figures:
+    """Law 1 between an exchange and command memories, over fair and foul air in turn."""
+    world = World(seed, FOUL if seed % 2 else FAIR).run(size)
+    wrong = [*world.breaches(), *map(str, world.false_refusals())]
+    for each in wrong:
+        print(f"seed {seed}: {each}")
+    endings = {how.value: count for how, count in world.endings().items()}
+    return {
+        "commands": len(world.sent),
+        "carried_out": sum(world.deeds.carried_out.values()),
+        "restarts": world.deeds.restarts,
+        "repeats": world.deeds.repeats,
+        "breaches": len(wrong),
+        **endings,
+    }
+
+
+def console_piece(seed: int, size: int) -> Figures:
+    """Law 1 for the whole console core against the simulated fleet."""
+    outcome = run_script(seed, size, loss=(0.1, 0.25, 0.4)[seed % 3])
+    for each in outcome.breaches:
+        print(f"seed {seed}: {each}")
+    figures = {name: value for name, value in asdict(outcome).items() if name != "breaches"}
+    return {**figures, "breaches": len(outcome.breaches)}
+
+
+def decoder_piece(seed: int, size: int) -> Figures:
+    """The decoder on mutated frames: no error but the documented one, memory bounded."""
+    found = asdict(run_mutations(seed, size))
+    del found["most_held"]
+    return {**found, "breaches": 0}
+
+
+PROOFS = (
+    Proof("law_one_exchange", 200_000, 1_000, exchange_piece, "commands"),
+    Proof("law_one_console", 20_000, 300, console_piece, "commands"),
+    Proof("decoder_mutations", 10_000_000, 100_000, decoder_piece, "frames"),
+)
+
+
+def add_up(pieces: list[Figures]) -> Figures:
+    """Sum the figures of all pieces."""
+    total: Counter[str] = Counter()
+    for piece in pieces:
+        total.update(piece)
+    return dict(total)
