@@ -55,6 +55,9 @@ class _Reader(NamedTuple):
 
 
 LAYOUTS: Final[dict[int, _Layout]] = {}
+_SEALED_BIT: Final = 0x80
+"""In the version byte: the payload is sealed and must be opened first (seal.py)."""
+
 _READERS: Final[dict[int, _Reader]] = {}
 CODES: Final[dict[type[Any], Code]] = {}
 
@@ -318,6 +321,8 @@ def decode(payload: bytes) -> Packet:
 
 def _complaint(version: int, code: int, n_bytes: int) -> str:
     """Say what is wrong with a payload; its version comes first, since codes depend on it."""
+    if version & _SEALED_BIT:
+        return "sealed, and opened by nobody here"
     if version != WIRE_VERSION:
         return f"wire version {version}, spoken here is {WIRE_VERSION}"
     if code not in LAYOUTS:

@@ -14,6 +14,7 @@ from tests.bench.decoding import decode_vs_floor
 from tests.bench.goodput import exchange_goodput_vs_bound
 from tests.bench.ingesting import ingest_vs_floor
 from tests.bench.measure import Figure
+from tests.bench.sealed import sealed_decode_vs_floor
 
 
 class Bench(NamedTuple):
@@ -29,6 +30,7 @@ class Bench(NamedTuple):
 BENCHES = (
     Bench("decode_vs_floor", decode_vs_floor, operator.ge, 0.5, "at least"),
     Bench("ingest_vs_floor", ingest_vs_floor, operator.ge, 0.4, "at least"),
+    Bench("sealed_decode_vs_floor", sealed_decode_vs_floor, operator.ge, 0.5, "at least"),
     Bench("exchange_goodput_vs_bound", exchange_goodput_vs_bound, operator.ge, 0.85, "at least"),
 )
 

@@ -10,6 +10,7 @@ from typing import NamedTuple
 
 from tests.support.console_scripts import run_script
 from tests.support.exchange_world import FAIR, FOUL, World
+from tests.support.forgery import assault
 from tests.support.mutations import run_mutations
 
 Figures = dict[str, int]
@@ -51,6 +52,12 @@ def console_piece(seed: int, size: int) -> Figures:
     return {**figures, "breaches": len(outcome.breaches)}
 
 
+def seal_piece(seed: int, size: int) -> Figures:
+    """Forged, altered, cut, replayed frames against a gate: none accepted, no honest one lost."""
+    result = asdict(assault(seed, size))
+    return {**result, "breaches": result["forged_accepted"] + result["honest_refused"]}
+
+
 def decoder_piece(seed: int, size: int) -> Figures:
     """The decoder on mutated frames: no error but the documented one, memory bounded."""
     found = asdict(run_mutations(seed, size))
@@ -61,6 +68,7 @@ def decoder_piece(seed: int, size: int) -> Figures:
 PROOFS = (
     Proof("law_one_exchange", 200_000, 1_000, exchange_piece, "commands"),
     Proof("law_one_console", 20_000, 300, console_piece, "commands"),
+    Proof("seal_forgeries", 1_000_000, 20_000, seal_piece, "frames"),
     Proof("decoder_mutations", 10_000_000, 100_000, decoder_piece, "frames"),
 )
 

@@ -140,7 +140,7 @@ def test_unknown_codes_are_refused() -> None:
             decode(HEADER.pack(WIRE_VERSION, code, 1, 0x10))
 
 
-@pytest.mark.parametrize("version", [0, 2, 255])
+@pytest.mark.parametrize("version", [0, 2, 127])
 def test_another_wire_version_is_refused_and_named(version: int) -> None:
     good = encode(Packet(1, 0x10, Stop(3)))
     with pytest.raises(RemoteProtocolError, match=f"wire version {version}"):

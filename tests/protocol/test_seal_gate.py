@@ -1,0 +1,142 @@
+"""Freshness: which authentic frames are obeyed after a restart of either end."""
+
+import pytest
+
+from protocol.codes import CONSOLE_ADDRESS, EVERYONE_ADDRESS
+from protocol.errors import RemoteProtocolError
+from protocol.message import (
+    Clear,
+    Message,
+    Packet,
+    Presence,
+    Query,
+    Rest,
+    RollCall,
+    Stop,
+    Telemetry,
+    encode,
+)
+from protocol.seal import KeyRing, Refused, Sealer, SealFault
+from protocol.seal_gate import ConsoleGate, ModuleGate
+from tests.support.forgery import assault
+
+KEYS = KeyRing({0: bytes(range(32))}, 0)
+BOOT, EPOCH = 77, 1_700_000_000
+MODULE = 0x10
+
+
+class Console:
+    """Seals what a console sends."""
+
+    def __init__(self, opening: int = EPOCH) -> None:
+        self._sealer = Sealer(KEYS, opening)
+
+    def says(self, message: Message) -> bytes:
+        destination = EVERYONE_ADDRESS if isinstance(message, Stop | RollCall) else MODULE
+        return self._sealer.seal(encode(Packet(destination, CONSOLE_ADDRESS, message)))
+
+
+class Module(Console):
+    """Seals what a module sends."""
+
+    def says(self, message: Message) -> bytes:
+        return self._sealer.seal(encode(Packet(CONSOLE_ADDRESS, MODULE, message)))
+
+
+def obeyed(gate: ModuleGate | ConsoleGate, payload: bytes) -> bool:
+    return isinstance(gate.admit(payload), Packet)
+
+
+QUERY = Query(EPOCH, BOOT, 1)
+TELEMETRY = Telemetry(BOOT, 1, 0, 0, 0, 1, 0, 4000, 2000, 0, 7)
+PRESENCE = Presence(9, BOOT, EPOCH, 0, 0, 1, 0)
+
+
+def test_a_module_that_restarted_obeys_only_stop_and_roll_call_until_proof() -> None:
+    console, gate = Console(), ModuleGate(KEYS, BOOT)
+    assert obeyed(gate, console.says(Stop(1)))
+    assert obeyed(gate, console.says(RollCall(EPOCH)))
+    assert gate.admit(console.says(Clear(1))) == Refused(SealFault.NOT_FRESH)
+    assert gate.admit(console.says(Query(EPOCH, BOOT - 1, 1))) == Refused(SealFault.NOT_FRESH)
+    assert obeyed(gate, console.says(QUERY))
+    assert obeyed(gate, console.says(Clear(1)))
+
+
+def test_what_was_sent_before_the_proof_is_old() -> None:
+    console, gate = Console(), ModuleGate(KEYS, BOOT)
+    early = console.says(Clear(1))
+    assert obeyed(gate, console.says(Rest(EPOCH, BOOT, 1, 9)))
+    assert gate.admit(early) == Refused(SealFault.REPEATED)
+
+
+def test_a_repeated_stop_is_obeyed_and_a_repeated_clear_is_not() -> None:
+    console, gate = Console(), ModuleGate(KEYS, BOOT)
+    gate.admit(console.says(QUERY))
+    stop, clear = console.says(Stop(1)), console.says(Clear(1))
+    assert [obeyed(gate, each) for each in (stop, clear, stop, clear)] == [True, True, True, False]
+    assert gate.faults[SealFault.REPEATED] == 1
+
+
+def test_a_clear_of_the_boot_before_is_not_obeyed_after_a_restart() -> None:
+    console = Console()
+    clear = console.says(Clear(1))
+    before = ModuleGate(KEYS, BOOT)
+    before.admit(console.says(QUERY))
+    after = ModuleGate(KEYS, BOOT + 1)
+    assert not obeyed(after, clear)
+    assert obeyed(after, console.says(Query(EPOCH, BOOT + 1, 1)))
+    assert not obeyed(after, clear)
+
+
+def test_a_new_session_of_the_console_is_above_all_before() -> None:
+    old, new, gate = Console(EPOCH), Console(EPOCH + 1), ModuleGate(KEYS, BOOT)
+    assert obeyed(gate, old.says(QUERY))
+    late = old.says(Clear(1))
+    assert obeyed(gate, new.says(Query(EPOCH + 1, BOOT, 1)))
+    assert gate.admit(late) == Refused(SealFault.TOO_OLD)
+
+
+def test_a_console_takes_presence_only_until_one_names_its_epoch() -> None:
+    module, gate = Module(BOOT), ConsoleGate(KEYS, EPOCH)
+    assert gate.admit(module.says(TELEMETRY)) == Refused(SealFault.NOT_FRESH)
+    assert obeyed(gate, module.says(PRESENCE._replace(epoch=EPOCH - 5)))
+    assert not obeyed(gate, module.says(TELEMETRY))
+    proof = module.says(PRESENCE)
+    assert obeyed(gate, proof)
+    assert obeyed(gate, module.says(TELEMETRY))
+    assert gate.admit(proof) == Refused(SealFault.REPEATED)
+
+
+def test_another_epoch_asks_for_proof_again() -> None:
+    module, gate = Module(BOOT), ConsoleGate(KEYS, EPOCH)
+    gate.admit(module.says(PRESENCE))
+    gate.set_epoch(EPOCH + 1)
+    assert not obeyed(gate, module.says(TELEMETRY))
+    assert obeyed(gate, module.says(PRESENCE._replace(epoch=EPOCH + 1)))
+    assert obeyed(gate, module.says(TELEMETRY))
+
+
+def test_unsealed_and_forged_frames_are_counted() -> None:
+    gate = ModuleGate(KEYS, BOOT)
+    plain = encode(Packet(EVERYONE_ADDRESS, CONSOLE_ADDRESS, Stop(1)))
+    foreign = Sealer(KeyRing({0: bytes(32)}, 0), 5).seal(plain)
+    assert not obeyed(gate, plain)
+    assert not obeyed(gate, foreign)
+    assert gate.faults == {SealFault.UNSEALED: 1, SealFault.FORGED: 1}
+
+
+def test_an_authentic_payload_that_is_no_message_takes_no_counter() -> None:
+    gate, sealer = ModuleGate(KEYS, BOOT), Sealer(KEYS, EPOCH)
+    unknown = bytearray(encode(Packet(EVERYONE_ADDRESS, CONSOLE_ADDRESS, Stop(1))))
+    unknown[1] = 0x7F
+    with pytest.raises(RemoteProtocolError):
+        gate.admit(sealer.seal(bytes(unknown)))
+    assert not gate.faults
+
+
+@pytest.mark.parametrize("seed", [1, 2])
+def test_no_forgery_is_accepted_and_no_honest_frame_refused(seed: int) -> None:
+    result = assault(seed, 10_000)
+    assert result.forged >= 10_000
+    assert result.honest > 2_000
+    assert (result.forged_accepted, result.honest_refused) == (0, 0)
