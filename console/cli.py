@@ -36,6 +36,12 @@ rate_option = click.option(
     type=click.IntRange(min=300),
     help="Line rate of the serial port, baud.",
 )
+keys_option = click.option(
+    "--keys",
+    type=_File(),
+    metavar="FILE",
+    help="Key file of a sealed fleet; must be readable by you alone.",
+)
 pace_option = click.option(
     "--pace",
     type=click.FloatRange(min=0.01, max=1000.0),
@@ -63,6 +69,7 @@ def tumblewire() -> None:
 @operator_option
 @rate_option
 @pace_option
+@keys_option
 def live(links: tuple[str, ...], log: Path | None, **rest: Any) -> int:
     """The console. Without --link: a simulated practice fleet of eight."""
     from console.commands.live import practice_options, run_live
@@ -78,6 +85,7 @@ def live(links: tuple[str, ...], log: Path | None, **rest: Any) -> int:
 @operator_option
 @rate_option
 @pace_option
+@keys_option
 @json_option
 def run(sheet: str, links: tuple[str, ...], log: Path | None, as_json: bool, **rest: Any) -> int:
     """Carry out a run SHEET without the screens (a file, or the name of a shipped one).

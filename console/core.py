@@ -18,17 +18,29 @@ from console.interlocks import blocking
 from console.link import Outbox
 from console.orders import Order, render
 from console.planning import build_commands, resolve, to_message
+from console.sealing import ConsoleSeal
 from console.standing import RollCaller, StopKeeper, unexplained
 from console.view import CommandView, FleetView, ModuleView
 from protocol.codes import CONSOLE_ADDRESS, EVERYONE_ADDRESS
 from protocol.exchange import CommandExchange, Ended, Ending, Send
 from protocol.frame import frame
-from protocol.message import Clear, Message, Packet, Rest, RollCall, Stop, encode
+from protocol.message import (
+    Clear,
+    Message,
+    Packet,
+    Presence,
+    Query,
+    Rest,
+    RollCall,
+    Stop,
+    encode,
+)
 from storage.records import (
     BytesIn,
     BytesOut,
     CommandExpired,
     EpochChosen,
+    FramesRefused,
     OrderGiven,
     OrderVoided,
     Record,
@@ -71,7 +83,9 @@ class SessionCore:
         outboxes: Sequence[Outbox],
         log: Recorder,
         answer: Callable[[OrderGiven, str], None],
+        seal: ConsoleSeal | None = None,
     ) -> None:
+        self._seal = seal
         self.fleet = FleetReducer()
         self._outboxes = list(outboxes)
         self._log = log
@@ -112,12 +126,20 @@ class SessionCore:
 
     def arrived(self, link: int, data: bytes, t_ns: int) -> None:
         """Take bytes from a link."""
+        if self._seal is not None:
+            pieces, faults = self._seal.judge(link, data)
+            if pieces:
+                self.note(FramesRefused(t_ns, link, pieces, faults))
         step = self.note(BytesIn(t_ns, link, data))
         for from_link, packet in step.packets:
             source = from_link << LINK_SHIFT | packet.source
             self._effects(self._exchange.receive(source, packet.message, t_ns), t_ns)
+            if isinstance(packet.message, Presence):
+                self._prove(from_link, packet.source, packet.message.boot)
         if self.fleet.highest_epoch > self.fleet.epoch:
             self.note(EpochChosen(t_ns, self.fleet.highest_epoch + 1))
+            if self._seal is not None:
+                self._seal.set_epoch(self.fleet.epoch)
             self._roll.hurry()
 
     def give(
@@ -225,6 +247,8 @@ class SessionCore:
         for module in self._stops.due(lambda: self.fleet.view(t_ns), t_ns):
             stop = self.fleet.view(t_ns).stop
             again = Stop(stop.stop_number) if stop.in_force else Clear(stop.stop_number)
+            if not stop.in_force:
+                self._prove(module.link, module.address, module.boot, urgent=True)
             self._push(module.link, module.address, again, urgent=True)
 
     def next_wake_ns(self, t_ns: int) -> int:
@@ -274,8 +298,16 @@ class SessionCore:
         for link in sorted(self.open_links):
             self._push(link, EVERYONE_ADDRESS, message, urgent)
 
+    def _prove(self, link: int, address: int, boot: int, urgent: bool = False) -> None:
+        """Show a sealed module that its boot number is known: a question about no command. What
+        it obeys before that is little (WIRE.md, "After a restart")."""
+        if self._seal is not None:
+            self._push(link, address, Query(self.fleet.epoch, boot, 0), urgent)
+
     def _push(self, link: int, address: int, message: Message, urgent: bool = False) -> None:
         payload = encode(Packet(address, CONSOLE_ADDRESS, message))
+        if self._seal is not None:
+            payload = self._seal.seal(payload)
         self._outboxes[link].push(address, frame(payload), urgent)
 
 

@@ -21,6 +21,7 @@ from console.errors import EngineError, InputError
 from console.link import LinkReader, Outbox
 from console.orders import Order, parse_order
 from console.port import Port
+from console.sealing import ConsoleSeal
 from console.view import FleetView
 from protocol.codes import CONSOLE_ADDRESS, EVERYONE_ADDRESS
 from protocol.frame import frame
@@ -61,7 +62,12 @@ class Engine:
     """
 
     def __init__(
-        self, ports: Sequence[Port], log: LogWriter, clock: SessionClock, opened: SessionOpened
+        self,
+        ports: Sequence[Port],
+        log: LogWriter,
+        clock: SessionClock,
+        opened: SessionOpened,
+        seal: ConsoleSeal | None = None,
     ) -> None:
         self._clock = clock
         self._log = log
@@ -69,7 +75,8 @@ class Engine:
         self._opened = opened
         self._inbox: queue.SimpleQueue[_Request] = queue.SimpleQueue()
         outboxes = [Outbox(LinePacer(port.rate_baud)) for port in self._ports]
-        self._core = SessionCore(outboxes, log, self._log_answered)
+        self._core = SessionCore(outboxes, log, self._log_answered, seal)
+        self._seal = seal
         self._readers = [
             LinkReader(link, port, clock, self._arrived, self._lost)
             for link, port in enumerate(self._ports)
@@ -206,7 +213,8 @@ class Engine:
         self._failure = error
         self._ended = True
         stop = Stop(self._core.fleet.newest_stop + 1)
-        data = frame(encode(Packet(EVERYONE_ADDRESS, CONSOLE_ADDRESS, stop)))
+        payload = encode(Packet(EVERYONE_ADDRESS, CONSOLE_ADDRESS, stop))
+        data = frame(payload if self._seal is None else self._seal.seal(payload))
         for reader in self._readers:
             reader.end()
         for port in self._ports:

@@ -16,7 +16,7 @@ from typing import Any, Final
 from console.errors import LogError
 from console.fleet_commands import expire, plan_order, void_order
 from console.fleet_endings import close_commands
-from console.fleet_links import change_link, take_bytes_in, take_bytes_out
+from console.fleet_links import change_link, refuse_frames, take_bytes_in, take_bytes_out
 from console.fleet_rows import write_correction, write_remark, write_sheet
 from console.fleet_state import FleetState, Moment, Step
 from console.fleet_stop import lift_stop, press_stop, stop_view
@@ -28,6 +28,7 @@ from storage.records import (
     CommandExpired,
     Correction,
     EpochChosen,
+    FramesRefused,
     LinkChanged,
     OrderGiven,
     OrderVoided,
@@ -48,6 +49,7 @@ def _open_session(state: FleetState, at: Moment, record: SessionOpened) -> None:
     state.opened_utc = record.utc
     state.operator = record.operator
     state.epoch = record.epoch
+    state.sealed = record.sealed
 
 
 def _close_session(state: FleetState, at: Moment, record: SessionClosed) -> None:
@@ -89,6 +91,7 @@ RULES: Final[dict[type[Any], Callable[[FleetState, Moment, Any], None]]] = {
     SessionOpened: _open_session,
     SessionClosed: _close_session,
     LinkChanged: change_link,
+    FramesRefused: refuse_frames,
     EpochChosen: _choose_epoch,
     OrderGiven: plan_order,
     OrderVoided: void_order,
@@ -133,6 +136,7 @@ class FleetReducer:
             stop=stop_view(state),
             notices=tuple(state.notices),
             closed=state.closed,
+            sealed=state.sealed,
         )
 
     def modules(self) -> tuple[ModuleView, ...]:

@@ -29,7 +29,8 @@ from protocol.message import (
     Telemetry,
     decode,
 )
-from storage.records import BytesIn, BytesOut, LinkChanged
+from protocol.seal import unsealed_form
+from storage.records import BytesIn, BytesOut, FramesRefused, LinkChanged
 
 BAD_DROPS: Final = 16
 BAD_WITHIN_FRAMES: Final = 64
@@ -70,10 +71,11 @@ def take_bytes_in(state: FleetState, at: Moment, record: BytesIn) -> None:
     before = link.frames_in + link.dropped
     good = 0
     packets = at.step.packets
+    refused, link.refused = link.refused, {}
     for count, piece in enumerate(link.inbound.feed(record.data)):
-        packet = _read(piece)
+        packet = None if count in refused else _read(piece, state.sealed)
         if packet is None:
-            _drop(state, at, link, piece, before + count)
+            _drop(state, at, link, _why(piece, refused.get(count)), before + count)
             continue
         good += 1
         packets.append((record.link, packet))
@@ -90,7 +92,7 @@ def take_bytes_out(state: FleetState, at: Moment, record: BytesOut) -> None:
     link.bytes_out += len(record.data)
     at.link = record.link
     for count, piece in enumerate(link.outbound.feed(record.data)):
-        packet = _read(piece)
+        packet = _read(piece, state.sealed)
         if packet is None:
             continue
         link.frames_out += 1
@@ -100,21 +102,31 @@ def take_bytes_out(state: FleetState, at: Moment, record: BytesOut) -> None:
             take(state, at, packet.destination, packet.message)
 
 
-def _read(piece: bytes | Dropped) -> Packet | None:
+def refuse_frames(state: FleetState, at: Moment, record: FramesRefused) -> None:
+    """Keep what the gate said until the bytes it said it of."""
+    link = state.link_of(record.link)
+    link.refused = dict(zip(record.pieces, record.faults, strict=True))
+
+
+def _read(piece: bytes | Dropped, sealed: bool) -> Packet | None:
+    """Decode a piece; in a sealed session the gate has looked at its seal before."""
     if isinstance(piece, Dropped):
         return None
     try:
-        return decode(piece)
+        return decode(unsealed_form(piece) if sealed else piece)
     except RemoteProtocolError:
         return None  # The caller counts it; the bytes themselves stay in the wire record.
 
 
-def _drop(
-    state: FleetState, at: Moment, link: LinkState, piece: bytes | Dropped, frame_count: int
-) -> None:
+def _why(piece: bytes | Dropped, fault: str | None) -> str:
+    if fault is not None:
+        return fault
+    return piece.reason.value if isinstance(piece, Dropped) else UNKNOWN_MESSAGE
+
+
+def _drop(state: FleetState, at: Moment, link: LinkState, reason: str, frame_count: int) -> None:
     """Count a dropped frame, and tell when they become too many; again only once they were few
     in between."""
-    reason = piece.reason.value if isinstance(piece, Dropped) else UNKNOWN_MESSAGE
     link.dropped += 1
     link.reasons[reason] = link.reasons.get(reason, 0) + 1
     link.drops_at.append(frame_count)

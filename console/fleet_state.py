@@ -139,6 +139,7 @@ class LinkState:
     bytes_in: int = 0
     bytes_out: int = 0
     reasons: dict[str, int] = field(default_factory=dict)
+    refused: dict[int, str] = field(default_factory=dict)
     drops_at: deque[int] = field(default_factory=deque)
     bad: bool = False
 
@@ -166,6 +167,7 @@ class FleetState:
 
     epoch: int = 0
     highest_epoch: int = 0
+    sealed: bool = False
     opened_utc: str = ""
     operator: str = ""
     closed: bool = False

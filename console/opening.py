@@ -13,8 +13,11 @@ from typing import Final
 from console.clock import SessionClock, utc_now, utc_seconds
 from console.engine import Engine
 from console.errors import InputError, LogError
+from console.key_file import OpeningStore, default_opening_path, load_keys
 from console.paths import default_log_path
 from console.port import Port, open_port
+from console.sealing import ConsoleSeal
+from protocol.seal import KeyRing
 from storage.errors import StorageError
 from storage.records import SessionOpened
 
@@ -24,13 +27,14 @@ PRACTICE_LINK: Final = "sim://?modules=8"
 @dataclass(frozen=True, slots=True)
 class SessionOptions:
     """What a person chose for a session. ``log`` None: the default place; ``pace`` None: the
-    port's own (a simulated one says it), else 1."""
+    port's own (a simulated one says it), else 1; ``keys``: the key file of a sealed fleet."""
 
     links: tuple[str, ...]
     log: Path | None = None
     operator: str = ""
     rate_baud: int = 921_600
     pace: float | None = None
+    keys: Path | None = None
 
 
 def program_name() -> str:
@@ -57,34 +61,39 @@ def open_session(options: SessionOptions) -> Engine:
     Raises InputError, LinkError or LogError; then nothing is left open and no session is in
     the log.
     """
+    keys = None if options.keys is None else load_keys(options.keys)
     ports: list[Port] = []
     try:
         ports += [open_port(url, options.rate_baud) for url in options.links]
-        return _start(ports, options)
+        return _start(ports, options, keys)
     except BaseException:
         for port in ports:
             port.close()
         raise
 
 
-def _start(ports: Sequence[Port], options: SessionOptions) -> Engine:
+def _start(ports: Sequence[Port], options: SessionOptions, keys: KeyRing | None) -> Engine:
     from storage.writer import LogWriter
 
+    openings = OpeningStore(default_opening_path())
+    epoch = utc_seconds() if keys is None else max(utc_seconds(), openings.last() + 1)
+    seal = None if keys is None else ConsoleSeal(keys, epoch, openings.remember)
     pace = _common_pace(ports, options.pace)
     clock = SessionClock(pace)
     opened = SessionOpened(
         t_ns=0,
         utc=utc_now(),
         operator=operator_name(options.operator),
-        epoch=utc_seconds(),
+        epoch=epoch,
         pace=pace,
         program=program_name(),
+        sealed=seal is not None,
     )
     try:
         log = LogWriter.open(options.log or default_log_path(), opened)
     except StorageError as error:
         raise LogError(str(error)) from error
-    engine = Engine(ports, log, clock, opened)
+    engine = Engine(ports, log, clock, opened, seal)
     engine.start()
     return engine
 

@@ -111,6 +111,7 @@ class FleetView:
     stop: StopView
     notices: tuple[tuple[int, str], ...]
     closed: bool
+    sealed: bool = False
 
 
 class FleetSource(Protocol):

@@ -154,6 +154,16 @@ def tag(key: bytes, covered: bytes) -> bytes:
     return hmac.digest(key, covered, "sha256")[:TAG_BYTES]
 
 
+def unsealed_form(payload: bytes) -> bytes:
+    """Take a seal off without checking it: for reading a record of what was checked before.
+
+    A payload without a seal, or too short for one, is returned as it is.
+    """
+    if len(payload) < _LEAST_BYTES or not payload[0] & SEALED_BIT:
+        return payload
+    return bytes((payload[0] & _VERSION_MASK,)) + payload[1:-SEAL_BYTES]
+
+
 def open_seal(keys: KeyRing, payload: bytes) -> Opened | Refused:
     """Check the seal of one payload. Comparing takes the same time wherever a tag differs."""
     first = payload[0] if payload else 0
@@ -167,8 +177,6 @@ def open_seal(keys: KeyRing, payload: bytes) -> Opened | Refused:
     covered = payload[:-TAG_BYTES]
     if not hmac.compare_digest(tag(key, covered), payload[-TAG_BYTES:]):
         return Refused(SealFault.FORGED)
-    body_end = len(payload) - SEAL_BYTES
-    plain = bytes((first & _VERSION_MASK,)) + payload[1:body_end]
     (source,) = _SOURCE.unpack_from(payload, _SOURCE_AT)
-    (counter,) = COUNTER.unpack_from(payload, body_end)
-    return Opened(plain, source, counter)
+    (counter,) = COUNTER.unpack_from(payload, len(payload) - SEAL_BYTES)
+    return Opened(unsealed_form(payload), source, counter)

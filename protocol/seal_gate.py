@@ -32,8 +32,10 @@ from protocol.message import (
 from protocol.replay_window import ReplayWindow
 from protocol.seal import KeyRing, Refused, SealFault, open_seal
 
-_OBEYED_AGAIN: Final[frozenset[type[Any]]] = frozenset({Stop})
-"""What is obeyed however often it comes: an all-stop that was late is better than none."""
+_OBEYED_AGAIN: Final[frozenset[type[Any]]] = frozenset({Stop, RollCall})
+"""What is obeyed however often and late it comes. An all-stop: late is better than never. A roll
+call: it does nothing but ask, since only a newer epoch is adopted; and a console whose clock went
+back must be answered, or it would never learn of the epoch that it has to exceed."""
 
 _BEFORE_PROOF_AT_MODULE: Final[frozenset[type[Any]]] = frozenset({Stop, RollCall})
 _BEFORE_PROOF_AT_CONSOLE: Final[frozenset[type[Any]]] = frozenset({Presence})

@@ -50,7 +50,8 @@ class SimOptions:
     """What a simulated fleet is made of and how its radio behaves.
 
     ``loss``, ``damage``, ``repeat`` and ``reorder`` are probabilities a frame, each way;
-    ``modules`` None: as many as the fleet file has; ``fleet`` None: the practice fleet.
+    ``modules`` None: as many as the fleet file has; ``fleet`` None: the practice fleet;
+    ``keys`` None: frames are not sealed.
     """
 
     modules: int | None = None
@@ -64,6 +65,7 @@ class SimOptions:
     pace: float = 1.0
     fleet: Path | None = None
     fault: tuple[Fault, ...] = ()
+    keys: Path | None = None
 
     @classmethod
     def from_texts(
@@ -210,6 +212,7 @@ OPTIONS: Final[dict[str, Option]] = {
             f"KIND:MODULE, separated by commas, is needed, KIND one of {_FAULT_NAMES}",
             "faults as KIND:MODULE, separated by commas",
         ),
+        Option("keys", _path, "the name of a key file is needed", "key file of a sealed fleet"),
     )
 }
 """All options by name, in the order in which help shows them."""

@@ -16,10 +16,11 @@ from typing import Final
 from protocol.codes import EVERYONE_ADDRESS
 from protocol.errors import RemoteProtocolError
 from protocol.frame import Dropped, FrameDecoder, frame
-from protocol.message import Packet, decode, encode
+from protocol.message import HEADER, Packet, decode, encode
 from sim_link.fleet_file import load_fleet
 from sim_link.line import Line
 from sim_link.module import VirtualModule
+from sim_link.module_seal import ModuleSeal, load_keys
 from sim_link.options import SimOptions
 from sim_link.radio import Channel, Quality, Way
 from sim_link.tally import TallyEntry
@@ -46,6 +47,7 @@ class _Station:
     hears: Channel
     speaks: Channel
     decoder: FrameDecoder
+    seal: ModuleSeal | None
 
 
 class World:
@@ -61,6 +63,7 @@ class World:
         quality = Quality(
             options.loss, options.damage, options.repeat, options.reorder, options.delay_ms
         )
+        keys = None if options.keys is None else load_keys(options.keys)
         self.options = options
         self.counts = WorldCounts()
         self._stations = [
@@ -69,6 +72,7 @@ class World:
                 Channel(quality, options.seed, place, Way.TO_MODULE),
                 Channel(quality, options.seed, place, Way.TO_CONSOLE),
                 FrameDecoder(),
+                None if keys is None else ModuleSeal(keys),
             )
             for place, spec in enumerate(fleet.modules)
         ]
@@ -151,12 +155,11 @@ class World:
 
     def _addressed(self, payload: bytes) -> range | tuple[int, ...]:
         """Return the modules to whose radio a frame matters: one, all, or those that share its
-        address by mistake."""
-        try:
-            destination = decode(payload).destination
-        except RemoteProtocolError:
+        address by mistake. A bridge reads the header only, sealed or not."""
+        if len(payload) < HEADER.size:
             self.counts.dropped_at_bridge += 1
             return ()
+        destination = HEADER.unpack_from(payload)[2]
         if destination == EVERYONE_ADDRESS:
             return range(len(self._stations))
         return self._by_address.get(destination, ())
@@ -174,7 +177,7 @@ class World:
             return
         station = self._stations[place]
         for found in station.decoder.feed(data):
-            packet = None if isinstance(found, Dropped) else _decoded(found)
+            packet = None if isinstance(found, Dropped) else _admitted(station, found)
             if packet is None:
                 self.counts.dropped_at_modules += 1
             else:
@@ -191,15 +194,20 @@ class World:
 
     def _put_on_air(self, station: _Station, packets: list[Packet]) -> None:
         for packet in packets:
-            self._send(station.speaks, frame(encode(packet)), _TO_CONSOLE)
+            payload = encode(packet)
+            if station.seal is not None:
+                payload = station.seal.seal(payload, station.module.boot)
+            self._send(station.speaks, frame(payload), _TO_CONSOLE)
 
     def _note_wake(self, place: int) -> None:
         heapq.heappush(self._wakes, (self._stations[place].module.next_wake_ns, place))
 
 
-def _decoded(payload: bytes) -> Packet | None:
-    """Decode what a module received; what it does not understand counts as dropped."""
+def _admitted(station: _Station, payload: bytes) -> Packet | None:
+    """Decode what a module received; what it does not understand or obey counts as dropped."""
     try:
+        if station.seal is not None:
+            return station.seal.admit(payload, station.module.boot)
         return decode(payload)
     except RemoteProtocolError:
         return None

@@ -34,7 +34,8 @@ class BytesOut:
 
 @dataclass(frozen=True, slots=True)
 class SessionOpened:
-    """First record of a session. ``utc`` is ISO 8601; ``pace`` is fleet seconds per second."""
+    """First record of a session. ``utc`` is ISO 8601; ``pace`` is fleet seconds per second;
+    ``sealed``: whether a fleet key was set."""
 
     t_ns: int
     utc: str
@@ -42,6 +43,7 @@ class SessionOpened:
     epoch: int
     pace: float
     program: str
+    sealed: bool = False
 
 
 @dataclass(frozen=True, slots=True)
@@ -62,6 +64,17 @@ class LinkChanged:
     url: str
     state: str
     detail: str
+
+
+@dataclass(frozen=True, slots=True)
+class FramesRefused:
+    """What the gate said of the next bytes from a link: which of the pieces that they complete
+    are not obeyed (counted from 0), and why. The key that it needed is in no record."""
+
+    t_ns: int
+    link: int
+    pieces: tuple[int, ...]
+    faults: tuple[str, ...]
 
 
 @dataclass(frozen=True, slots=True)
@@ -194,6 +207,7 @@ NoteRecord = (
     SessionOpened
     | SessionClosed
     | LinkChanged
+    | FramesRefused
     | EpochChosen
     | OrderGiven
     | OrderVoided
@@ -213,6 +227,7 @@ _NOTE_TYPES: Final[dict[str, type[Any]]] = {
         SessionOpened,
         SessionClosed,
         LinkChanged,
+        FramesRefused,
         EpochChosen,
         OrderGiven,
         OrderVoided,
@@ -251,6 +266,8 @@ def read_note(sort: str, t_ns: int, body: str) -> NoteRecord:
         values: dict[str, Any] = json.loads(body)
         if cls is OrderGiven:
             values["commands"] = tuple(PlannedCommand(**each) for each in values["commands"])
+        elif cls is FramesRefused:
+            values.update({name: tuple(values[name]) for name in ("pieces", "faults")})
         record: NoteRecord = cls(t_ns=t_ns, **values)
     except (KeyError, TypeError, ValueError) as error:
         known = [field.name for field in fields(_NOTE_TYPES[sort])] if sort in _NOTE_TYPES else []

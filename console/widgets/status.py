@@ -49,6 +49,7 @@ def path_parts(picture: Picture) -> Iterable[Part]:
         yield Part(f"! CONSOLE NOT ANSWERING for {picture.stale_s} s", Tone.ALERT)
     yield from _link_parts(view, picture.replay)
     yield _log_part(picture)
+    yield Part("sealed" if view.sealed else "", Tone.DIM, 2)
     yield Part("session closed" if view.closed else "", Tone.STRONG, 1)
     yield Part(f"session {view.opened_utc[:16].replace('T', ' ')} UTC", Tone.DIM, 2)
     yield Part(f"operator {picture.operator}" if picture.operator else "", Tone.DIM, 3)

@@ -241,10 +241,12 @@ def test_noise_on_the_line_is_dropped_and_the_next_frame_heard() -> None:
 def test_good_frames_that_mean_nothing_are_dropped() -> None:
     host = console(seed=7)
     host.world.write(frame(b"\x09\x01\xff\xff\x01\x00"), 0)  # another wire version
+    host.world.write(frame(b"\x01\x01\xff"), 0)  # too short for a header
     host.say(to_module(RollCall(EPOCH), 0x99))  # nobody's address
     host.run(100 * MS)
     assert host.present == {}
     assert host.world.counts.dropped_at_bridge == 1
+    assert host.world.counts.dropped_at_modules == 8  # a bridge reads no more than the header
 
 
 def test_damage_is_counted_where_it_is_noticed() -> None:

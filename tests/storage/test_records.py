@@ -68,8 +68,8 @@ def test_the_stored_form_of_a_session_is_what_old_logs_hold() -> None:
         '{"utc":"2026-03-02T08:00:00Z","operator":"Mira","epoch":1772438400,"pace":1.0,'
         '"program":"tumblewire 0.1.0"}'
     )
-    assert read_note("SessionOpened", 5_000_000_000, body) == OPENED
-    assert note_body(OPENED) == body
+    assert read_note("SessionOpened", 5_000_000_000, body) == OPENED  # before there was a seal
+    assert note_body(OPENED) == body[:-1] + ',"sealed":false}'
 
 
 def test_the_stored_form_of_a_correction_is_what_old_logs_hold() -> None:

@@ -49,6 +49,7 @@ ROW_TYPES: Final[tuple[type[Any], ...]] = get_args(Row)
 _INT64: Final = st.integers(-(2**63), 2**63 - 1)
 _VALUES: Final[dict[Any, st.SearchStrategy[Any]]] = {
     int: _INT64,
+    bool: st.booleans(),
     str: st.text(max_size=40),
     bytes: st.binary(max_size=80),
     float: st.floats(allow_nan=False, allow_infinity=False),

@@ -9,7 +9,9 @@ from collections.abc import Callable, Sequence
 from console.core import SessionCore
 from console.link import Outbox
 from console.orders import parse_order
+from console.sealing import ConsoleSeal
 from protocol.pacing import LinePacer
+from protocol.seal import KeyRing
 from sim_link.options import SimOptions
 from sim_link.tally import TallyEntry
 from sim_link.world import World
@@ -54,7 +56,13 @@ class MemoryLog:
 class VirtualSession:
     """One console and one simulated fleet, moved together by ``run_until``."""
 
-    def __init__(self, options: SimOptions | None = None, epoch: int = 1_000_000) -> None:
+    def __init__(
+        self,
+        options: SimOptions | None = None,
+        epoch: int = 1_000_000,
+        keys: KeyRing | None = None,
+    ) -> None:
+        self.keys = keys
         self.tally: list[TallyEntry] = []
         self.world = World(options or SimOptions(seed=11), self.tally.append)
         self.log = MemoryLog()
@@ -65,9 +73,11 @@ class VirtualSession:
     def reconnect(self, epoch: int) -> None:
         """A new console on the same fleet, as after a crash."""
         self.log = MemoryLog()
-        self.core = SessionCore([Outbox(LinePacer(921_600))], self.log, self._answer)
+        seal = None if self.keys is None else ConsoleSeal(self.keys, epoch, lambda opening: None)
+        self.core = SessionCore([Outbox(LinePacer(921_600))], self.log, self._answer, seal)
+        sealed = seal is not None
         self.core.note(
-            SessionOpened(self.now_ns, "2026-01-01T00:00:00Z", "Ida", epoch, 1.0, "test")
+            SessionOpened(self.now_ns, "2026-01-01T00:00:00Z", "Ida", epoch, 1.0, "test", sealed)
         )
         self.core.note(LinkChanged(self.now_ns, 0, "sim://", "open", ""))
 

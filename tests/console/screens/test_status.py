@@ -64,6 +64,11 @@ def test_lost_link_and_log_trouble_stand_side_by_side_in_80_columns() -> None:
     assert "! LOG NOT WRITING: disk full" in text
 
 
+def test_a_sealed_session_says_so() -> None:
+    assert "sealed" not in path(picture(fleet_view(*eight())), 150)
+    assert "sealed" in path(picture(fleet_view(*eight(), sealed=True)), 150)
+
+
 def test_without_its_link_a_fleet_is_not_called_well() -> None:
     lost = LinkView(0, "a", "lost", 1, 1, 0, 1, 1)
     assert "nothing wrong" in fleet(picture(fleet_view(*eight())))
