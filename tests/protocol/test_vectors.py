@@ -1,0 +1,193 @@
+"""vectors.json: every vector is run, and the file is what its independent writer writes."""
+
+import json
+import subprocess
+import sys
+from collections import Counter
+from collections.abc import Callable
+from pathlib import Path
+from typing import Any
+
+import pytest
+
+from protocol.codes import AnswerState, Code
+from protocol.command_memory import CommandMemory, Fresh
+from protocol.errors import RemoteProtocolError
+from protocol.frame import FrameDecoder, frame
+from protocol.message import LAYOUTS, Packet, Query, RollCall, decode, encode
+from protocol.seal import KeyRing, Opened, Refused, Sealer, open_seal
+from protocol.seal_gate import ModuleGate
+from sim_link.fleet_file import load_fleet
+from sim_link.module import VirtualModule
+from tests.support.independent import crc32c
+
+ROOT = Path(__file__).parents[2]
+DOCUMENT = json.loads((ROOT / "protocol/vectors.json").read_text())
+VECTORS: list[dict[str, Any]] = DOCUMENT["vectors"]
+KEYS = KeyRing({0: bytes.fromhex(DOCUMENT["key"])}, 0)
+
+
+def pieces(fed: list[Any]) -> list[dict[str, str]]:
+    return [
+        {"payload": piece.hex()} if isinstance(piece, bytes) else {"dropped": piece.reason.value}
+        for piece in fed
+    ]
+
+
+def run_check(vector: dict[str, Any]) -> None:
+    assert f"{crc32c(bytes.fromhex(vector['data'])):08x}" == vector["crc32c"]
+
+
+def run_frame(vector: dict[str, Any]) -> None:
+    data = bytes.fromhex(vector["bytes"])
+    assert pieces(FrameDecoder().feed(data)) == vector["pieces"]
+    decoder, found = FrameDecoder(), []
+    for byte in data:
+        found += decoder.feed(bytes((byte,)))
+    assert pieces(found) == vector["pieces"]
+    behind = FrameDecoder()
+    assert pieces([*behind.feed(data + b"\x07"), *behind.feed(b"")]) == vector["pieces"]
+
+
+def run_message(vector: dict[str, Any]) -> None:
+    payload = bytes.fromhex(vector["payload"])
+    assert frame(payload).hex() == vector["frame"]
+    packet = decode(payload)
+    assert type(packet.message).__name__ == vector["message"]
+    assert (packet.destination, packet.source) == (vector["destination"], vector["source"])
+    shown = {
+        name: value.rstrip(b"\0").hex() if isinstance(value, bytes) else value
+        for name, value in packet.message._asdict().items()
+    }
+    assert shown == vector["fields"]
+    assert encode(packet) == payload
+
+
+def run_no_message(vector: dict[str, Any]) -> None:
+    with pytest.raises(RemoteProtocolError):
+        decode(bytes.fromhex(vector["payload"]))
+
+
+def run_memory(vector: dict[str, Any]) -> None:
+    memory = CommandMemory(vector["boot"], vector["identity_bits"])
+    for step in vector["steps"]:
+        packet = decode(bytes.fromhex(step["in"]))
+        fresh, out = remembered(memory, packet.message)
+        assert fresh == step["fresh"], step
+        if step["out"] is not None:
+            assert encode(Packet(packet.source, packet.destination, out)).hex() == step["out"]
+
+
+def remembered(memory: CommandMemory, message: Any) -> tuple[bool, Any]:
+    if isinstance(message, RollCall):
+        memory.roll_call(message.epoch)
+        return False, None
+    if isinstance(message, Query):
+        return False, memory.query(message)
+    verdict = memory.judge(message)
+    if not isinstance(verdict, Fresh):
+        return False, verdict.message
+    answer = memory.answer(message.number, AnswerState.FINISHED)
+    memory.remember(message.number, answer)
+    return True, answer
+
+
+def run_stop(vector: dict[str, Any]) -> None:
+    module = VirtualModule(load_fleet(None).modules[0], 1)
+    for t_ns, step in enumerate(vector["steps"]):
+        module.receive(decode(bytes.fromhex(step["in"])), t_ns)
+        assert (module.stop_number, int(module.latched)) == (step["stop_number"], step["latched"])
+
+
+def run_seal(vector: dict[str, Any]) -> None:
+    sealer = Sealer(KEYS, vector["opening"])
+    payload = bytes.fromhex(vector["payload"])
+    assert [sealer.seal(payload).hex() for _ in vector["sealed"]] == vector["sealed"]
+
+
+def run_open(vector: dict[str, Any]) -> None:
+    opened = open_seal(KEYS, bytes.fromhex(vector["payload"]))
+    verdict = "opened" if isinstance(opened, Opened) else opened.fault.value
+    assert verdict == vector["verdict"]
+
+
+def run_gate(vector: dict[str, Any]) -> None:
+    gate = ModuleGate(KEYS, vector["boot"])
+    for step in vector["steps"]:
+        verdict = gate.admit(bytes.fromhex(step["in"]))
+        told = verdict.fault.value if isinstance(verdict, Refused) else "obeyed"
+        assert told == step["verdict"]
+
+
+RUNNERS: dict[str, Callable[[dict[str, Any]], None]] = {
+    "check": run_check,
+    "frame": run_frame,
+    "message": run_message,
+    "no message": run_no_message,
+    "memory": run_memory,
+    "stop": run_stop,
+    "seal": run_seal,
+    "open": run_open,
+    "gate": run_gate,
+}
+
+
+@pytest.mark.parametrize("vector", VECTORS, ids=lambda vector: vector["id"])
+def test_vector(vector: dict[str, Any]) -> None:
+    RUNNERS[vector["kind"]](vector)
+
+
+def test_the_file_is_what_its_writer_writes() -> None:
+    written = subprocess.run(
+        [sys.executable, "-m", "tests.support.make_vectors"],
+        capture_output=True,
+        text=True,
+        check=True,
+        cwd=ROOT,
+    )
+    assert json.loads(written.stdout) == DOCUMENT
+
+
+def test_its_writer_takes_nothing_from_the_project() -> None:
+    for name in ("make_vectors", "independent"):
+        text = (ROOT / f"tests/support/{name}.py").read_text()
+        assert "from protocol" not in text
+        assert "import protocol" not in text
+
+
+def test_each_kind_is_explained_and_each_vector_says_where_it_comes_from() -> None:
+    kinds = Counter(vector["kind"] for vector in VECTORS)
+    assert set(kinds) == set(RUNNERS) == set(DOCUMENT["format"])
+    assert all(vector["origin"].startswith(("standard", "by hand")) for vector in VECTORS)
+    assert len({vector["id"] for vector in VECTORS}) == len(VECTORS)
+
+
+def test_every_message_is_there_twice() -> None:
+    names = Counter(vector["message"] for vector in VECTORS if vector["kind"] == "message")
+    assert names == {LAYOUTS[code].message_type.__name__: 2 for code in Code}
+
+
+def test_every_rule_named_is_a_heading_of_the_document() -> None:
+    headings = {
+        line.lstrip("# ").strip()
+        for line in (ROOT / "protocol/WIRE.md").read_text().splitlines()
+        if line.startswith("#")
+    }
+    assert {vector["rule"] for vector in VECTORS} <= headings
+
+
+@pytest.mark.parametrize("kind", ["frame", "message", "seal", "check"])
+def test_a_wrong_vector_fails(kind: str) -> None:
+    """The runners can fail: one digit of what is expected is changed."""
+    vector = next(each for each in VECTORS if each["kind"] == kind)
+    text = json.dumps(vector)
+    expected = {
+        "frame": vector.get("pieces", [{}])[0].get("payload"),
+        "message": vector.get("frame"),
+        "seal": (vector.get("sealed") or [None])[0],
+        "check": vector.get("crc32c"),
+    }[kind]
+    assert expected
+    wrong = expected[:-1] + ("0" if expected[-1] != "0" else "1")
+    with pytest.raises(AssertionError):
+        RUNNERS[kind](json.loads(text.replace(expected, wrong)))
