@@ -75,8 +75,12 @@ class Recorder(Protocol):
 
 
 class SessionCore:
-    """One session over ``outboxes``, one a link. ``committed(given, why_not)`` is what the log's
-    answer must reach; the engine brings it over to its own thread first."""
+    """One session over ``outboxes``, one a link.
+
+    ``answer(given, why_not)`` is called on the log's thread once the log has answered on an
+    order; whoever runs the core brings it over to its own thread and calls ``committed``.
+    ``seal`` None: frames are not sealed.
+    """
 
     def __init__(
         self,
