@@ -78,13 +78,13 @@ def test_random_messages_are_byte_for_byte_the_same(check: Path) -> None:
     rng = random.Random(1)
     layouts = list(LAYOUTS.values())
     steps = []
-    for _ in range(20_000):
+    for _ in range(100_000):
         layout = rng.choice(layouts)
         message = layout.make(layout.body.unpack(rng.randbytes(layout.body.size)))
         payload = encode(Packet(rng.randrange(65_536), rng.randrange(65_536), message))
         framed = frame(payload).hex()
         steps += [f"write {payload.hex()} {framed}", f"frame {framed} {payload.hex()}"]
-    assert run(check, steps)[:2] == (0, "40000 passed, 0 failed")
+    assert run(check, steps)[:2] == (0, "200000 passed, 0 failed")
 
 
 def test_damaged_streams_give_the_same_pieces(check: Path) -> None:
