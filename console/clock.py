@@ -34,3 +34,13 @@ def utc_now() -> str:
 def utc_seconds() -> int:
     """Whole seconds since 1970: the first choice for a console epoch."""
     return int(time.time())
+
+
+def next_utc_second() -> int:
+    """Wait until the next whole second since 1970 begins, and return it.
+
+    Of two calls one after the other on one computer, the second never gets the same.
+    """
+    second = utc_seconds() + 1
+    time.sleep(max(0.0, second - time.time()))
+    return second

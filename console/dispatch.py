@@ -24,6 +24,8 @@ APPEAR_WAIT_NS: Final = 10_000_000_000
 """How long a sheet waits for all its modules to answer the roll."""
 BLOCKED_WAIT_NS: Final = 15_000_000_000
 """How long a trial waits for an interlock to open before it ends as refused."""
+LOG_WAIT_NS: Final = 10_000_000_000
+"""How long a sheet waits for a log that does not write before it ends."""
 RETRY_NS: Final = 200_000_000
 CONFIRM_WAIT_NS: Final = 5_000_000_000
 
@@ -35,6 +37,7 @@ class Conductor(Protocol):
     def now_ns(self) -> int: ...
     def real_s(self, fleet_ns: int) -> float: ...
     def link_open(self) -> bool: ...
+    def log_trouble(self) -> str: ...
     def give(
         self, order: Order, source: str, trial: int = 0, on_end: OnEnd | None = None
     ) -> OrderGiven: ...
@@ -67,7 +70,8 @@ class Lane:
 
 @dataclass(slots=True)
 class Tally:
-    """What became of a sheet so far; ``run --json`` prints it."""
+    """What became of a sheet so far; ``run --json`` prints it. ``stopped`` says why it ended
+    early, ``lost`` that it was for want of the link or the log."""
 
     planned: int
     started: int = 0
@@ -76,6 +80,7 @@ class Tally:
     resends: int = 0
     repeats_ignored: int = 0
     stopped: str | None = None
+    lost: bool = False
 
     def count(self, view: CommandView) -> None:
         """Add one ended command."""
@@ -122,10 +127,11 @@ class SheetRun:
         for trial in trials:
             self._lanes[trial.module].trials.append(trial)
         self._by_command: dict[int, Lane] = {}
+        self._log_bad_since_ns: int | None = None
         self.tally = Tally(planned=len(trials))
 
     def run(self) -> Tally:
-        """Run to the end, or until all-stop or a lost link ends it.
+        """Run to the end, or until all-stop, a lost link or a lost log ends it.
 
         Raises InputError where a module of the sheet does not answer.
         """
@@ -215,6 +221,9 @@ class SheetRun:
     def _blocked(self, lane: Lane, trial: Trial | None, now_ns: int, why: str) -> None:
         """An interlock stands in the way: try again for a while, then end the trial."""
         lane.ready_ns = now_ns + RETRY_NS
+        if self._engine.log_trouble():
+            lane.blocked_since_ns = None  # the whole sheet waits for the log, or ends (_watch)
+            return
         if lane.blocked_since_ns is None:
             lane.blocked_since_ns = now_ns
         if now_ns - lane.blocked_since_ns < BLOCKED_WAIT_NS:
@@ -270,7 +279,18 @@ class SheetRun:
         if view.stop.in_force:
             self.tally.stopped = f"all-stop {view.stop.stop_number}"
         elif not self._engine.link_open():
-            self.tally.stopped = "link lost"
+            self.tally.stopped, self.tally.lost = "link lost", True
+        elif trouble := self._lasting_log_trouble():
+            self.tally.stopped, self.tally.lost = f"log lost: {trouble}", True
+
+    def _lasting_log_trouble(self) -> str:
+        """Why the log has not written for so long that the sheet must end, or an empty text."""
+        trouble = self._engine.log_trouble()
+        now_ns = self._engine.now_ns()
+        if not trouble or self._log_bad_since_ns is None:
+            self._log_bad_since_ns = now_ns if trouble else None
+            return ""
+        return trouble if now_ns - self._log_bad_since_ns >= LOG_WAIT_NS else ""
 
     # -- after -----------------------------------------------------------------------------
 

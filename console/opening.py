@@ -10,7 +10,7 @@ from importlib.metadata import PackageNotFoundError, version
 from pathlib import Path
 from typing import Final
 
-from console.clock import SessionClock, utc_now, utc_seconds
+from console.clock import SessionClock, next_utc_second, utc_now, utc_seconds
 from console.engine import Engine
 from console.errors import InputError, LogError
 from console.key_file import OpeningStore, default_opening_path, load_keys
@@ -76,7 +76,7 @@ def _start(ports: Sequence[Port], options: SessionOptions, keys: KeyRing | None)
     from storage.writer import LogWriter
 
     openings = OpeningStore(default_opening_path())
-    epoch = utc_seconds() if keys is None else max(utc_seconds(), openings.last() + 1)
+    epoch = _own_second(options.links) if keys is None else max(utc_seconds(), openings.last() + 1)
     seal = None if keys is None else ConsoleSeal(keys, epoch, openings.remember)
     pace = _common_pace(ports, options.pace)
     clock = SessionClock(pace)
@@ -96,6 +96,18 @@ def _start(ports: Sequence[Port], options: SessionOptions, keys: KeyRing | None)
     engine = Engine(ports, log, clock, opened, seal)
     engine.start()
     return engine
+
+
+def _own_second(links: Sequence[str]) -> int:
+    """An epoch that no session before had: modules would take its first commands for repeats
+    of the other's, and answer them from memory without moving. A fleet made with the session
+    remembers none."""
+    return utc_seconds() if all(map(is_simulated, links)) else next_utc_second()
+
+
+def is_simulated(link: str) -> bool:
+    """Whether a link leads to a fleet that is made as it is opened."""
+    return link.startswith("sim://")
 
 
 def _common_pace(ports: Sequence[Port], given: float | None) -> float:

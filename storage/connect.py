@@ -20,6 +20,7 @@ Connect = Callable[[Path, str], sqlite3.Connection]
 
 _SENTENCES: Final[dict[int, str]] = {
     sqlite3.SQLITE_FULL: "the disk that holds {path} is full; free some space",
+    sqlite3.SQLITE_IOERR_SHMSIZE: "the disk that holds {path} is full; free some space",
     sqlite3.SQLITE_READONLY: "{path} is read-only; allow writing, or choose another file",
     sqlite3.SQLITE_CANTOPEN: "{path} cannot be opened; see that its folder may be written",
     sqlite3.SQLITE_PERM: "{path} may not be opened; see its permissions",
@@ -30,21 +31,33 @@ _SENTENCES: Final[dict[int, str]] = {
     sqlite3.SQLITE_IOERR: "{path}: reading or writing failed ({error}); look at the disk",
 }
 
-_NO_ROOM_BESIDE: Final = frozenset({sqlite3.SQLITE_CANTOPEN, sqlite3.SQLITE_READONLY})
-"""What reading fails with where the shared-memory file cannot be made."""
+_NO_ROOM_BESIDE: Final = frozenset(
+    {sqlite3.SQLITE_CANTOPEN, sqlite3.SQLITE_READONLY, sqlite3.SQLITE_IOERR_SHMSIZE}
+)
+"""What reading fails with where the shared-memory file cannot be made, the last on a full disk."""
 
 
-def primary_code(error: sqlite3.Error) -> int:
-    """Return SQLite's primary result code of an error, or 0 where the module raised it itself."""
-    return getattr(error, "sqlite_errorcode", 0) & 0xFF
+def primary_code(error: BaseException) -> int:
+    """Return SQLite's primary result code of an error, or 0 where it has none."""
+    return _extended_code(error) & 0xFF
+
+
+def _extended_code(error: BaseException) -> int:
+    return getattr(error, "sqlite_errorcode", 0)
 
 
 def explain(error: sqlite3.Error | OSError, path: Path) -> str:
     """Say in one line what an error means for the log at ``path`` and what to do."""
     if isinstance(error, OSError):
         return f"{path} cannot be used: {error.strerror or error}"
-    sentence = _SENTENCES.get(primary_code(error), "{path} does not work: {error}")
+    unknown = "{path} does not work: {error}"
+    sentence = _SENTENCES.get(_extended_code(error)) or _SENTENCES.get(primary_code(error), unknown)
     return sentence.format(path=path, error=" ".join(str(error).split()))
+
+
+def read_only(path: Path) -> str:
+    """Say in one line that the log at ``path`` may not be written."""
+    return _SENTENCES[sqlite3.SQLITE_READONLY].format(path=path)
 
 
 def connect_to_write(path: Path, mode: str) -> sqlite3.Connection:
@@ -66,14 +79,13 @@ def connect_to_write(path: Path, mode: str) -> sqlite3.Connection:
 def connect_to_read(path: Path) -> sqlite3.Connection:
     """Open a connection that cannot write. Raises LogUnavailableError with one line.
 
-    A log in WAL mode on a medium that cannot be written has nowhere to put its shared-memory
-    file. Where no WAL lies beside it, nobody is writing it, and it is read as it stands.
+    A log in WAL mode on a medium that cannot be written, or that is full, has nowhere to put its
+    shared-memory file. Where nothing lies in a WAL beside it, it is read as it stands.
     """
     if not path.is_file():
         raise LogUnavailableError(f"there is no log at {path}")
     path = path.resolve()  # the WAL lies beside the file itself, not beside a link to it
-    wal = path.with_name(path.name + "-wal")
-    attempts = ["mode=ro"] if wal.exists() else ["mode=ro", "mode=ro&immutable=1"]
+    attempts = ["mode=ro"] if _in_wal(path) else ["mode=ro", "mode=ro&immutable=1"]
     for attempt in attempts:
         connection = sqlite3.connect(
             f"{path.as_uri()}?{attempt}",
@@ -86,8 +98,17 @@ def connect_to_read(path: Path) -> sqlite3.Connection:
             connection.execute("SELECT count(*) FROM sqlite_master").fetchone()
         except sqlite3.Error as error:
             connection.close()
-            if primary_code(error) not in _NO_ROOM_BESIDE or attempt == attempts[-1]:
+            codes = {primary_code(error), _extended_code(error)}
+            if not codes & _NO_ROOM_BESIDE or attempt == attempts[-1]:
                 raise LogUnavailableError(explain(error, path)) from error
         else:
             return connection
     raise LogUnavailableError(f"{path} cannot be opened")
+
+
+def _in_wal(path: Path) -> bool:
+    """Whether a WAL with anything in it lies beside the log."""
+    try:
+        return path.with_name(path.name + "-wal").stat().st_size > 0
+    except FileNotFoundError:
+        return False

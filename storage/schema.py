@@ -5,12 +5,14 @@ and the refusal of files that are not ours or too new. Knows no records and no r
 sqlite-utils takes 0.3 s to import, so it is imported only where a migration is pending.
 """
 
+import os
 import sqlite3
 import time
+from contextlib import suppress
 from pathlib import Path
 from typing import TYPE_CHECKING, Final
 
-from storage.connect import BUSY_S, Connect, connect_to_write, explain, primary_code
+from storage.connect import BUSY_S, Connect, connect_to_write, explain, primary_code, read_only
 from storage.errors import LogUnavailableError
 from storage.tables import FIRST_TABLES
 from storage.views import FIRST_VIEWS
@@ -33,8 +35,12 @@ def open_log(path: Path, connect: Connect = connect_to_write) -> sqlite3.Connect
     """Open the log for writing: make folder and file where missing, migrate, set WAL mode.
 
     Raises LogUnavailableError with one line where that cannot be; another program's file is
-    left as it was.
+    left as it was, and none is left that was not there before.
     """
+    made = not path.exists()
+    if not made and not os.access(path, os.W_OK):
+        # SQLite would open it for reading only, and leave a WAL and an index beside it.
+        raise LogUnavailableError(read_only(path))
     try:
         path.parent.mkdir(parents=True, exist_ok=True)
         connection = connect(path, "rwc")
@@ -42,13 +48,25 @@ def open_log(path: Path, connect: Connect = connect_to_write) -> sqlite3.Connect
         raise LogUnavailableError(explain(error, path)) from error
     try:
         _prepare(connection, path)
-    except sqlite3.Error as error:
+    except BaseException as error:
         connection.close()
-        raise LogUnavailableError(explain(error, path)) from error
-    except BaseException:
-        connection.close()
+        if made and primary_code(error) not in _OTHERS_WRITE:
+            _remove_empty(path)
+        if isinstance(error, sqlite3.Error):
+            raise LogUnavailableError(explain(error, path)) from error
         raise
     return connection
+
+
+_OTHERS_WRITE: Final = frozenset({sqlite3.SQLITE_BUSY, sqlite3.SQLITE_LOCKED})
+"""Failures that another process's writing is the reason of: an empty file may be its."""
+
+
+def _remove_empty(path: Path) -> None:
+    """Take away the empty file that a failed first opening leaves, say on a full disk."""
+    with suppress(OSError):
+        if path.stat().st_size == 0:
+            path.unlink()
 
 
 def check_ours(connection: sqlite3.Connection, path: Path) -> bool:

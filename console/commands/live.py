@@ -9,7 +9,13 @@ from pathlib import Path
 from console.commands.stopping import SCREEN_SIGNALS, await_confirmation, stop_on_signal
 from console.engine import Engine
 from console.errors import InputError, LogError
-from console.opening import PRACTICE_LINK, SessionOptions, open_session, operator_name
+from console.opening import (
+    PRACTICE_LINK,
+    SessionOptions,
+    is_simulated,
+    open_session,
+    operator_name,
+)
 from console.orders import complete
 from console.paths import default_log_path
 
@@ -27,7 +33,7 @@ def run_live(options: SessionOptions) -> int:
         app = FleetApp(
             engine,
             operator=operator_name(options.operator),
-            banner="SIMULATED" if _all_simulated(options) else "",
+            banner="SIMULATED" if all(map(is_simulated, options.links)) else "",
             controls=None,
             completions=lambda text: _complete(engine, text),
         )
@@ -50,10 +56,6 @@ def run_live(options: SessionOptions) -> int:
 def practice_options(links: tuple[str, ...]) -> tuple[str, ...]:
     """The links as given, or the practice fleet where none is."""
     return links or (PRACTICE_LINK,)
-
-
-def _all_simulated(options: SessionOptions) -> bool:
-    return all(link.startswith("sim://") for link in options.links)
 
 
 def _complete(engine: Engine, text: str) -> list[str]:

@@ -35,9 +35,9 @@ def run_sheet(sheet_path: Path, options: SessionOptions, as_json: bool) -> int:
             if tally.stopped is not None and engine.view().stop.in_force:
                 await_confirmation(engine)
         simulated = engine.view().simulated
-        trouble = engine.log_trouble()
     finally:
         engine.close()
+    trouble = engine.log_trouble()  # closing may have mended it, or found it
     answer = _document(engine.session, sheet_path.name, tally, simulated)
     if as_json:
         print_json(answer)
@@ -46,13 +46,10 @@ def run_sheet(sheet_path: Path, options: SessionOptions, as_json: bool) -> int:
     if trouble:
         say(f"tumblewire: the log lost something: {trouble}")
         return 3
-    return _status(tally)
-
-
-def _status(tally: Tally) -> int:
-    if tally.stopped is None:
-        return 0
-    return 3 if tally.stopped == "link lost" else 1
+    if tally.lost:
+        say(f"tumblewire: {tally.stopped}")
+        return 3
+    return 0 if tally.stopped is None else 1
 
 
 @contextmanager

@@ -1,8 +1,9 @@
 """The session's clock and its pace."""
 
+import time
 from datetime import UTC, datetime, timedelta
 
-from console.clock import SessionClock, utc_now, utc_seconds
+from console.clock import SessionClock, next_utc_second, utc_now, utc_seconds
 
 
 class FakeSource:
@@ -38,3 +39,9 @@ def test_utc_is_now_and_says_so() -> None:
     assert told.utcoffset() == timedelta(0)
     assert abs(datetime.now(UTC) - told) < timedelta(seconds=5)
     assert abs(utc_seconds() - told.timestamp()) < 5
+
+
+def test_the_next_second_is_new_to_each_caller() -> None:
+    first = next_utc_second()
+    assert time.time() >= first
+    assert next_utc_second() > first

@@ -6,7 +6,7 @@ from dataclasses import replace
 import pytest
 
 from console.core import OnEnd
-from console.dispatch import BLOCKED_WAIT_NS, SheetRun, TrialEnd, faces_away
+from console.dispatch import BLOCKED_WAIT_NS, LOG_WAIT_NS, SheetRun, TrialEnd, faces_away
 from console.errors import InputError
 from console.orders import Order
 from console.sheet import parse_sheet, plan
@@ -35,6 +35,7 @@ class ScriptedEngine:
         self.time_ns = 0
         self.given: list[tuple[Order, int]] = []
         self.block = ""
+        self.trouble = ""
         self.open = True
         self.hold = False
         self.in_hand: list[Callable[[], None]] = []
@@ -52,6 +53,9 @@ class ScriptedEngine:
 
     def link_open(self) -> bool:
         return self.open
+
+    def log_trouble(self) -> str:
+        return self.trouble
 
     def give(
         self, order: Order, source: str, trial: int = 0, on_end: OnEnd | None = None
@@ -228,3 +232,29 @@ def test_a_module_that_does_not_answer_is_named() -> None:
     engine.fleet = fleet_view(module(1, "alder"))
     with pytest.raises(InputError, match=r"birch did not answer the roll; alder did"):
         run(engine)
+
+
+def test_a_log_that_stays_in_trouble_ends_the_sheet_and_uses_up_no_trial() -> None:
+    engine = ScriptedEngine(always(Outcome.LANDED))
+    engine.block = engine.trouble = "the disk is full"
+    sheet_run, ends = run(engine)
+    assert sheet_run.tally.stopped == "log lost: the disk is full"
+    assert sheet_run.tally.lost
+    assert ends == []
+    assert LOG_WAIT_NS <= engine.time_ns < 2 * LOG_WAIT_NS
+
+
+def test_a_log_that_writes_again_in_time_only_holds_the_sheet_up() -> None:
+    engine = ScriptedEngine(always(Outcome.LANDED))
+    engine.block = engine.trouble = "the disk is full"
+    real_s = engine.real_s
+
+    def mended(fleet_ns: int) -> float:
+        if engine.time_ns > LOG_WAIT_NS // 2:
+            engine.block = engine.trouble = ""
+        return real_s(fleet_ns)
+
+    engine.real_s = mended  # type: ignore[method-assign]
+    sheet_run, _ = run(engine)
+    assert sheet_run.tally.stopped is None
+    assert sheet_run.tally.ended == {"landed": 8}

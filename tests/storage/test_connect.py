@@ -25,6 +25,7 @@ def error_with(code: int, text: str = "it\nfailed") -> sqlite3.OperationalError:
     ("code", "word"),
     [
         (sqlite3.SQLITE_FULL, "full"),
+        (sqlite3.SQLITE_IOERR_SHMSIZE, "full"),
         (sqlite3.SQLITE_READONLY, "read-only"),
         (sqlite3.SQLITE_READONLY | 5 << 8, "read-only"),
         (sqlite3.SQLITE_CANTOPEN, "cannot be opened"),

@@ -8,6 +8,7 @@ from typing import Any
 
 import pytest
 
+from storage.connect import connect_to_write
 from storage.errors import LogUnavailableError
 from storage.inserts import columns_of
 from storage.rows import TABLES
@@ -208,6 +209,24 @@ def test_a_migration_that_fails_leaves_nothing(
     monkeypatch.undo()
     open_log(path).close()
     assert ask(path, "SELECT count(*) FROM sessions") == [(0,)]
+
+
+def test_a_disk_that_is_full_at_once_leaves_no_file(tmp_path: Path) -> None:
+    """SQLite itself answers SQLITE_FULL where a file may have no more pages."""
+
+    def full(path: Path, mode: str) -> sqlite3.Connection:
+        connection = connect_to_write(path, mode)
+        connection.execute("PRAGMA max_page_count = 1")
+        return connection
+
+    path = tmp_path / "fleet.db"
+    with pytest.raises(LogUnavailableError, match="full"):
+        open_log(path, full)
+    assert list(tmp_path.iterdir()) == []
+    path.touch()  # one that was there before stays
+    with pytest.raises(LogUnavailableError, match="full"):
+        open_log(path, full)
+    assert list(tmp_path.iterdir()) == [path]
 
 
 def test_a_folder_is_no_log(tmp_path: Path) -> None:

@@ -1,5 +1,6 @@
 """The real program in processes of its own: run, served fleets, and answers from the log."""
 
+import ctypes
 import json
 import os
 import signal
@@ -85,6 +86,26 @@ def served(folder: Path, *options: str, tcp: bool = False, pace: int = PACE) -> 
         except subprocess.TimeoutExpired:
             process.kill()
             process.communicate()
+
+
+_PR_CAPBSET_DROP = 24
+_CAP_DAC_OVERRIDE, _CAP_DAC_READ_SEARCH = 1, 2
+
+
+def as_ordinary_user() -> Callable[[], None] | None:
+    """For ``preexec_fn``: give up root's right to pass over files' permissions; None where
+    nobody is root. Numbers are those of Linux's prctl(2) and capabilities(7): what is not in the
+    bounding set is not gained by the exec that follows."""
+    if os.geteuid() != 0:
+        return None
+    libc = ctypes.CDLL(None, use_errno=True)
+
+    def give_up() -> None:
+        for capability in (_CAP_DAC_OVERRIDE, _CAP_DAC_READ_SEARCH):
+            if libc.prctl(_PR_CAPBSET_DROP, capability, 0, 0, 0):
+                raise OSError(ctypes.get_errno(), "prctl")
+
+    return give_up
 
 
 def ask(log: Path, question: str, *values: Any) -> list[tuple[Any, ...]]:
