@@ -19,8 +19,9 @@ from protocol.codes import AnswerState, Reason, identity_bits
 from protocol.errors import LocalProtocolError
 from protocol.message import Answer, Command, Facts, Query
 
-REMEMBERED_REPLIES: Final = 16
-"""The fewest replies that a module must keep."""
+REMEMBERED_REPLIES: Final = 8
+"""The fewest replies that a module must keep: one for the command in hand, and for as many that
+overtake it as a person gives in a hurry. A small module has no memory for more."""
 
 _NUMBERS: Final = 1 << 16
 _HALF: Final = 1 << 15
@@ -70,8 +71,9 @@ class CommandMemory:
         self._newest: int | None = None
         self._replies: dict[int, Answer | Facts] = {}
 
-    def roll_call(self, epoch: int) -> bool:
-        """Hear a console's epoch; adopt it if it is newer, emptying the memory.
+    def adopt(self, epoch: int) -> bool:
+        """Follow a console's epoch if it is newer, emptying the memory. Whose epoch may be
+        adopted is allegiance.py's.
 
         Plain comparison: epochs are seconds, do not wrap within the format's life, and an equal
         one is the console that the module follows already. Returns True where adopted.
@@ -83,9 +85,15 @@ class CommandMemory:
         self._replies.clear()
         return True
 
-    def judge(self, command: Command) -> Fresh | Reply:
-        """Say what to do with a command that came in. Takes the number if it is fresh."""
+    def judge(self, command: Command, owned: bool = False) -> Fresh | Reply:
+        """Say what to do with a command that came in. Takes the number if it is fresh.
+
+        ``owned``: the console that is followed still owns the module, so that a command of
+        another epoch is refused for that.
+        """
         reason = self._envelope_fault(command)
+        if owned and reason is Reason.OTHER_EPOCH:
+            reason = Reason.OWNED
         if reason is not Reason.NONE:
             return Reply(_about(command, AnswerState.REFUSED, reason), repeat=False)
         remembered = self._replies.get(command.number)

@@ -20,8 +20,8 @@ accepted               CALLING, RECALLED: to RUNNING; ASKING: the same, but not
 finished, cut          everywhere but WAITING: end finished or cut
 refused                CALLING, RECALLED: end refused
 number passed          CALLING, RECALLED: end refused; RUNNING, ASKING: unseen
-other boot or epoch    CALLING: end refused if only one copy was sent, else
-                       unseen; RUNNING, ASKING, RECALLED: end unseen
+other boot, epoch or   CALLING: end refused if only one copy was sent, else
+owner                  unseen; RUNNING, ASKING, RECALLED: end unseen
 unknown                ASKING: end unseen; RECALLED: end cut
 restarted              everywhere: end unseen
 withdrawn              WAITING: end cut; CALLING: to RECALLED
@@ -64,7 +64,7 @@ class Event(Enum):
     REFUSED = auto()
     PASSED = auto()
     DISOWNED = auto()
-    """The module has no memory of the command's time: another boot, another epoch."""
+    """The module has no memory of the command's time: another boot, another epoch or owner."""
     UNKNOWN = auto()
     RESTARTED = auto()
     WITHDRAWN = auto()
@@ -135,6 +135,7 @@ _BY_STATE: Final[dict[int, Event]] = {
 _BY_STATE_AND_REASON: Final[dict[tuple[int, int], Event]] = {
     (AnswerState.REFUSED, Reason.OTHER_BOOT): Event.DISOWNED,
     (AnswerState.REFUSED, Reason.OTHER_EPOCH): Event.DISOWNED,
+    (AnswerState.REFUSED, Reason.OWNED): Event.DISOWNED,
     (AnswerState.REFUSED, Reason.NUMBER_PASSED): Event.PASSED,
     (AnswerState.UNKNOWN, Reason.OTHER_BOOT): Event.DISOWNED,
     (AnswerState.UNKNOWN, Reason.OTHER_EPOCH): Event.DISOWNED,

@@ -25,6 +25,8 @@ COUNTER: Final = struct.Struct("<Q")
 SEAL_BYTES: Final = COUNTER.size + TAG_BYTES
 SLOTS: Final = 8
 SEALED_BIT: Final = 0x80
+OPENING_SHIFT: Final = 32
+"""The upper half of a counter is the opening of its sender."""
 MAX_OPENING: Final = (1 << 32) - 1
 MAX_COUNT: Final = (1 << 32) - 1
 
@@ -112,7 +114,7 @@ class Sealer:
             raise LocalProtocolError("the counters of this opening are used up; open anew")
         self._count += 1
         slot = self._keys.sending_slot
-        counter = COUNTER.pack(self._opening << 32 | self._count)
+        counter = COUNTER.pack(self._opening << OPENING_SHIFT | self._count)
         first = bytes((WIRE_VERSION | slot << _SLOT_SHIFT | SEALED_BIT,))
         covered = first + payload[1:] + counter
         return covered + tag(self._keys.key(slot) or b"", covered)
@@ -128,6 +130,7 @@ class SealFault(StrEnum):
     REPEATED = "repeated"
     TOO_OLD = "too old"
     NOT_FRESH = "not fresh"
+    OTHER_OPENING = "of another console"
 
 
 @dataclass(frozen=True, slots=True)

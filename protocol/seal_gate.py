@@ -11,6 +11,11 @@ sender speaks now, it obeys only what may be repeated without harm:
     a console   Presence, until a Presence that carries its present epoch
 
 That frame's counter is then the window's right edge; all that is older counts as seen.
+
+Two consoles share one address. The opening in a counter is its console's epoch, so a module keeps
+its window for the epoch that it follows, and another console cannot push it along. Of another
+opening it hears Stop, RollCall, and commands and queries, so that it can answer why it does not
+obey: they carry that other epoch, and the command memory refuses them.
 """
 
 from abc import ABC, abstractmethod
@@ -18,19 +23,18 @@ from collections import Counter
 from typing import Any, Final
 
 from protocol.message import (
-    Flash,
+    Command,
     Packet,
-    Pivot,
     Presence,
+    Probe,
     Query,
-    Rest,
     RollCall,
-    Spin,
     Stop,
+    TraceAsk,
     decode,
 )
 from protocol.replay_window import ReplayWindow
-from protocol.seal import KeyRing, Refused, SealFault, open_seal
+from protocol.seal import OPENING_SHIFT, KeyRing, Refused, SealFault, open_seal
 
 _OBEYED_AGAIN: Final[frozenset[type[Any]]] = frozenset({Stop, RollCall})
 """What is obeyed however often and late it comes. An all-stop: late is better than never. A roll
@@ -39,7 +43,6 @@ back must be answered, or it would never learn of the epoch that it has to excee
 
 _BEFORE_PROOF_AT_MODULE: Final[frozenset[type[Any]]] = frozenset({Stop, RollCall})
 _BEFORE_PROOF_AT_CONSOLE: Final[frozenset[type[Any]]] = frozenset({Presence})
-_WITH_BOOT: Final[tuple[type[Any], ...]] = (Query, Pivot, Spin, Rest, Flash)
 
 
 class _Gate(ABC):
@@ -87,15 +90,35 @@ class _Gate(ABC):
 
 
 class ModuleGate(_Gate):
-    """A module's gate. A restart needs a new one, with the new boot number."""
+    """A module's gate. A restart needs a new one, with the new boot number; ``follow`` tells it
+    of each epoch that the module adopts, which begins anew."""
 
     def __init__(self, keys: KeyRing, boot: int) -> None:
         super().__init__(keys, _BEFORE_PROOF_AT_MODULE)
         self._boot = boot
+        self._epoch = 0
+
+    def follow(self, epoch: int) -> None:
+        """The module follows this epoch from now on: its console must prove itself."""
+        if epoch != self._epoch:
+            self._epoch = epoch
+            self._windows.clear()
+
+    def _judge(self, packet: Packet, source: int, counter: int) -> SealFault | None:
+        opening = counter >> OPENING_SHIFT
+        if opening == self._epoch:
+            return super()._judge(packet, source, counter)
+        message = packet.message
+        if isinstance(message, Stop | RollCall):
+            return None
+        stranger = isinstance(message, Command | Query) and message.epoch == opening
+        return None if stranger else SealFault.OTHER_OPENING
 
     def _proves(self, packet: Packet) -> bool:
         message = packet.message
-        return isinstance(message, _WITH_BOOT) and message.boot == self._boot
+        return isinstance(message, Command | Query | Probe | TraceAsk) and (
+            message.boot == self._boot
+        )
 
 
 class ConsoleGate(_Gate):

@@ -1,6 +1,7 @@
 """WIRE.md against the code: every table in it that the code also knows must say the same."""
 
 import re
+import struct
 from enum import Enum
 from pathlib import Path
 
@@ -16,8 +17,18 @@ from protocol.message import HEADER, LAYOUTS
 
 TEXT = Path(protocol.__file__).with_name("WIRE.md").read_text(encoding="utf-8")
 
-TYPES = {"u8": "B", "u16": "H", "u32": "I", "u64": "Q", "i8": "b", "i16": "h", "text12": "12s"}
-BYTES = {"u8": 1, "u16": 2, "u32": 4, "u64": 8, "i8": 1, "i16": 2, "text12": 12}
+TYPES = {
+    "u8": "B",
+    "u16": "H",
+    "u32": "I",
+    "u64": "Q",
+    "i8": "b",
+    "i16": "h",
+    "i32": "i",
+    "text12": "12s",
+    "data24": "24s",
+}
+BYTES = {name: struct.calcsize("<" + form) for name, form in TYPES.items()}
 UNITS = {
     "rpm": "rpm",
     "ms": "ms",
@@ -26,6 +37,7 @@ UNITS = {
     "cC": "0.01 °C",
     "ddeg": "0.1°",
     "dps": "°/s",
+    "dBm": "dBm",
 }
 
 
