@@ -96,7 +96,10 @@ class FleetApp(App[None]):
         self.call_after_refresh(self.poll)
 
     def poll(self) -> None:
-        """Look at the source now and show what is new; the timer does this by itself."""
+        """Look at the source now and show what is new; the timer does this by itself. It is also
+        the heart that keeps wheels turning: it beats while the event loop runs, whether or not
+        the terminal takes what is drawn."""
+        self._source.beat()
         if self._controls is not None:
             self._controls.advance(self._clock_ns())
         picture = self._picture()

@@ -10,30 +10,31 @@ Must not know: threads, clocks, screens, sheets, SQL.
 
 from collections.abc import Callable, Sequence
 from functools import partial
-from typing import Final, Protocol
+from typing import Final
 
+from console.chores import Chores
 from console.errors import InputError
+from console.fetching import ANSWER_BYTES
 from console.fleet import FleetReducer, Step
-from console.interlocks import blocking
+from console.interlocks import Case, blocking
+from console.limits import Limits
 from console.link import Outbox
 from console.orders import Order, render
-from console.planning import build_commands, resolve, to_message
+from console.planning import Plan, build_commands, resolve, to_message
+from console.recorder import Recorder
 from console.sealing import ConsoleSeal
+from console.sender import Sender
 from console.standing import RollCaller, StopKeeper, unexplained
+from console.upkeep import fleet_ms
 from console.view import CommandView, FleetView, ModuleView
-from protocol.codes import CONSOLE_ADDRESS, EVERYONE_ADDRESS
-from protocol.exchange import CommandExchange, Ended, Ending, Send
-from protocol.frame import frame
+from protocol.exchange import AHEAD, CommandExchange, Ended, Ending, Send
 from protocol.message import (
     Clear,
-    Message,
-    Packet,
     Presence,
     Query,
-    Rest,
+    Release,
     RollCall,
     Stop,
-    encode,
 )
 from storage.records import (
     BytesIn,
@@ -44,34 +45,19 @@ from storage.records import (
     OrderGiven,
     OrderVoided,
     Record,
+    StageStarted,
     StopLifted,
     StopPressed,
 )
-from storage.rows import Row
 
+_AT_ONCE: Final = frozenset({"rest", "lock"})
+"""Orders that take a danger away: they wait neither for the log nor for what is in hand."""
 OnEnd = Callable[[CommandView, ModuleView], None]
 """Told of a command's end, with its module as it stands at that moment."""
 IDLE_NS: Final = 500_000_000
+_DEFAULT_LIMITS: Final = Limits()
 LINK_SHIFT: Final = 16
 """A destination in the exchange is link and address in one integer."""
-
-
-class Recorder(Protocol):
-    """What the core needs of a log; storage.writer.LogWriter is one."""
-
-    def append(self, number: int, record: Record, rows: Sequence[Row]) -> None:
-        """Take a record; it is written soon."""
-        ...
-
-    def commit(
-        self, number: int, record: Record, rows: Sequence[Row], done: Callable[[str], None]
-    ) -> None:
-        """Take a record; ``done("")`` once it is durable, ``done(why_not)`` where it cannot be."""
-        ...
-
-    def trouble(self) -> str:
-        """Why nothing is written now, or an empty text."""
-        ...
 
 
 class SessionCore:
@@ -79,7 +65,7 @@ class SessionCore:
 
     ``answer(given, why_not)`` is called on the log's thread once the log has answered on an
     order; whoever runs the core brings it over to its own thread and calls ``committed``.
-    ``seal`` None: frames are not sealed.
+    ``seal`` None: frames are not sealed. ``limits`` are those of the session's pace.
     """
 
     def __init__(
@@ -88,21 +74,29 @@ class SessionCore:
         log: Recorder,
         answer: Callable[[OrderGiven, str], None],
         seal: ConsoleSeal | None = None,
+        limits: Limits = _DEFAULT_LIMITS,
     ) -> None:
         self._seal = seal
+        self._limits = limits
         self.fleet = FleetReducer()
-        self._outboxes = list(outboxes)
+        self._sender = Sender(outboxes, seal)
         self._log = log
         self._answer = answer
         self._exchange = CommandExchange()
         self._roll = RollCaller()
         self._stops = StopKeeper()
+        answer_ns = max((each.line_ns(ANSWER_BYTES) for each in outboxes), default=0)
+        self._chores = Chores(limits, self._owes_answer, answer_ns)
         self._record_number = 0
         self._order_number = 0
         self._command_number = 0
         self._wire_numbers: dict[int, int] = {}
         self._on_end: dict[int, OnEnd] = {}
-        self.open_links = set(range(len(self._outboxes)))
+
+    @property
+    def open_links(self) -> set[int]:
+        """Links that can be written to; whoever loses one takes it out."""
+        return self._sender.open_links
 
     # -- records -------------------------------------------------------------------------
 
@@ -140,7 +134,7 @@ class SessionCore:
             self._effects(self._exchange.receive(source, packet.message, t_ns), t_ns)
             if isinstance(packet.message, Presence):
                 self._prove(from_link, packet.source, packet.message.boot)
-        if self.fleet.highest_epoch > self.fleet.epoch:
+        if self.fleet.highest_epoch >= self.fleet.epoch:
             self.note(EpochChosen(t_ns, self.fleet.highest_epoch + 1))
             if self._seal is not None:
                 self._seal.set_epoch(self.fleet.epoch)
@@ -156,28 +150,33 @@ class SessionCore:
         modules = resolve(order, self.fleet.modules())
         self._check(order, modules, t_ns)
         self._order_number += 1
+        stage = self._chores.stages.new_stage() if order.together else 0
+        plan = Plan(self.fleet.epoch, trial, stage, t_ns + self._limits.start_within_ns)
         commands = build_commands(
             order,
             modules,
+            plan,
             last_command=self._command_number,
             numbers=self._wire_numbers,
-            epoch=self.fleet.epoch,
-            trial=trial,
+            clock_of=self.fleet.clock,
         )
         self._command_number += len(commands)
         given = OrderGiven(t_ns, self._order_number, render(order), source, commands)
         if on_end is not None:
             self._on_end.update((each.command, on_end) for each in commands)
-        self._record_order(given, wait=order.motion != "rest")
+        if stage:
+            self._chores.stages.wait_for(given.order, stage, [each.command for each in commands])
+        self._record_order(given, wait=order.motion not in _AT_ONCE)
         return given
 
     def _check(self, order: Order, modules: Sequence[ModuleView], t_ns: int) -> None:
         fleet = self.fleet.view(t_ns)
         trouble = self._log.trouble()
+        alive = self._chores.permits.alive(t_ns)
         blocks = [
             f"{module.name}: {block.text}"
             for module in modules
-            for block in blocking(module, order, fleet, trouble)
+            for block in blocking(Case(module, order, fleet, trouble, self._limits, alive))
         ]
         if blocks:
             raise InputError("; ".join(blocks))
@@ -189,14 +188,15 @@ class SessionCore:
             self._log.commit(number, given, step.rows, done)
         else:
             self._log.append(number, given, step.rows)
-            self._rest(given)
+            self._send_ahead(given)
 
-    def _rest(self, given: OrderGiven) -> None:
-        """Send rests at once; they take the place of whatever those modules still had to do."""
+    def _send_ahead(self, given: OrderGiven) -> None:
+        """Send rests and lock-outs at once; they take the place of whatever those modules still
+        had to do."""
         for planned in given.commands:
             module = self.fleet.module(planned.module)
             if module is not None:
-                self._outboxes[module.link].drop_plain(module.address)
+                self._sender.drop_plain(module.link, module.address)
                 self._effects(self._exchange.withdraw(_destination(module)), given.t_ns)
         self._send(given, given.t_ns)
 
@@ -214,9 +214,9 @@ class SessionCore:
     def stop_all(self, source: str, t_ns: int) -> int:
         """All-stop: at the head of every link, before anything else is thought about."""
         stop_number = self.fleet.newest_stop + 1
-        for outbox in self._outboxes:
-            outbox.drop_plain()
-        self._broadcast(Stop(stop_number), urgent=True)
+        self._sender.drop_plain()
+        self._sender.broadcast(Stop(stop_number), urgent=True)
+        self._chores.stages.abandon_all()
         self.note(StopPressed(t_ns, stop_number, source))
         for module in self.fleet.modules():
             self._effects(self._exchange.withdraw(_destination(module)), t_ns)
@@ -231,21 +231,36 @@ class SessionCore:
         if stop_number != stop.stop_number:
             raise InputError(f"the all-stop in force is number {stop.stop_number}; clear that one")
         self.note(StopLifted(t_ns, stop_number, source))
-        self._broadcast(Clear(stop_number), urgent=True)
+        self._sender.broadcast(Clear(stop_number), urgent=True)
         self._stops.hurry(t_ns)
 
     # -- time ----------------------------------------------------------------------------
 
+    def beat(self, t_ns: int) -> None:
+        """A sign of life of the screen or of the running sheet: permits count from it."""
+        self._chores.permits.beat(t_ns)
+
+    def release(self) -> None:
+        """The session ends in order: let go of the modules, so that they wait for no permit."""
+        self._sender.broadcast(Release(self.fleet.console), urgent=True)
+
     def wake(self, t_ns: int) -> None:
         """Do what is due by now."""
         self._effects(self._exchange.wake(t_ns), t_ns)
-        if self._roll.due(self._strangers, t_ns):
-            self._broadcast(RollCall(self.fleet.epoch))
+        if self._roll.due(lambda: self._strangers(t_ns), t_ns):
+            self._sender.broadcast(RollCall(self.fleet.epoch, self.fleet.console))
         if self.fleet.newest_stop:
             self._repeat_stop(t_ns)
+        for news in self._chores.news(self.fleet, t_ns):
+            start_ms = None if news.start_ns is None else fleet_ms(news.start_ns)
+            self.note(StageStarted(t_ns, news.order, start_ms))
+        self._sender.say(self._chores.due(self.fleet, sorted(self.open_links), t_ns))
 
-    def _strangers(self) -> bool:
-        return unexplained(self.fleet.modules(), self.fleet.epoch, self.fleet.unknown_heard)
+    def _owes_answer(self, module: ModuleView) -> bool:
+        return self._exchange.awaits_answer(_destination(module))
+
+    def _strangers(self, t_ns: int) -> bool:
+        return unexplained(self.fleet.view(t_ns), self.fleet.unknown_heard)
 
     def _repeat_stop(self, t_ns: int) -> None:
         for module in self._stops.due(lambda: self.fleet.view(t_ns), t_ns):
@@ -253,22 +268,21 @@ class SessionCore:
             again = Stop(stop.stop_number) if stop.in_force else Clear(stop.stop_number)
             if not stop.in_force:
                 self._prove(module.link, module.address, module.boot, urgent=True)
-            self._push(module.link, module.address, again, urgent=True)
+            self._sender.push(module.link, module.address, again, urgent=True)
 
     def next_wake_ns(self, t_ns: int) -> int:
         """When something is due next, at the latest after a short idle time."""
         wakes = [t_ns + IDLE_NS, self._roll.next_ns, self._stops.next_ns]
-        wakes += [self._outboxes[link].next_ready_ns(t_ns) for link in self.open_links]
+        wakes += self._sender.next_ready_ns(t_ns)
+        wakes += self._chores.wakes_ns()
         wakes.append(self._exchange.next_wake_ns)
         return min(wake for wake in wakes if wake is not None)
 
     def to_write(self, t_ns: int) -> list[tuple[int, bytes]]:
         """Frames that the wires have room for now, recorded as sent; write them at once."""
-        ready = []
-        for link in sorted(self.open_links):
-            while (data := self._outboxes[link].pop_ready(t_ns)) is not None:
-                self.note(BytesOut(t_ns, link, data))
-                ready.append((link, data))
+        ready = list(self._sender.ready(t_ns))
+        for link, data in ready:
+            self.note(BytesOut(t_ns, link, data))
         return ready
 
     def view(self, t_ns: int) -> FleetView:
@@ -292,27 +306,16 @@ class SessionCore:
         for effect in effects:
             if isinstance(effect, Send):
                 link, address = divmod(effect.destination, 1 << LINK_SHIFT)
-                self._push(link, address, effect.message, urgent=isinstance(effect.message, Rest))
+                self._sender.push(
+                    link, address, effect.message, urgent=isinstance(effect.message, AHEAD)
+                )
             elif effect.how is Ending.UNSEEN:
                 view = self.fleet.command(effect.command)
                 if view is not None and not view.ending:
                     self.note(CommandExpired(t_ns, effect.command))
 
-    def _broadcast(self, message: Message, urgent: bool = False) -> None:
-        for link in sorted(self.open_links):
-            self._push(link, EVERYONE_ADDRESS, message, urgent)
-
     def _prove(self, link: int, address: int, boot: int, urgent: bool = False) -> None:
-        """Show a sealed module that its boot number is known: a question about no command. What
-        it obeys before that is little (WIRE.md, "After a restart")."""
-        if self._seal is not None:
-            self._push(link, address, Query(self.fleet.epoch, boot, 0), urgent)
-
-    def _push(self, link: int, address: int, message: Message, urgent: bool = False) -> None:
-        payload = encode(Packet(address, CONSOLE_ADDRESS, message))
-        if self._seal is not None:
-            payload = self._seal.seal(payload)
-        self._outboxes[link].push(address, frame(payload), urgent)
+        self._sender.prove(link, address, Query(self.fleet.epoch, boot, 0), urgent)
 
 
 def _destination(module: ModuleView) -> int:

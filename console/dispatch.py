@@ -38,6 +38,7 @@ class Conductor(Protocol):
     def real_s(self, fleet_ns: int) -> float: ...
     def link_open(self) -> bool: ...
     def log_trouble(self) -> str: ...
+    def beat(self) -> None: ...
     def give(
         self, order: Order, source: str, trial: int = 0, on_end: OnEnd | None = None
     ) -> OrderGiven: ...
@@ -151,6 +152,7 @@ class SheetRun:
     def _await_modules(self) -> None:
         deadline_ns = self._engine.now_ns() + APPEAR_WAIT_NS
         while missing := [name for name in self._lanes if not self._answers(name)]:
+            self._engine.beat()
             if self._engine.now_ns() > deadline_ns:
                 here = ", ".join(each.name for each in self._engine.view().modules) or "nobody"
                 raise InputError(
@@ -177,6 +179,7 @@ class SheetRun:
 
     def _start_what_can(self) -> int:
         """Start trials where a module is free; return fleet ns until it is worth looking again."""
+        self._engine.beat()
         now_ns = self._engine.now_ns()
         wait_ns = RETRY_NS
         for lane in self._lanes.values():

@@ -18,6 +18,7 @@ from typing import Any, Final
 from console.clock import SessionClock, utc_now
 from console.core import OnEnd, SessionCore
 from console.errors import EngineError, InputError
+from console.limits import Limits
 from console.link import LinkReader, Outbox
 from console.orders import Order, parse_order
 from console.port import Port
@@ -75,7 +76,9 @@ class Engine:
         self._opened = opened
         self._inbox: queue.SimpleQueue[_Request] = queue.SimpleQueue()
         outboxes = [Outbox(LinePacer(port.rate_baud)) for port in self._ports]
-        self._core = SessionCore(outboxes, log, self._log_answered, seal)
+        limits = Limits().at_pace(opened.pace)
+        self._core = SessionCore(outboxes, log, self._log_answered, seal, limits)
+        self._beat_ns: int | None = None
         self._seal = seal
         self._readers = [
             LinkReader(link, port, clock, self._arrived, self._lost)
@@ -155,6 +158,11 @@ class Engine:
             lambda t_ns: self._core.give(order, source, t_ns, trial, on_end)
         )
         return given
+
+    def beat(self) -> None:
+        """A sign of life of whoever leads the session; without it the drive permits lapse. Never
+        blocks."""
+        self._beat_ns = self._clock.now_ns()
 
     def stop(self, source: str) -> None:
         """All-stop, now; never blocks."""
@@ -239,6 +247,8 @@ class Engine:
                 return
             self._unseen_change |= bool(requests)
             now_ns = self._clock.now_ns()
+            if self._beat_ns is not None:
+                self._core.beat(self._beat_ns)
             self._core.wake(now_ns)
             self._write(now_ns)
             self._publish(now_ns)
@@ -299,6 +309,8 @@ class Engine:
 
     def _close(self, why: str, t_ns: int) -> None:
         utc = utc_now()
+        self._core.release()
+        self._write(t_ns)
         for reader in self._readers:
             reader.end()
         for link in sorted(self._core.open_links):

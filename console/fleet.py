@@ -4,24 +4,30 @@ Owns the table from record type to rule, and is the only door to the fleet's sta
 and rebuild all fold with it and so come to the same end (law 7). Must not know clocks, I/O,
 screens or SQL. The rules are in the fleet_* modules:
 
-    fleet_state     what is remembered          fleet_links     bytes to messages
-    fleet_modules   who is there, telemetry     fleet_commands  a command's life
-    fleet_stop      the all-stop                fleet_endings   a command's one ending
-    fleet_views     pictures for screens        fleet_rows      rows for the log
+    fleet_state       what is remembered        fleet_parts     parts of it with own rules
+    fleet_links       bytes to messages         fleet_modules   who is there, telemetry
+    fleet_commands    a command's life          fleet_endings   a command's one ending
+    fleet_stop        the all-stop              fleet_clock     modules' clocks
+    fleet_conditions  lock-outs and faults      fleet_reports   who tells of them; bridges
+    fleet_kept        settings and traces       fleet_rows      rows for the log
+    fleet_views       pictures for screens
 """
 
 from collections.abc import Callable
 from typing import Any, Final
 
 from console.errors import LogError
-from console.fleet_commands import expire, plan_order, void_order
+from console.fleet_clock import known_clock
+from console.fleet_commands import expire, plan_order, start_stage, void_order
 from console.fleet_endings import close_commands
+from console.fleet_kept import SettingWanted, TraceWanted, settings_wanted, traces_wanted
 from console.fleet_links import change_link, refuse_frames, take_bytes_in, take_bytes_out
 from console.fleet_rows import write_correction, write_remark, write_sheet
 from console.fleet_state import FleetState, Moment, Step
 from console.fleet_stop import lift_stop, press_stop, stop_view
-from console.fleet_views import command_view, link_view, module_view, module_views
+from console.fleet_views import bridge_view, command_view, link_view, module_view, module_views
 from console.view import CommandView, FleetView, ModuleView
+from protocol.clock import ModuleClock
 from storage.records import (
     BytesIn,
     BytesOut,
@@ -38,6 +44,7 @@ from storage.records import (
     SessionOpened,
     SheetClosed,
     SheetOpened,
+    StageStarted,
     StopLifted,
     StopPressed,
 )
@@ -49,6 +56,7 @@ def _open_session(state: FleetState, at: Moment, record: SessionOpened) -> None:
     state.opened_utc = record.utc
     state.operator = record.operator
     state.epoch = record.epoch
+    state.console = record.console
     state.sealed = record.sealed
 
 
@@ -96,6 +104,7 @@ RULES: Final[dict[type[Any], Callable[[FleetState, Moment, Any], None]]] = {
     OrderGiven: plan_order,
     OrderVoided: void_order,
     CommandExpired: expire,
+    StageStarted: start_stage,
     StopPressed: press_stop,
     StopLifted: lift_stop,
     SheetOpened: _open_sheet,
@@ -137,6 +146,8 @@ class FleetReducer:
             notices=tuple(state.notices),
             closed=state.closed,
             sealed=state.sealed,
+            console=state.console,
+            bridges=tuple(bridge_view(*each) for each in state.bridges.items()),
         )
 
     def modules(self) -> tuple[ModuleView, ...]:
@@ -175,8 +186,31 @@ class FleetReducer:
 
     @property
     def highest_epoch(self) -> int:
-        """The highest epoch that any module has reported, 0 before the first."""
+        """The highest epoch that was found in the way, 0 where none was: greater than this
+        console's at that time, or the same under another console's number. If it is not below
+        ``epoch``, one more than it is to be chosen."""
         return self._state.highest_epoch
+
+    @property
+    def console(self) -> int:
+        """This console's number, as drawn at the session's opening; 0 in older logs."""
+        return self._state.console
+
+    def clock(self, module: int) -> ModuleClock | None:
+        """The clock of the module of this count over its present link; None before its first
+        exchange. Its times are those of the records. To be read, not changed."""
+        state = self._state.modules.get(module)
+        return None if state is None else known_clock(state)
+
+    def settings_wanted(self) -> tuple[SettingWanted, ...]:
+        """Module and setting to ask for next, one a module: of a setting just written, whether it
+        holds; else the first that was not read. Empty once all is known."""
+        return settings_wanted(self._state)
+
+    def trace_wanted(self) -> tuple[TraceWanted, ...]:
+        """Module, epoch, boot, number, identity, first chunk and mask to ask for next, for each
+        module whose last motion's trace is neither whole, nor absent, nor given up."""
+        return traces_wanted(self._state)
 
     @property
     def newest_stop(self) -> int:

@@ -10,15 +10,19 @@ from typing import Final
 
 from console.fleet_endings import end_command
 from console.fleet_rows import reason_text, write_command, write_event, write_order
-from console.fleet_state import OPEN_ENDED, CommandState, FleetState, ModuleState, Moment
+from console.fleet_state import AHEAD, OPEN_ENDED, CommandState, FleetState, ModuleState, Moment
 from protocol.codes import Activity, AnswerState, Flags, Reason
 from protocol.command_phases import Event, event_of
 from protocol.message import Answer, Command, Facts, Query
-from storage.records import CommandExpired, OrderGiven, OrderVoided
+from storage.records import CommandExpired, OrderGiven, OrderVoided, StageStarted
 
 NOT_RECORDED: Final = "not recorded"
 STOPPED: Final = reason_text(Reason.STOPPED)
-RESTED: Final = reason_text(Reason.RESTED)
+_TAKEN_BACK_BY: Final = {
+    "rest": reason_text(Reason.RESTED),
+    "lock": reason_text(Reason.LOCKED_OUT),
+}
+"""Motions that end whatever their module had to do, and why it was cut then."""
 
 
 # -- what the console did ----------------------------------------------------------------
@@ -29,8 +33,9 @@ def plan_order(state: FleetState, at: Moment, record: OrderGiven) -> None:
     write_order(at, record)
     for planned in record.commands:
         module = state.ordered_module(planned)
-        if planned.motion == "rest":
-            withdraw_commands(state, at, module, RESTED)
+        why = _TAKEN_BACK_BY.get(planned.motion)
+        if why is not None:
+            withdraw_commands(state, at, module, why)
         command = CommandState(planned, record.order, at.t_ns, module)
         state.commands[planned.command] = command
         _enter_wire_key(state, command)
@@ -59,6 +64,17 @@ def void_order(state: FleetState, at: Moment, record: OrderVoided) -> None:
         if command.order == record.order and command.ending is None:
             end_command(state, at, command, "refused", NOT_RECORDED)
     state.notice(at, f"order {record.order} was not sent: {record.why}")
+
+
+def start_stage(state: FleetState, at: Moment, record: StageStarted) -> None:
+    """Note that an order's motions were told when to begin, or that they will not be."""
+    given_up = record.start_ms is None
+    event, detail = ("no go", "") if given_up else ("go", f"at {record.start_ms} ms of fleet time")
+    for command in state.commands.values():
+        if command.order == record.order and command.ending is None:
+            write_event(at, command, event, detail)
+    if given_up:
+        state.notice(at, f"order {record.order} is not started: not every module accepted it")
 
 
 def note_command_sent(state: FleetState, at: Moment, address: int, message: Command) -> None:
@@ -96,11 +112,11 @@ def stop_commands(state: FleetState, at: Moment) -> None:
 def withdraw_commands(state: FleetState, at: Moment, module: ModuleState, why: str) -> None:
     """End what was never sent to a module, and mark what was: it is only asked about now.
 
-    A rest goes ahead of all that waits and is never taken back, so it is as good as sent.
+    A rest or a lock-out goes ahead of all that waits, and is as good as sent.
     """
     for command in list(module.in_hand.values()):
         command.withdrawn = why
-        if command.sends == 0 and command.planned.motion != "rest":
+        if command.sends == 0 and command.planned.motion not in AHEAD:
             end_command(state, at, command, "cut", why)
 
 
@@ -163,6 +179,7 @@ def _accept(at: Moment, command: CommandState, answer: Answer) -> None:
         _ignore_repeat(at, command, "accepted")
         return
     command.accepted = True
+    command.view = None
     write_event(at, command, "accepted", f"expected to take {answer.expect_ms} ms")
 
 

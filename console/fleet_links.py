@@ -5,10 +5,13 @@ message means: that is in the modules whose functions the tables name.
 """
 
 from collections.abc import Callable
-from typing import Any, Final
+from typing import Any, Final, get_args
 
+from console.fleet_clock import note_probe, take_echo
 from console.fleet_commands import note_asked, note_command_sent, take_answer, take_facts
+from console.fleet_kept import note_trace_ask, take_setting_value, take_trace_chunk
 from console.fleet_modules import take_nameplate, take_presence, take_telemetry
+from console.fleet_reports import take_bridge_status, take_fault_notice, take_lock_state
 from console.fleet_rows import write_alarm, write_link_event
 from console.fleet_state import FleetState, LinkState, Moment
 from console.fleet_stop import take_stopped
@@ -16,17 +19,22 @@ from protocol.errors import RemoteProtocolError
 from protocol.frame import Dropped
 from protocol.message import (
     Answer,
+    BridgeStatus,
+    Command,
+    Echo,
     Facts,
-    Flash,
+    FaultNotice,
+    LockState,
     Nameplate,
     Packet,
-    Pivot,
     Presence,
+    Probe,
     Query,
-    Rest,
-    Spin,
+    SettingValue,
     Stopped,
     Telemetry,
+    TraceAsk,
+    TraceChunk,
     decode,
 )
 from protocol.seal import unsealed_form
@@ -49,16 +57,21 @@ FROM_MODULES: Final[dict[type[Any], _Take]] = {
     Presence: take_presence,
     Nameplate: take_nameplate,
     Stopped: take_stopped,
+    Echo: take_echo,
+    LockState: take_lock_state,
+    SettingValue: take_setting_value,
+    TraceChunk: take_trace_chunk,
+    FaultNotice: take_fault_notice,
+    BridgeStatus: take_bridge_status,
 }
 """By message type, with the sender's address. Anything else that comes in is an echo of what a
 console sent, and changes nothing."""
 
 FROM_CONSOLE: Final[dict[type[Any], _Take]] = {
-    Pivot: note_command_sent,
-    Spin: note_command_sent,
-    Rest: note_command_sent,
-    Flash: note_command_sent,
+    **dict.fromkeys(get_args(Command), note_command_sent),
     Query: note_asked,
+    Probe: note_probe,
+    TraceAsk: note_trace_ask,
 }
 """By message type, with the destination's address."""
 
@@ -149,6 +162,8 @@ def change_link(state: FleetState, at: Moment, record: LinkChanged) -> None:
     link.inbound.reset()
     link.outbound.reset()
     write_link_event(at, record)
+    if link.gone:
+        state.bridges.pop(record.link, None)
     if record.state == "lost":
         write_alarm(at, None, "link lost", f"link {record.link}, {record.url}: {record.detail}")
         state.notice(at, f"link {record.link} lost: {record.detail}")

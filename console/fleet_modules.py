@@ -9,11 +9,12 @@ from collections import Counter
 from typing import Final
 
 from console.fleet_commands import readdress
+from console.fleet_conditions import forget_faults, hear_conditions, hear_flags
 from console.fleet_endings import close_commands
 from console.fleet_rows import identity_text, write_alarm, write_module
-from console.fleet_state import FleetState, ModuleState, Moment
+from console.fleet_state import LATCHED, WATCHED, FleetState, ModuleState, Moment
 from console.fleet_stop import hear_latch
-from protocol.codes import Flags, identity_bits
+from protocol.codes import identity_bits
 from protocol.message import Nameplate, Presence, Telemetry, field_text
 from storage.rows import TelemetryRow
 
@@ -23,7 +24,6 @@ enough to follow a module that is carried away, long enough for steps of three p
 
 _WINDOW_BITS: Final = (1 << SIGNAL_WINDOW) - 1
 _HALF: Final = 0x8000
-_LATCHED: Final = int(Flags.LATCHED)
 _new_row: Final = tuple.__new__
 """Makes a TelemetryRow in 0.14 us; its own constructor takes 0.35 us (measured)."""
 
@@ -41,13 +41,31 @@ def take_presence(state: FleetState, at: Moment, address: int, message: Presence
         return
     _settle_address(state, at, module, address)
     state.by_sender[at.link, address, identity_bits(message.identity)] = module
-    module.epoch = message.epoch
-    state.highest_epoch = max(state.highest_epoch, message.epoch)
     module.face_up = message.face_up
+    module.flags = message.flags
     module.heard_t_ns = at.t_ns
     state.touch(module)
+    _hear_owner(state, at, module, message)
+    hear_conditions(state, at, module, message.flags)
     write_module(at, module)
-    hear_latch(state, at, module, message.stop_number, bool(message.latched))
+    hear_latch(state, at, module, message.stop_number, bool(message.flags & LATCHED))
+
+
+def _hear_owner(state: FleetState, at: Moment, module: ModuleState, message: Presence) -> None:
+    """Take whom a module follows; tell of another console that owns it, and keep the epoch that
+    has to be exceeded to be followed: a greater one, or our own under another number."""
+    module.epoch, module.console = message.epoch, message.console
+    module.owner_left_ms, module.owner_heard_ns = message.owner_left_ms, at.t_ns
+    ours = message.console == state.console
+    if message.epoch > state.epoch or (message.epoch == state.epoch and not ours):
+        state.highest_epoch = max(state.highest_epoch, message.epoch)
+    other = 0 if ours or not message.owner_left_ms else message.console
+    if other not in (0, module.owner_told):
+        left_s = message.owner_left_ms / 1000
+        text = f"{module.name} follows console {other:08x}, for {left_s:.1f} s more at least"
+        write_alarm(at, module, "owned by another console", text)
+        state.notice(at, text)
+    module.owner_told = other
 
 
 def _enter_module(state: FleetState, at: Moment, address: int, message: Presence) -> ModuleState:
@@ -64,6 +82,8 @@ def _settle_address(state: FleetState, at: Moment, module: ModuleState, address:
     that share one. A module heard over several links stays with the first."""
     if module.link != at.link and not state.link_of(module.link).gone:
         return
+    if module.link != at.link:
+        module.clock.void()
     if (module.link, module.address) != (at.link, address):
         module.link, module.address = at.link, address
         readdress(state, module)
@@ -110,7 +130,9 @@ def notice_boot(state: FleetState, at: Moment, module: ModuleState, boot: int) -
         return False
     module.boots.add(boot)
     module.boot = boot
-    module.epoch = module.stop_number = 0
+    module.epoch = module.stop_number = module.console = module.owner_left_ms = 0
+    module.clock.void()
+    forget_faults(module)
     module.sequence, module.arrived, module.span = -1, 0, 0
     state.touch(module)
     write_alarm(at, module, "restart", f"{module.name} restarted: boot {boot}")
@@ -186,8 +208,8 @@ def take_telemetry(state: FleetState, at: Moment, address: int, message: Telemet
         module.temperature_cC = temperature_cC
         module.view = None
         state.changed = True
-        if bool(flags & _LATCHED) is not module.latched:
-            hear_latch(state, at, module, None, not module.latched)
+        if flags & WATCHED != module.conditions:
+            hear_flags(state, at, module, flags)
 
 
 def _heard_boot(state: FleetState, at: Moment, module: ModuleState, boot: int) -> bool:
@@ -196,6 +218,21 @@ def _heard_boot(state: FleetState, at: Moment, module: ModuleState, boot: int) -
     if current:
         state.unknown_heard = True
     return current
+
+
+def sender_of(
+    state: FleetState, at: Moment, address: int, bits: int, boot: int
+) -> ModuleState | None:
+    """The module that a report of this boot comes from; None for another boot and for a stranger,
+    which both call the roll unless the boot is over. Only presence and telemetry tell of a restart,
+    since those are what the exchange takes it from, and both must end a command at one word."""
+    module = state.by_sender.get((at.link, address, bits))
+    if module is None or boot != module.boot:
+        state.unknown_heard |= module is None or boot not in module.boots
+        return None
+    module.heard_t_ns = at.t_ns
+    state.touch(module)
+    return module
 
 
 def _hear_out_of_turn(module: ModuleState, sequence: int) -> tuple[bool, bool]:

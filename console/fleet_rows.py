@@ -7,11 +7,20 @@ degrees. Must not know dispatch or SQL; changes nothing of the state but a modul
 from typing import Final
 
 from console.fleet_state import CommandState, ModuleState, Moment
-from protocol.codes import Direction, Reason, Setting, is_simulated
-from protocol.message import Facts
-from storage.records import Correction, LinkChanged, OrderGiven, Remark, SheetOpened
+from protocol.codes import Direction, Fault, Reason, Setting, SettingId, is_simulated
+from protocol.message import BridgeStatus, Facts, SettingValue
+from protocol.trace import Trace, pack_trace
+from storage.records import (
+    Correction,
+    LinkChanged,
+    OrderGiven,
+    PlannedCommand,
+    Remark,
+    SheetOpened,
+)
 from storage.rows import (
     AlarmRow,
+    BridgeStatusRow,
     CommandEventRow,
     CommandRow,
     CorrectionRow,
@@ -20,12 +29,25 @@ from storage.rows import (
     MotionRow,
     OrderRow,
     RemarkRow,
+    SettingRow,
     SheetRow,
+    TraceRow,
 )
 
 SETTING_NAMES: Final = {int(code): code.name.lower() for code in Setting}
 DIRECTION_NAMES: Final = {int(code): code.name.lower() for code in Direction}
 REASON_NAMES: Final = {int(code): code.name.lower() for code in Reason}
+SETTING_ID_NAMES: Final = {int(code): code.name.lower() for code in SettingId}
+FAULT_NAMES: Final = {int(code): code.name.lower() for code in Fault}
+FAULT_DETAILS: Final[dict[int, tuple[int, str]]] = {
+    Fault.BROWN_OUT: (1, "mV"),
+    Fault.OVERHEATED: (10, "°C"),
+    Fault.BRAKE_WEAK: (1, "ms"),
+}
+"""By what a fault's figure on the wire is divided, and its unit then."""
+
+SAMPLE_BYTES: Final = 8
+"""Of one sample of a trace, on the wire and in the log."""
 
 _Measured = tuple[
     float | None,
@@ -39,8 +61,9 @@ _Measured = tuple[
     int | None,
     int | None,
     float | None,
+    int | None,
 ]
-_NOTHING_MEASURED: Final[_Measured] = (None,) * 11
+_NOTHING_MEASURED: Final[_Measured] = (None,) * 12
 
 
 def identity_text(identity: int) -> str:
@@ -51,6 +74,23 @@ def identity_text(identity: int) -> str:
 def reason_text(reason: int) -> str:
     """A reason code as its name in lower case, or as a number where it has none."""
     return REASON_NAMES.get(reason, f"reason {reason}")
+
+
+def fault_text(fault: int) -> str:
+    """A fault as its name in lower case, or as a number where it has none."""
+    return FAULT_NAMES.get(fault, f"fault {fault}")
+
+
+def setting_id_text(setting: int) -> str:
+    """A module's setting as its name in lower case, or as a number where it has none."""
+    return SETTING_ID_NAMES.get(setting, f"setting {setting}")
+
+
+def _setting_of(planned: PlannedCommand) -> str:
+    """What stands in the column ``setting``: of a write what it changes, else a pivot's."""
+    if planned.motion == "set":
+        return setting_id_text(planned.setting)
+    return SETTING_NAMES.get(planned.setting, "")
 
 
 def write_module(at: Moment, module: ModuleState) -> None:
@@ -66,6 +106,7 @@ def write_module(at: Moment, module: ModuleState) -> None:
         wheel_max_rpm=module.wheel_max_rpm,
         boot=module.boot,
         boots_seen=len(module.boots),
+        locked_by=module.locked_out_by,
     )
     if row != module.row:
         module.row = row
@@ -93,7 +134,7 @@ def write_command(at: Moment, command: CommandState) -> None:
             epoch=planned.epoch,
             number=planned.number,
             motion=planned.motion,
-            setting=SETTING_NAMES.get(planned.setting, ""),
+            setting=_setting_of(planned),
             direction=DIRECTION_NAMES.get(planned.direction, ""),
             speed_rpm=planned.speed_rpm,
             duration_ms=planned.duration_ms,
@@ -104,6 +145,10 @@ def write_command(at: Moment, command: CommandState) -> None:
             reason=command.reason,
             final=int(command.final),
             ended_t_ns=command.ended_t_ns,
+            latest_ms=planned.latest_ms,
+            stage=planned.stage,
+            person=planned.person,
+            value=planned.value,
         )
     )
 
@@ -151,6 +196,7 @@ def _measured(facts: Facts | None) -> _Measured:
         facts.spin_up_ms,
         facts.settle_ms,
         facts.sag_mV / 1000,
+        facts.started_ms,
     )
 
 
@@ -205,3 +251,22 @@ def write_correction(at: Moment, record: Correction) -> None:
             record.reason,
         )
     )
+
+
+def write_setting(at: Moment, module: ModuleState, read: SettingValue) -> None:
+    """Add what a module says of one of its settings."""
+    name = setting_id_text(read.setting)
+    key = module.module, name, at.number, at.part
+    at.step.rows.append(SettingRow(*key, at.t_ns, read.value, read.lowest, read.highest))
+
+
+def write_trace(at: Moment, command: CommandState, trace: Trace) -> None:
+    """Add a motion's trace, whole."""
+    data = b"".join(pack_trace(*trace)[1:])
+    number = command.planned.command
+    at.step.rows.append(TraceRow(number, *trace.head, data[: trace.head.samples * SAMPLE_BYTES]))
+
+
+def write_bridge_status(at: Moment, status: BridgeStatus) -> None:
+    """Add what a bridge says of itself."""
+    at.step.rows.append(BridgeStatusRow(at.number, at.part, at.t_ns, at.link, *status[1:]))

@@ -12,10 +12,12 @@ from dataclasses import dataclass, field
 from typing import Final
 
 from console.errors import LogError
+from console.fleet_parts import BridgeState, ClockState, FaultState, SettingsState
 from console.view import CommandView, ModuleView, Outcome
-from protocol.codes import is_simulated
+from protocol.codes import Flags, is_simulated
 from protocol.frame import FrameDecoder
 from protocol.message import Facts, Packet
+from protocol.trace import TraceFetch
 from storage.records import PlannedCommand, SheetOpened
 from storage.rows import ModuleRow, Row
 
@@ -27,6 +29,15 @@ NOTICES_KEPT: Final = 50
 
 MOTIONS: Final = frozenset({"pivot", "hop", "twist"})
 """What brakes the wheel and so has an outcome; all else just ends."""
+
+AHEAD: Final = frozenset({"rest", "lock"})
+"""What goes ahead of all else that a module has to do."""
+
+LATCHED: Final = int(Flags.LATCHED)
+LOCKED_OUT: Final = int(Flags.LOCKED_OUT)
+FAULTY: Final = int(Flags.FAULTY)
+WATCHED: Final = LATCHED | LOCKED_OUT | FAULTY
+"""Flags whose coming and going is more than a figure: ModuleState.conditions."""
 
 OPEN_ENDED: Final = "unseen"
 """The one ending that a late report may still resolve, as long as it is not final."""
@@ -60,9 +71,21 @@ class Moment:
 
 
 @dataclass(slots=True, eq=False)
+class TraceState:
+    """The trace of a motion while it is fetched. ``asked``: questions since the last chunk that
+    was new; ``refused``: whether a chunk that contradicts the others was told of."""
+
+    command: "CommandState"
+    fetch: TraceFetch = field(default_factory=TraceFetch)
+    asked: int = 0
+    refused: bool = False
+
+
+@dataclass(slots=True, eq=False)
 class ModuleState:
     """One module. ``arrived`` has a bit for each of the last sequence numbers, the newest in
-    bit 0; ``span`` says how many of them there have been in this boot, 0 before the first."""
+    bit 0; ``span`` says how many of them there have been in this boot, 0 before the first.
+    ``conditions``: which of the watched flags stand, by its newest word of whatever kind."""
 
     module: int
     identity: int
@@ -76,8 +99,13 @@ class ModuleState:
     epoch: int = 0
     boots: set[int] = field(default_factory=set)
     shares_address: bool = False
+    console: int = 0
+    owner_left_ms: int = 0
+    owner_heard_ns: int = 0
+    owner_told: int = 0
     stop_number: int = 0
-    latched: bool = False
+    conditions: int = 0
+    locked_by: str = ""
     activity: int = 0
     flags: int = 0
     face_up: int = 0
@@ -91,6 +119,10 @@ class ModuleState:
     in_hand: "dict[int, CommandState]" = field(default_factory=dict)
     unsure: "dict[int, CommandState]" = field(default_factory=dict)
     ribbon: "deque[CommandState]" = field(default_factory=lambda: deque(maxlen=RIBBON_LENGTH))
+    clock: ClockState = field(default_factory=ClockState)
+    settings: SettingsState = field(default_factory=SettingsState)
+    faults: FaultState = field(default_factory=FaultState)
+    trace: TraceState | None = None
     row: ModuleRow | None = None
     view: ModuleView | None = None
 
@@ -98,6 +130,26 @@ class ModuleState:
     def simulated(self) -> bool:
         """Whether its identity carries the simulated mark."""
         return is_simulated(self.identity)
+
+    @property
+    def latched(self) -> bool:
+        """Whether it holds an all-stop."""
+        return bool(self.conditions & LATCHED)
+
+    @property
+    def faults_shown(self) -> tuple[str, ...]:
+        """Names of the faults that stand; ``unnamed`` where only a flag has told of one."""
+        unnamed = ("unnamed",) if self.conditions & FAULTY else ()
+        return self.faults.shown or unnamed
+
+    @property
+    def locked_out_by(self) -> str | None:
+        """Who has locked it out; None for nobody, empty where the name is not known."""
+        return self.locked_by if self.conditions & LOCKED_OUT else None
+
+    def set_condition(self, bit: int, stands: bool) -> None:
+        """Note that a watched flag stands, or no longer does."""
+        self.conditions = self.conditions | bit if stands else self.conditions & ~bit
 
 
 @dataclass(slots=True, eq=False)
@@ -166,6 +218,7 @@ class FleetState:
     ``changed``: a module's picture is no longer true."""
 
     epoch: int = 0
+    console: int = 0
     highest_epoch: int = 0
     sealed: bool = False
     opened_utc: str = ""
@@ -177,6 +230,7 @@ class FleetState:
     commands: dict[int, CommandState] = field(default_factory=dict)
     by_wire: dict[tuple[int, int, int, int], CommandState] = field(default_factory=dict)
     links: dict[int, LinkState] = field(default_factory=dict)
+    bridges: dict[int, BridgeState] = field(default_factory=dict)
     sheets: dict[int, SheetOpened] = field(default_factory=dict)
     conflicts: set[tuple[int, int]] = field(default_factory=set)
     stop: StopState = field(default_factory=StopState)

@@ -7,7 +7,7 @@ number that this session never lifted is in force, whoever pressed it (law 5).
 
 from console.fleet_commands import stop_commands
 from console.fleet_rows import write_alarm
-from console.fleet_state import FleetState, ModuleState, Moment
+from console.fleet_state import LATCHED, FleetState, ModuleState, Moment
 from console.view import StopView
 from protocol.message import Stopped
 from storage.records import StopLifted, StopPressed
@@ -52,12 +52,13 @@ def hear_latch(
     telemetry: then a latch that nothing here explains is a reason to call the roll."""
     stop = state.stop
     if stop_number is None:
-        module.latched = latched
+        module.set_condition(LATCHED, latched)
         state.unknown_heard |= latched and not stop.in_force
         return
     if stop_number < module.stop_number:
         return  # A module's number only rises: this was said before what is known already.
-    module.latched, module.stop_number = latched, stop_number
+    module.set_condition(LATCHED, latched)
+    module.stop_number = stop_number
     stop.newest = max(stop.newest, stop_number)
     if latched and stop_number > stop.lifted and not stop.in_force:
         stop.in_force = True

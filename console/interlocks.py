@@ -6,7 +6,7 @@ only as views, and sends nothing.
 
 The console looks first, so that a person reads the reason before anything is sent. What a module
 enforces too, it enforces by what it measures at the start, which may differ from what was last
-heard of it. ``rest`` stands in no row: it is never blocked.
+heard of it. ``rest`` and ``lock`` stand in no row: they are never blocked.
 """
 
 from collections.abc import Callable
@@ -14,7 +14,9 @@ from dataclasses import dataclass
 from enum import StrEnum
 from typing import Final
 
+from console.limits import Limits
 from console.orders import Order
+from console.standing import follows, owned_by_another
 from console.view import FleetView, LinkView, ModuleView
 from protocol.codes import Activity, Flags
 
@@ -49,12 +51,15 @@ class Block:
 
 @dataclass(frozen=True, slots=True)
 class Case:
-    """What an interlock looks at. ``log_trouble``: why the log does not write, or empty."""
+    """What an interlock looks at. ``log_trouble``: why the log does not write, or empty;
+    ``alive``: whether the screen or the running sheet has given a sign of life just now."""
 
     module: ModuleView
     order: Order
     fleet: FleetView
     log_trouble: str
+    limits: Limits
+    alive: bool
 
 
 @dataclass(frozen=True, slots=True)
@@ -68,10 +73,10 @@ class Interlock:
     overridable: bool
 
 
-def blocking(module: ModuleView, order: Order, fleet: FleetView, log_trouble: str) -> list[Block]:
-    """Return every interlock that blocks this order for this module, in the table's order."""
-    case = Case(module, order, fleet, log_trouble)
-    reasons = ((row.name, row.reason(case)) for row in INTERLOCKS if order.motion in row.motions)
+def blocking(case: Case) -> list[Block]:
+    """Return every interlock that blocks an order for a module, in the table's order."""
+    motion = case.order.motion
+    reasons = ((row.name, row.reason(case)) for row in INTERLOCKS if motion in row.motions)
     return [Block(name, text) for name, text in reasons if text]
 
 
@@ -98,11 +103,49 @@ def _all_stop(case: Case) -> str:
     return ""
 
 
-def _restarted(case: Case) -> str:
-    ours, its = case.fleet.epoch, case.module.epoch
-    if its == ours:
+def _owned(case: Case) -> str:
+    if not owned_by_another(case.module, case.fleet):
         return ""
-    return f"it has restarted and was not called since (its epoch {its}, ours {ours})"
+    until_ns = case.module.owner_heard_ns + case.module.owner_left_ms * 1_000_000
+    left_s = (until_ns - case.fleet.t_ns) / NS_PER_S
+    return f"another console owns it, for {left_s:.1f} s more at least; close that one first"
+
+
+def _not_following(case: Case) -> str:
+    if follows(case.module, case.fleet):
+        return ""
+    if case.module.epoch == 0:
+        return "it has restarted and was not called since"
+    return "it does not follow this console yet; the roll is being called"
+
+
+def _locked_out(case: Case) -> str:
+    person = case.module.locked_by
+    if person is None:
+        return ""
+    return f"locked out by {person or 'somebody'}; only that person unlocks it"
+
+
+def _fault_standing(case: Case) -> str:
+    faults = ", ".join(each.replace("_", " ") for each in case.module.faults)
+    return f"a fault stands: {faults}" if faults else ""
+
+
+def _clock_unknown(case: Case) -> str:
+    bound_ms, limit_ms = case.module.clock_bound_ms, case.limits.clock_bound_ns / 1e6
+    if bound_ms is None:
+        return "its clock is not known yet"
+    if bound_ms <= limit_ms:
+        return ""
+    return f"its clock is known to {bound_ms:.0f} ms only; {limit_ms:.0f} ms are needed"
+
+
+def _permit_refused(case: Case) -> str:
+    if not case.alive:
+        return "no drive permit is given: the screen or the sheet gives no sign of life"
+    if case.module.permitted:
+        return ""
+    return "the module says that it holds no drive permit yet"
 
 
 def _address_shared(case: Case) -> str:
@@ -142,11 +185,13 @@ def _battery_low(case: Case) -> str:
     return ""
 
 
-def _axis_upright(case: Case) -> str:
-    face_up = case.module.face_up
-    if face_up not in END_FACES:
+def _axis_wrong(case: Case) -> str:
+    face_up, motion = case.module.face_up, case.order.motion
+    upright = face_up in END_FACES
+    if face_up == 0 or upright == (motion == "twist"):
         return ""
-    return f"its wheel axis is upright (face {face_up} up); a pivot needs it level"
+    stands, needs = ("upright", "level") if upright else ("level", "upright")
+    return f"its wheel axis is {stands} (face {face_up} up); a {motion} needs it {needs}"
 
 
 def _not_settled(case: Case) -> str:
@@ -167,20 +212,25 @@ def _doing(activity: int) -> str:
         return f"busy with something unknown (activity {activity})"
 
 
-_SENT: Final = frozenset({"pivot", "spin", "flash"})
-_WHEEL: Final = frozenset({"pivot", "spin"})
-_BRAKED: Final = frozenset({"pivot"})
+_BRAKED: Final = frozenset({"pivot", "hop", "twist"})
+_WHEEL: Final = _BRAKED | {"spin"}
+_SENT: Final = _WHEEL | {"flash", "unlock", "set"}
 
 INTERLOCKS: Final = (
     Interlock("link not open", _SENT, _link_closed, Enforcer.CONSOLE, False),
     Interlock("log not writing", _SENT, _log_not_writing, Enforcer.CONSOLE, False),
     Interlock("all-stop in force", _WHEEL, _all_stop, Enforcer.BOTH, False),
-    Interlock("restarted", _SENT, _restarted, Enforcer.BOTH, False),
+    Interlock("locked out", _WHEEL, _locked_out, Enforcer.BOTH, False),
+    Interlock("owned by another console", _SENT, _owned, Enforcer.BOTH, False),
+    Interlock("restarted", _SENT, _not_following, Enforcer.BOTH, False),
     Interlock("address shared", _WHEEL, _address_shared, Enforcer.CONSOLE, False),
     Interlock("telemetry too old", _WHEEL, _telemetry_old, Enforcer.CONSOLE, False),
+    Interlock("fault standing", _WHEEL, _fault_standing, Enforcer.BOTH, False),
+    Interlock("clock unknown", _WHEEL, _clock_unknown, Enforcer.BOTH, False),
+    Interlock("permit refused", _WHEEL, _permit_refused, Enforcer.BOTH, False),
     Interlock("over the speed limit", _WHEEL, _over_speed_limit, Enforcer.BOTH, False),
     Interlock("battery low", _WHEEL, _battery_low, Enforcer.BOTH, False),
-    Interlock("wheel axis upright", _BRAKED, _axis_upright, Enforcer.BOTH, False),
+    Interlock("wheel axis wrong", _BRAKED, _axis_wrong, Enforcer.BOTH, False),
     Interlock("not settled", _WHEEL, _not_settled, Enforcer.BOTH, False),
 )
 """Every interlock, the ones that concern the whole fleet first. A flash turns no wheel and helps

@@ -69,6 +69,10 @@ class Outbox:
         else:
             self._plain.append((address, frame))
 
+    def line_ns(self, n_bytes: int) -> int:
+        """How long so many bytes take on this line, either way."""
+        return self._pacer.duration_ns(n_bytes)
+
     def drop_plain(self, address: int | None = None) -> int:
         """Forget what is not urgent, for one address or for all, because a rest or an all-stop
         erases it; return how many frames."""

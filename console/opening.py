@@ -4,6 +4,7 @@ Owns that order and what is undone where a later step fails. Knows no screens.
 """
 
 import getpass
+import secrets
 from collections.abc import Sequence
 from dataclasses import dataclass
 from importlib.metadata import PackageNotFoundError, version
@@ -88,6 +89,7 @@ def _start(ports: Sequence[Port], options: SessionOptions, keys: KeyRing | None)
         pace=pace,
         program=program_name(),
         sealed=seal is not None,
+        console=1 + secrets.randbelow(0xFFFF_FFFF),
     )
     try:
         log = LogWriter.open(options.log or default_log_path(), opened)

@@ -12,7 +12,7 @@ from typing import Final, NoReturn
 from console.errors import InputError
 from console.near_miss import did_you_mean
 
-LATER_WORDS: Final = frozenset({"hop", "twist", "wall", "crest", "flat", "group", "together"})
+LATER_WORDS: Final = frozenset({"wall", "crest", "flat", "group"})
 """Words of motions, settings and subjects that this version does not carry out."""
 
 MAX_SHOWN: Final = 40

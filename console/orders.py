@@ -6,12 +6,21 @@ wire layout; the reading of words is order_words.py's.
 
     order     = subjects motion
     subjects  = "all" | name {"," name}
-    motion    = "pivot" direction "at" speed ["rpm"] ["on" setting]
+    motion    = "pivot" direction "at" speed ["rpm"] ["on" setting] ["together"]
+              | "hop" [direction] "at" speed ["rpm"] ["together"]
+              | "twist" direction "at" speed ["rpm"] ["together"]
               | "spin" [direction] "at" speed ["rpm"] ["for" seconds "s"]
               | "rest"
               | "flash" ["for" seconds "s"]
+              | "lock" "by" person
+              | "unlock" "by" person
+              | "set" item "to" number
     direction = "forward" | "back"
     setting   = "floor"
+    item      = "wheel-limit" | "telemetry-period" | "battery-low" | "groups"
+
+A person is a word, or several in quotation marks. Limits are in rpm, periods in ms, voltages in
+mV; groups are the sum of 1 for the first, 2 for the second, 4 for the third and so on.
 
 Letter case does not matter. A name with a space, a comma or a quotation mark in it, or one that
 reads ``all``, stands in quotation marks, with a mark inside written twice.
@@ -27,7 +36,8 @@ from typing import Final, NoReturn
 from console.errors import InputError
 from console.near_miss import did_you_mean
 from console.order_words import LATER_WORDS, Token, Words, tokenise
-from protocol.codes import Direction, Setting
+from protocol.codes import Direction, Setting, SettingId
+from protocol.message import field_text, text_field
 
 DEFAULT_SPIN_MS: Final = 5_000
 DEFAULT_FLASH_MS: Final = 2_000
@@ -38,8 +48,19 @@ MAX_SPIN_RPM: Final = 0x7FFF
 """What the fields of the two commands can carry; a module's own limit is an interlock."""
 
 EVERYONE: Final = "all"
+BRAKING: Final = frozenset({"pivot", "hop", "twist"})
+"""Motions: what brakes the wheel."""
+DRIVES: Final = BRAKING | {"spin"}
+"""What turns the wheel."""
 DIRECTIONS: Final = {"forward": Direction.FORWARD, "back": Direction.BACK}
 SETTINGS: Final = {"floor": Setting.FLOOR}
+ITEMS: Final = {
+    "wheel-limit": SettingId.WHEEL_LIMIT_RPM,
+    "telemetry-period": SettingId.TELEMETRY_PERIOD_MS,
+    "battery-low": SettingId.BATTERY_LOW_MV,
+    "groups": SettingId.GROUPS,
+}
+_ITEM_WORDS: Final = {int(item): word for word, item in ITEMS.items()}
 
 _A_NAME: Final = f"a module name or {EVERYONE!r}"
 _ANOTHER_NAME: Final = "another module name"
@@ -49,13 +70,17 @@ _PASSED_OVER: Final = frozenset({"rpm"})
 _PLAIN_NAME: Final = re.compile(r'[^\s,"]+')
 _BETWEEN_WORDS: Final = re.compile(r"[\s,]\Z")
 _SPEED: Final = re.compile(r"[0-9]+")
+_NUMBER: Final = re.compile(r"-?[0-9]{1,10}")
+_MOST: Final = 2**31 - 1
 _SECONDS: Final = re.compile(r"([0-9]{1,6}(?:\.[0-9]{1,3})?)(s?)")
 
 
 @dataclass(frozen=True, slots=True)
 class Order:
     """What a person or a sheet asks for. ``subjects`` empty: everyone. ``speed_rpm`` is never
-    negative; ``direction`` tells the sense. Fields that the motion lacks are None or 0."""
+    negative; ``direction`` tells the sense. ``together``: all at one agreed time. ``person`` puts
+    a lock on or takes it off; ``item`` is the number of a setting that gets ``value``. Fields
+    that the motion lacks are None, 0, empty or False."""
 
     subjects: tuple[str, ...]
     motion: str
@@ -63,6 +88,10 @@ class Order:
     direction: Direction | None
     speed_rpm: int
     duration_ms: int
+    together: bool = False
+    person: str = ""
+    item: int = 0
+    value: int = 0
 
 
 def parse_order(text: str, known_names: Sequence[str]) -> Order:
@@ -110,6 +139,12 @@ def render(order: Order) -> str:
         parts.append(f"on {order.setting.name.lower()}")
     if order.duration_ms:
         parts.append(f"for {order.duration_ms / 1000:g} s")
+    if order.person:
+        parts.append(f"by {_shown(order.person)}")
+    if order.item:
+        parts.append(f"{_ITEM_WORDS[order.item]} to {order.value}")
+    if order.together:
+        parts.append("together")
     return " ".join(parts)
 
 
@@ -234,6 +269,29 @@ def _time(words: Words, order: Order) -> Order:
     return replace(order, duration_ms=duration_ms)
 
 
+def _together(words: Words, order: Order) -> Order:
+    return replace(order, together=bool(words.take("together")))
+
+
+def _person(words: Words, order: Order) -> Order:
+    words.need("'by' and a person's name", "by", example="by Ada")
+    token = words.token
+    if token is None or not token.text.strip() or token.folded == ",":
+        words.fail("a person's name", "by Ada")
+    words.advance()
+    return replace(order, person=field_text(text_field(token.text.strip())))
+
+
+def _item(words: Words, order: Order) -> Order:
+    word = words.need(f"a setting ({', '.join(ITEMS)})", *ITEMS, example="wheel-limit to 6000")
+    words.need("'to' and a number", "to", example="to 6000")
+    token = words.token
+    if token is None or not _NUMBER.fullmatch(token.folded) or abs(int(token.folded)) > _MOST:
+        words.fail("a whole number", "to 6000")
+    words.advance()
+    return replace(order, item=int(ITEMS[word]), value=int(token.folded))
+
+
 @dataclass(frozen=True, slots=True)
 class _Motion:
     """One row of the grammar: the order before anything is said, and its clauses in turn."""
@@ -243,11 +301,20 @@ class _Motion:
 
 
 _MOTIONS: Final = {
-    "pivot": _Motion(Order((), "pivot", Setting.FLOOR, None, 0, 0), (_direction, _speed, _setting)),
+    "pivot": _Motion(
+        Order((), "pivot", Setting.FLOOR, None, 0, 0), (_direction, _speed, _setting, _together)
+    ),
+    "hop": _Motion(
+        Order((), "hop", None, Direction.FORWARD, 0, 0), (_direction_if_any, _speed, _together)
+    ),
+    "twist": _Motion(Order((), "twist", None, None, 0, 0), (_direction, _speed, _together)),
     "spin": _Motion(
         Order((), "spin", None, Direction.FORWARD, 0, DEFAULT_SPIN_MS),
         (_direction_if_any, _speed, _time),
     ),
     "rest": _Motion(Order((), "rest", None, None, 0, 0), ()),
     "flash": _Motion(Order((), "flash", None, None, 0, DEFAULT_FLASH_MS), (_time,)),
+    "lock": _Motion(Order((), "lock", None, None, 0, 0), (_person,)),
+    "unlock": _Motion(Order((), "unlock", None, None, 0, 0), (_person,)),
+    "set": _Motion(Order((), "set", None, None, 0, 0), (_item,)),
 }

@@ -4,14 +4,28 @@ Knows names, addresses and wire numbers; sends nothing and records nothing.
 """
 
 from collections.abc import Callable, MutableMapping, Sequence
+from dataclasses import dataclass
 from typing import Final
 
 from console.errors import InputError
-from console.orders import Order
+from console.orders import DRIVES, Order
+from console.upkeep import ClockOf, latest_start_ms
 from console.view import ModuleView
 from protocol.codes import Direction, Setting, identity_bits
 from protocol.command_memory import next_number
-from protocol.message import Command, Flash, Pivot, Rest, Spin
+from protocol.message import (
+    Command,
+    Flash,
+    Hop,
+    LockOut,
+    Pivot,
+    Rest,
+    SettingWrite,
+    Spin,
+    Twist,
+    Unlock,
+    text_field,
+)
 from storage.records import PlannedCommand
 
 
@@ -37,14 +51,25 @@ def count_on(numbers: MutableMapping[int, int], module: int) -> int:
     return numbers[module]
 
 
+@dataclass(frozen=True, slots=True)
+class Plan:
+    """What the commands of one order share. ``stage`` 0: each starts at once; ``latest_ns``:
+    fleet time after which no motion of it may start."""
+
+    epoch: int
+    trial: int = 0
+    stage: int = 0
+    latest_ns: int = 0
+
+
 def build_commands(
     order: Order,
     modules: Sequence[ModuleView],
+    plan: Plan,
     *,
     last_command: int,
     numbers: MutableMapping[int, int],
-    epoch: int,
-    trial: int,
+    clock_of: ClockOf,
 ) -> tuple[PlannedCommand, ...]:
     """Make an order's commands, one a module, numbered on from ``last_command``."""
     return tuple(
@@ -53,44 +78,66 @@ def build_commands(
             module=module.module,
             identity=module.identity,
             boot=module.boot,
-            epoch=epoch,
+            epoch=plan.epoch,
             number=count_on(numbers, module.module),
             motion=order.motion,
-            setting=order.setting or 0,
+            setting=order.item or order.setting or 0,
             direction=order.direction or 0,
             speed_rpm=order.speed_rpm,
             duration_ms=order.duration_ms,
-            trial=trial,
+            trial=plan.trial,
+            latest_ms=_latest_ms(order, module, plan, clock_of),
+            stage=plan.stage,
+            person=order.person,
+            value=order.value,
         )
         for count, module in enumerate(modules, start=1)
     )
 
 
-def _pivot(planned: PlannedCommand, bits: int) -> Command:
+def _latest_ms(order: Order, module: ModuleView, plan: Plan, clock_of: ClockOf) -> int:
+    clock = clock_of(module.module) if order.motion in DRIVES else None
+    return 0 if clock is None else latest_start_ms(clock, plan.latest_ns)
+
+
+def _envelope(planned: PlannedCommand) -> tuple[int, int, int, int]:
+    return planned.epoch, planned.boot, planned.number, identity_bits(planned.identity)
+
+
+def _start(planned: PlannedCommand) -> tuple[int, int]:
+    return planned.latest_ms, planned.stage
+
+
+def _pivot(planned: PlannedCommand) -> Command:
     setting, direction = Setting(planned.setting), Direction(planned.direction)
-    envelope = (planned.epoch, planned.boot, planned.number, bits)
-    return Pivot(*envelope, setting, direction, planned.speed_rpm)
+    return Pivot(*_envelope(planned), *_start(planned), setting, direction, planned.speed_rpm)
 
 
-def _spin(planned: PlannedCommand, bits: int) -> Command:
+def _hop(planned: PlannedCommand) -> Command:
+    direction = Direction(planned.direction)
+    return Hop(*_envelope(planned), *_start(planned), direction, planned.speed_rpm)
+
+
+def _twist(planned: PlannedCommand) -> Command:
+    direction = Direction(planned.direction)
+    return Twist(*_envelope(planned), *_start(planned), direction, planned.speed_rpm)
+
+
+def _spin(planned: PlannedCommand) -> Command:
     speed_rpm = planned.speed_rpm * (planned.direction or Direction.FORWARD)
-    envelope = (planned.epoch, planned.boot, planned.number, bits)
-    return Spin(*envelope, speed_rpm, planned.duration_ms)
+    return Spin(*_envelope(planned), planned.latest_ms, speed_rpm, planned.duration_ms)
 
 
-def _rest(planned: PlannedCommand, bits: int) -> Command:
-    return Rest(planned.epoch, planned.boot, planned.number, bits)
-
-
-def _flash(planned: PlannedCommand, bits: int) -> Command:
-    return Flash(planned.epoch, planned.boot, planned.number, bits, planned.duration_ms)
-
-
-_MESSAGES: Final[dict[str, Callable[[PlannedCommand, int], Command]]] = {
+_MESSAGES: Final[dict[str, Callable[[PlannedCommand], Command]]] = {
     "pivot": _pivot,
+    "hop": _hop,
+    "twist": _twist,
     "spin": _spin,
-    "rest": _rest,
-    "flash": _flash,
+    "rest": lambda planned: Rest(*_envelope(planned)),
+    "flash": lambda planned: Flash(*_envelope(planned), planned.duration_ms),
+    "lock": lambda planned: LockOut(*_envelope(planned), text_field(planned.person)),
+    "unlock": lambda planned: Unlock(*_envelope(planned), text_field(planned.person)),
+    "set": lambda planned: SettingWrite(*_envelope(planned), planned.setting, planned.value),
 }
 
 
@@ -101,4 +148,4 @@ def to_message(planned: PlannedCommand) -> Command:
         make = _MESSAGES[planned.motion]
     except KeyError as error:
         raise InputError(f"{planned.motion} cannot be sent in this version") from error
-    return make(planned, identity_bits(planned.identity))
+    return make(planned)

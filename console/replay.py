@@ -75,6 +75,9 @@ class ReplayPlayer:
         """Refused: raises InputError."""
         self._refuse()
 
+    def beat(self) -> None:
+        """A replay drives no wheels and needs no sign of life."""
+
     def stop(self, source: str) -> None:
         """Sends nothing, and says so among the notices: the key must never seem dead."""
         self._note(f"{NEVER_TRANSMITS}: no all-stop was sent")

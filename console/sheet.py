@@ -17,7 +17,7 @@ from typing import Final, TypeVar
 
 from console.errors import InputError
 from console.order_words import LATER_WORDS
-from console.orders import MAX_PIVOT_RPM, SETTINGS
+from console.orders import BRAKING, MAX_PIVOT_RPM, SETTINGS
 from console.toml_file import TomlFile, is_whole, read_text
 from protocol.codes import Setting
 
@@ -157,7 +157,7 @@ def _modules(file: TomlFile) -> tuple[str, ...]:
 
 def _word(file: TomlFile, key: str, choices: tuple[str, ...], default: str | None) -> str:
     value = file.table.get(key, default)
-    if isinstance(value, str) and value in LATER_WORDS:
+    if isinstance(value, str) and value in (LATER_WORDS | BRAKING) - set(choices):
         raise InputError(f"{file.wrong(key, ' or '.join(choices))}; {value} is not in this version")
     return file.choice(key, choices, default)
 

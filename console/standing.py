@@ -3,7 +3,7 @@
 Owns two small schedules. Time is an argument; neither sends anything, they say what is due.
 """
 
-from collections.abc import Callable, Sequence
+from collections.abc import Callable
 from typing import Final
 
 from console.view import FleetView, ModuleView
@@ -46,9 +46,25 @@ class RollCaller:
         return True
 
 
-def unexplained(modules: Sequence[ModuleView], epoch: int, unknown_heard: bool) -> bool:
-    """Whether the roll must be called: a stranger, a module of another epoch, or no nameplate."""
-    return unknown_heard or any(module.epoch != epoch or not module.kind for module in modules)
+def unexplained(fleet: FleetView, unknown_heard: bool) -> bool:
+    """Whether the roll must be called: a stranger, a module that does not follow this console
+    though nobody else owns it, or no nameplate."""
+    return unknown_heard or any(
+        not module.kind or (not follows(module, fleet) and not owned_by_another(module, fleet))
+        for module in fleet.modules
+    )
+
+
+def follows(module: ModuleView, fleet: FleetView) -> bool:
+    """Whether the module follows this console, as last heard."""
+    return (module.epoch, module.console) == (fleet.epoch, fleet.console)
+
+
+def owned_by_another(module: ModuleView, fleet: FleetView) -> bool:
+    """Whether another console owns the module: as long as it said, and a little for the way."""
+    if module.console in (0, fleet.console):
+        return False
+    return fleet.t_ns < module.owner_heard_ns + module.owner_left_ms * 1_000_000
 
 
 class StopKeeper:

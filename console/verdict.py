@@ -1,7 +1,12 @@
 """The verdict: from the facts that a module measured to the outcome of its motion.
 
-Owns the thresholds and their order. Must not know records, tables or who ordered what: facts
-stay as they were measured, and a verdict can be drawn from them again at any time.
+Owns the thresholds and their order, a table for each motion. Must not know records, tables or who
+ordered what: facts stay as they were measured, and a verdict can be drawn from them again at any
+time.
+
+A pivot lands one face on. A hop lands if the body left its place and settled on a face, whichever:
+facts do not say where on the floor it came down, so it has neither short nor over. A twist lands
+if it turned by an eighth of a turn or more, either way: no order says yet how far it should.
 """
 
 from collections.abc import Callable
@@ -19,6 +24,9 @@ LIFT_DDEG: Final = 20
 Play of the hinge, the give of a soft floor and the noise of the accelerometer at the jolt of the
 brake stay under one degree (common practice of the trade: twice the noise); a body that lifts at
 all goes well past two."""
+
+TWIST_DDEG: Final = 450
+"""Angle turned from which a twist has landed: half a quarter turn, in tenths of a degree."""
 
 END_FACES: Final = frozenset({5, 6})
 """Faces on the ends of the wheel axis. No motion about that axis leads onto or off them."""
@@ -45,9 +53,13 @@ def _cut_before_brake(facts: Facts) -> bool:
     return facts.reason != Reason.NONE and not braked
 
 
+def _on_no_face(facts: Facts) -> bool:
+    return not facts.settled or facts.face_after == 0
+
+
 def _adrift(facts: Facts) -> bool:
     tipped = (facts.face_before in END_FACES) != (facts.face_after in END_FACES)
-    return not facts.settled or facts.face_after == 0 or tipped
+    return _on_no_face(facts) or tipped
 
 
 def _never_moved(facts: Facts) -> bool:
@@ -56,16 +68,31 @@ def _never_moved(facts: Facts) -> bool:
     return abs(facts.turned_ddeg if flat else facts.peak_tilt_ddeg) < LIFT_DDEG
 
 
-_VERDICTS: Final[tuple[tuple[Outcome, Callable[[Facts], bool]], ...]] = (
+_Table = tuple[tuple[Outcome, Callable[[Facts], bool]], ...]
+_PIVOT: Final[_Table] = (
     (Outcome.CUT, _cut_before_brake),
     (Outcome.ADRIFT, _adrift),
     (Outcome.STUCK, _never_moved),
     (Outcome.OVER, lambda facts: faces_turned(facts) >= 2),
     (Outcome.LANDED, lambda facts: faces_turned(facts) == 1),
 )
-"""The first that holds is the verdict; where none does, the body lifted and fell back."""
+_HOP: Final[_Table] = (
+    (Outcome.CUT, _cut_before_brake),
+    (Outcome.ADRIFT, _on_no_face),
+    (Outcome.STUCK, _never_moved),
+    (Outcome.LANDED, lambda facts: True),
+)
+_TWIST: Final[_Table] = (
+    (Outcome.CUT, _cut_before_brake),
+    (Outcome.ADRIFT, _adrift),
+    (Outcome.STUCK, lambda facts: abs(facts.turned_ddeg) < LIFT_DDEG),
+    (Outcome.LANDED, lambda facts: abs(facts.turned_ddeg) >= TWIST_DDEG),
+)
+_VERDICTS: Final[dict[str, _Table]] = {"pivot": _PIVOT, "hop": _HOP, "twist": _TWIST}
+"""The first that holds is the verdict; where none does, the body moved and did not get there."""
 
 
-def verdict(facts: Facts) -> Outcome:
+def verdict(facts: Facts, motion: str = "pivot") -> Outcome:
     """Draw the outcome of a motion from its facts. Pure; never UNSEEN or REFUSED."""
-    return next((outcome for outcome, holds in _VERDICTS if holds(facts)), Outcome.SHORT)
+    table = _VERDICTS.get(motion, _PIVOT)
+    return next((outcome for outcome, holds in table if holds(facts)), Outcome.SHORT)

@@ -51,6 +51,32 @@ class ModuleView:
     """The command in hand, in words, or empty."""
     shares_address: bool = False
     """Whether another box was heard at its address."""
+    console: int = 0
+    """Console that it follows, 0 for none, as its last presence said; ``owner_left_ms``: how long
+    it follows no other from ``owner_heard_ns`` on."""
+    owner_left_ms: int = 0
+    owner_heard_ns: int = 0
+    locked_by: str | None = None
+    """Who has locked it out: None for nobody, empty where the name is not known."""
+    faults: tuple[str, ...] = ()
+    """Faults that stand, lower-case names, in the order of their codes; ``unnamed`` alone where
+    only a flag has told of one."""
+    clock_bound_ms: float | None = None
+    """How far the console's estimate of its clock may be wrong, as of its last word;
+    ``clock_offset_ms``: module time less fleet time, as of the last exchange. None before one."""
+    clock_offset_ms: float | None = None
+    round_trip_ms: float | None = None
+    """Shortest of the last eight exchanges."""
+    groups: int = 0
+    """Bit n: it is in group n; 0 before its settings were read."""
+    settings: tuple[tuple[int, int], ...] = ()
+    """Setting number and value of those read so far, in order; ``settings_total``: how many it
+    has, 0 before one was read."""
+    settings_total: int = 0
+    permitted: bool = False
+    """Whether it holds a drive permit."""
+    staged: bool = False
+    """Whether a motion waits for its Go."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -67,6 +93,7 @@ class CommandView:
     reason: str
     final: bool
     outcome: Outcome | None
+    accepted: bool = False
 
 
 @dataclass(frozen=True, slots=True)
@@ -97,6 +124,22 @@ class LinkView:
 
 
 @dataclass(frozen=True, slots=True)
+class BridgeView:
+    """The bridge of one link, as it last said of itself; counts are since its start."""
+
+    link: int
+    uptime_ms: int
+    frames_from_console: int
+    frames_to_console: int
+    dropped: int
+    queue: int
+    queue_most: int
+    signal_dBm: int
+    noise_dBm: int
+    heard_t_ns: int
+
+
+@dataclass(frozen=True, slots=True)
 class FleetView:
     """The whole fleet at one moment. ``notices`` are the newest lines a person should read,
     oldest first, each (t_ns, text)."""
@@ -112,6 +155,8 @@ class FleetView:
     notices: tuple[tuple[int, str], ...]
     closed: bool
     sealed: bool = False
+    console: int = 0
+    bridges: tuple[BridgeView, ...] = ()
 
 
 class FleetSource(Protocol):
@@ -127,6 +172,10 @@ class FleetSource(Protocol):
 
     def order(self, text: str) -> str:
         """Take a typed order; return what was done with it, one line. Raises InputError."""
+        ...
+
+    def beat(self) -> None:
+        """Give a sign of life: without one the drive permits lapse. Never blocks."""
         ...
 
     def stop(self, source: str) -> None:

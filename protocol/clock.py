@@ -77,12 +77,15 @@ class ModuleClock:
         self._samples: deque[ClockSample] = deque(maxlen=SAMPLES_KEPT)
         self._anchor: ClockSample | None = None
         """The sample that the drift is measured from."""
+        self.exchanges = 0
+        """How many were had since the clock was last void."""
 
     def sample(self, t1_ns: int, t2_ns: int, t3_ns: int, t4_ns: int) -> ClockSample:
         """Take one exchange. Raises RemoteProtocolError as reduce_timestamps does; nothing is
         taken then."""
         taken = reduce_timestamps(t1_ns, t2_ns, t3_ns, t4_ns)
         self._samples.append(taken)
+        self.exchanges += 1
         if self._beats_anchor(taken):
             self._anchor = taken
         return taken
@@ -91,6 +94,7 @@ class ModuleClock:
         """Forget everything: the module restarted, or the computer was suspended."""
         self._samples.clear()
         self._anchor = None
+        self.exchanges = 0
 
     @property
     def drift_ppm(self) -> float:

@@ -135,6 +135,13 @@ class CommandExchange:
         lane = self._lanes.get(destination)
         return lane is not None and bool(lane.in_hand or lane.waiting)
 
+    def awaits_answer(self, destination: int) -> bool:
+        """Say whether something was sent to this module that it has not answered yet."""
+        lane = self._lanes.get(destination)
+        return lane is not None and any(
+            entry.phase is not Phase.RUNNING for entry in lane.in_hand.values()
+        )
+
     def submit(self, command: int, destination: int, message: Command, t_ns: int) -> list[Step]:
         """Take a command, ``command`` being its name in what comes back.
 

@@ -9,8 +9,9 @@ import math
 from collections.abc import Callable
 from typing import Final
 
-from protocol.codes import Flags, Reason, identity_bits
-from protocol.message import Facts, Pivot, Telemetry
+from protocol.codes import Activity, Reason, identity_bits
+from protocol.message import Facts, Motion, Telemetry
+from sim_link.box import Box
 from sim_link.drive import Drive
 from sim_link.errors import SimStateError
 from sim_link.mechanics import MotionResult
@@ -35,13 +36,13 @@ _TURNING_RPM: Final = 1.0
 """Below this the wheel's sensor sees no pulses and reports exactly zero."""
 
 
-def facts(command: Pivot, reason: Reason, drive: Drive, draws: Draws, t_ns: int) -> Facts:
+def facts(command: Motion, reason: Reason, box: Box, draws: Draws, t_ns: int) -> Facts:
     """Make the facts of the drive's last motion, which ``command`` asked for.
 
     A motion cut short before its brake has no brake time, and shows what the body did
     nevertheless: nothing, if the rest was as gentle as it should be.
     """
-    motion = drive.motion
+    drive, motion = box.drive, box.drive.motion
     if motion is None:
         raise SimStateError("facts were asked for before any motion")
     posture = drive.body.posture(t_ns)
@@ -67,6 +68,7 @@ def facts(command: Pivot, reason: Reason, drive: Drive, draws: Draws, t_ns: int)
         spin_up_ms=_field((spun_up_ns - motion.start_ns) / 1e6, _U16),
         settle_ms=0,
         sag_mV=_field(motion.sag_V * 1e3 + _SAG_NOISE_MV * noise("sag"), _U16),
+        started_ms=box.boot.time.ms(motion.start_ns),
     )
     if motion.result is None:
         return measured
@@ -110,25 +112,21 @@ class Reporter:
         """Number reports from the start again, as a fresh boot does."""
         self._sequence = 0
 
-    def telemetry(
-        self, drive: Drive, latched: bool, boot: int, boot_ns: int, t_ns: int
-    ) -> Telemetry:
-        """Make the next report, as measured at ``t_ns``; the module started at ``boot_ns``."""
+    def telemetry(self, box: Box, activity: Activity, t_ns: int) -> Telemetry:
+        """Make the next report, as measured at ``t_ns``."""
+        drive = box.drive
         drive.supply.account(t_ns)
         posture = drive.body.posture(t_ns)
         self._sequence = (self._sequence + 1) & _U16[1]
         self._reports += 1
-        flags = Flags.LATCHED if latched else Flags(0)
-        flags |= Flags.BATTERY_LOW if drive.supply.battery.low else Flags(0)
-        flags |= Flags(0) if posture.settled else Flags.UNSETTLED
         battery_mV = drive.supply.terminal_V(t_ns) * 1e3
         temperature_cC = drive.supply.warmth.temperature_C(t_ns) * 100.0
         return Telemetry(
-            boot=boot,
+            boot=box.boot.number,
             sequence=self._sequence,
-            time_ms=uptime_ms(boot_ns, t_ns),
-            activity=drive.activity,
-            flags=flags,
+            time_ms=box.boot.time.ms(t_ns),
+            activity=activity,
+            flags=box.flags(t_ns),
             face_up=posture.face_up,
             wheel_rpm=wheel_rpm(drive, t_ns),
             battery_mV=_field(battery_mV + _BATTERY_NOISE_MV * self._noise("battery"), _U16),
@@ -141,11 +139,6 @@ class Reporter:
 
     def _noise(self, what: str) -> float:
         return self._draws.normal(self._reports, "reported " + what)
-
-
-def uptime_ms(boot_ns: int, t_ns: int) -> int:
-    """Return milliseconds since the module started, modulo 2**32."""
-    return ((t_ns - boot_ns) // 1_000_000) & _U32[1]
 
 
 def _ddeg(angle_rad: float) -> float:

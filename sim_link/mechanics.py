@@ -15,7 +15,7 @@ from sim_link import contact, kinds
 from sim_link.errors import SimStateError
 from sim_link.hold import GRAVITY_M_S2, Hold, floor_hold
 from sim_link.kinds import Kind
-from sim_link.motion import Moment, MotionResult
+from sim_link.motion import Moment, MotionResult, Watch
 from sim_link.tumble import tumble
 
 __all__ = [
@@ -215,16 +215,23 @@ def _least_speed(
     return high
 
 
-def floor_pivot(kind: Kind, wheel_rad_s: float, face_up: int = 1, sense: int = 1) -> MotionResult:
+def floor_pivot(
+    kind: Kind,
+    wheel_rad_s: float,
+    face_up: int = 1,
+    sense: int = 1,
+    watch: Watch | None = None,
+) -> MotionResult:
     """What braking at this wheel speed does to a module on the floor.
 
     ``wheel_rad_s`` is the speed in the ordered sense, at least zero; angles and faces of the
-    result are positive in it. Raises SimStateError for a speed or posture that cannot be.
+    result are positive in it. ``watch`` is shown every moment computed. Raises SimStateError for
+    a speed or posture that cannot be.
     """
     _check_posture(face_up, sense, 4)
     if not 0.0 <= wheel_rad_s < math.inf:
         raise SimStateError(f"wheel speed {wheel_rad_s} rad/s: zero or more is needed")
-    return tumble(contact.body_of(kind, face_up, sense), kind.brake_onset_s, wheel_rad_s)
+    return tumble(contact.body_of(kind, face_up, sense), kind.brake_onset_s, wheel_rad_s, watch)
 
 
 def tipping_torque_N_m(kind: Kind, face_up: int, sense: int) -> float:

@@ -1,131 +1,168 @@
 """One virtual module: the firmware side of the protocol, without any input or output.
 
-Owns what a module answers: roll call, commands with their interlocks, the all-stop latch,
-telemetry, and a restart. What is done with the wheel is drive.py's; that a number is carried
-out at most once is the command memory's. Packets in, packets out; time is an argument.
+Owns what a module answers to everything that is no command: roll call, questions, permits, the
+all-stop latch; and its telemetry and restarts. Commands are works.py's. Packets in, packets out;
+time is an argument.
 
-The all-stop latch, its number and the boot number outlast a restart, as in a module that keeps
-them in non-volatile memory: a restart must not lift an all-stop.
+What a Box holds outlasts a restart, as in a module that keeps it in non-volatile memory: a
+restart must lift neither an all-stop nor a person's lock.
 """
 
 from collections.abc import Callable, Mapping
-from dataclasses import dataclass
-from typing import Any, Final
+from typing import Any, Final, get_args
 
 from protocol.codes import (
     CONSOLE_ADDRESS,
-    EVERYONE_ADDRESS,
     Activity,
-    AnswerState,
+    Fault,
     Reason,
+    SettingId,
+    concerns,
     identity_bits,
 )
-from protocol.command_memory import CommandMemory, Reply
 from protocol.message import (
-    Answer,
     Clear,
     Command,
-    Flash,
+    Echo,
+    FaultNotice,
+    Go,
     Message,
     Nameplate,
     Packet,
-    Pivot,
+    Permit,
     Presence,
+    Probe,
     Query,
-    Rest,
+    Release,
     RollCall,
-    Spin,
+    SettingAsk,
     Stop,
     Stopped,
-    text_field,
+    TraceAsk,
 )
+from sim_link.box import Boot, Box
 from sim_link.drive import Drive
 from sim_link.fleet_file import ModuleSpec
-from sim_link.measure import Reporter, facts, uptime_ms, wheel_rpm
+from sim_link.measure import Reporter, wheel_rpm
+from sim_link.module_time import DRIFT_LIMIT_PPM, ModuleTime
 from sim_link.options import FaultKind
 from sim_link.randomness import Draws
-from sim_link.refusals import refusal
+from sim_link.settings import Settings
 from sim_link.tally import TallyEntry
+from sim_link.works import Works
 
-FIRMWARE: Final = 0x0100
-"""Version of this virtual firmware: 1.0."""
-
-_MAX_EXPECT_MS: Final = 0xFFFF
-_MOTIONS: Final[Mapping[type[Any], str]] = {
-    Pivot: "pivot",
-    Spin: "spin",
-    Rest: "rest",
-    Flash: "flash",
-}
-_AT_REST: Final = frozenset({Activity.STILL, Activity.FLASHING})
-_TO_ANYBODY: Final = (RollCall, Stop, Clear)
-"""What may be sent to everyone; a command to everyone is ignored."""
-
-
-@dataclass(slots=True)
-class _Owed:
-    """A command that was accepted and whose end is still to be reported."""
-
-    command: Command
-    cut: Reason = Reason.NONE
+_TO_ANYBODY: Final = (RollCall, Permit, Release, Go, Stop, Clear)
+"""What may be sent to a group or to everyone; anything else sent so is dropped."""
+_NS_PER_MS: Final = 1_000_000
 
 
 class VirtualModule:
-    """One module of the simulated fleet. ``tally`` is called as commands are carried out."""
+    """One module of the simulated fleet. ``tally`` is called as commands are carried out;
+    ``boot`` and ``drift_ppm`` None: drawn from the seed."""
 
     def __init__(
-        self, spec: ModuleSpec, seed: int, tally: Callable[[TallyEntry], None] | None = None
+        self,
+        spec: ModuleSpec,
+        seed: int,
+        tally: Callable[[TallyEntry], None] | None = None,
+        *,
+        boot: int | None = None,
+        drift_ppm: float | None = None,
     ) -> None:
         draws = Draws(seed, spec.identity)
+        number = 1 + draws.word(0, "boot") % 0x7FFF_FFFF if boot is None else boot
+        drawn_ppm = DRIFT_LIMIT_PPM * (2.0 * draws.uniform(0, "drift") - 1.0)
+        self._drift_ppm = drawn_ppm if drift_ppm is None else drift_ppm
+        first = Boot(number, spec.identity, ModuleTime(0, self._drift_ppm))
         self.spec = spec
-        self.drive = Drive(spec, draws)
-        self.latched = False
-        self.stop_number = 0
-        self.boot = 1 + draws.word(0, "boot") % 0x7FFF_FFFF
-        self.boot_ns = 0
-        self._draws = draws
-        self._tally = tally
-        self._memory = CommandMemory(self.boot, spec.identity)
+        self.box = Box(spec, Drive(spec, draws), Settings(spec), first)
+        self.works = Works(self.box, draws, self._telemetry, self._fault_notice, tally)
         self._reporter = Reporter(spec.identity, draws)
-        self._owed: list[_Owed] = []
-        self._period_ns = int(1e9 / spec.telemetry_hz)
         self._report_ns = int(self._period_ns * draws.uniform(0, "report phase"))
         self._faults = set(spec.faults)
         self._called = False
 
     @property
+    def drive(self) -> Drive:
+        """Wheel, brake, body and cell."""
+        return self.box.drive
+
+    @property
+    def boot(self) -> int:
+        """Number of the present boot."""
+        return self.box.boot.number
+
+    @property
+    def epoch(self) -> int:
+        """The console epoch that it follows, 0 for none."""
+        return self.box.boot.allegiance.epoch
+
+    @property
+    def latched(self) -> bool:
+        """Whether an all-stop is in force."""
+        return self.box.latched
+
+    @property
+    def stop_number(self) -> int:
+        """Newest all-stop it knows, 0 for none."""
+        return self.box.stop_number
+
+    @property
     def next_wake_ns(self) -> int:
         """When ``wake`` is next needed, if nothing is received before."""
-        due_ns = self.drive.due_ns
-        return self._report_ns if due_ns is None else min(due_ns, self._report_ns)
+        times = (self.box.drive.due_ns, self.works.due_ns, self._report_ns)
+        return min(each for each in times if each is not None)
+
+    @property
+    def _period_ns(self) -> int:
+        return self.box.settings.value(SettingId.TELEMETRY_PERIOD_MS) * _NS_PER_MS
 
     def receive(self, packet: Packet, t_ns: int) -> list[Packet]:
         """Take one packet at ``t_ns``; return what is sent, after what was due before."""
         sent = self.wake(t_ns)
         message = packet.message
-        to_all = packet.destination == EVERYONE_ADDRESS and isinstance(message, _TO_ANYBODY)
-        if not to_all and packet.destination != self.spec.address:
+        if not concerns(packet.destination, self.spec.address, self.box.settings.groups):
             return sent
         handler = _HANDLERS.get(type(message))
-        return sent if handler is None else sent + self._out(handler(self, message, t_ns))
+        alone = packet.destination == self.spec.address
+        if handler is None or not (alone or isinstance(message, _TO_ANYBODY)):
+            return sent
+        return sent + self._out(handler(self, message, t_ns))
 
     def wake(self, t_ns: int) -> list[Packet]:
         """Do all that is due by ``t_ns``, each at its own time; return what is sent."""
         said: list[Message] = []
-        while self.next_wake_ns <= t_ns:
-            now_ns = self.next_wake_ns
-            if self.drive.due_ns == now_ns:
-                said += self._entered(self.drive.step(), now_ns)
+        while (now_ns := self.next_wake_ns) <= t_ns:
+            if self.box.drive.due_ns == now_ns:
+                said += self._step(now_ns)
+            elif self.works.due_ns == now_ns:
+                said += self.works.wake(now_ns)
             else:
                 self._report_ns += self._period_ns
                 said.append(self._telemetry(now_ns))
         return self._out(said)
+
+    def _step(self, now_ns: int) -> list[Message]:
+        activity = self.box.drive.step()
+        said = self.works.entered(activity, now_ns)
+        if activity is Activity.BRAKING and FaultKind.RESTART_ON_BRAKE in self._faults:
+            self._faults.discard(FaultKind.RESTART_ON_BRAKE)
+            self._reboot(now_ns)
+            said = [self._telemetry(now_ns)]
+        return said
 
     def restart(self, t_ns: int) -> list[Packet]:
         """Restart the controller: a new boot number, an empty memory, the wheel to rest."""
         sent = self.wake(t_ns)
         self._reboot(t_ns)
         return sent + self._out([self._telemetry(t_ns)])
+
+    def _reboot(self, t_ns: int) -> None:
+        time = ModuleTime(t_ns, self._drift_ppm)
+        self.box.boot = Boot(self.boot + 1, self.spec.identity, time)
+        self.works.restart()
+        self._reporter.restart()
+        self.box.drive.recover(t_ns)
 
     def _out(self, said: list[Message]) -> list[Packet]:
         if FaultKind.SILENT in self._faults and self._called:
@@ -134,167 +171,110 @@ class VirtualModule:
         return [Packet(CONSOLE_ADDRESS, self.spec.address, each) for each in said]
 
     def _telemetry(self, t_ns: int) -> Message:
-        return self._reporter.telemetry(self.drive, self.latched, self.boot, self.boot_ns, t_ns)
+        return self._reporter.telemetry(self.box, self.works.activity, t_ns)
+
+    def _fault_notice(self, fault: Fault, t_ns: int) -> Message:
+        bits, time_ms = identity_bits(self.spec.identity), self.box.boot.time.ms(t_ns)
+        return FaultNotice(self.boot, bits, fault, int(fault in self.box.faults), time_ms, 0)
 
     # Messages that are no commands
 
     def _roll_call(self, call: RollCall, t_ns: int) -> list[Message]:
-        self._memory.roll_call(call.epoch)
-        spec, kind = self.spec, self.spec.kind
-        face_up = self.drive.body.posture(t_ns).face_up
-        uptime = uptime_ms(self.boot_ns, t_ns)
-        epoch, latched = self._memory.epoch, int(self.latched)
-        name, kind_name = text_field(spec.name), text_field(kind.name)
-        return [
-            Presence(spec.identity, self.boot, epoch, self.stop_number, latched, face_up, uptime),
-            Nameplate(spec.identity, int(kind.wheel_max_rpm), FIRMWARE, name, kind_name),
-        ]
+        box, boot = self.box, self.box.boot
+        changed: list[Message] = []
+        if boot.allegiance.roll_call(call.epoch, call.console, boot.time.ms(t_ns)):
+            boot.memory.adopt(call.epoch)
+            changed = self.works.adopted(t_ns)
+        said: list[Message] = [self._presence(t_ns), box.nameplate()]
+        if box.person:
+            said.append(box.lock_state())
+        said += [self._fault_notice(fault, t_ns) for fault in sorted(box.faults)]
+        return said + changed
+
+    def _presence(self, t_ns: int) -> Presence:
+        box, follows = self.box, self.box.boot.allegiance
+        now_ms = box.boot.time.ms(t_ns)
+        return Presence(
+            identity=self.spec.identity,
+            boot=self.boot,
+            epoch=follows.epoch,
+            console=follows.console,
+            stop_number=box.stop_number,
+            time_ms=now_ms,
+            owner_left_ms=min(follows.owner_left_ms(now_ms), 0xFFFF),
+            flags=box.flags(t_ns),
+            face_up=box.drive.body.posture(t_ns).face_up,
+        )
 
     def _query(self, query: Query, t_ns: int) -> list[Message]:
-        return [self._memory.query(query)]
+        return [self.box.boot.memory.query(query)]
+
+    def _probe(self, probe: Probe, t_ns: int) -> list[Message]:
+        """Answer with the times; take what the followed console makes of this clock."""
+        boot, bits = self.box.boot, identity_bits(self.spec.identity)
+        if (probe.boot, probe.identity_bits) != (boot.number, bits):
+            return []
+        boot.allegiance.hear_probe(probe, boot.time.ms(t_ns))
+        echo = Echo(boot.number, probe.sequence, bits, boot.time.us(t_ns), 0)
+        return [echo, *self.works.look_at_permit(t_ns)]
+
+    def _permit(self, permit: Permit, t_ns: int) -> list[Message]:
+        self.box.boot.allegiance.hear_permit(permit, self.box.boot.time.ms(t_ns))
+        return self.works.look_at_permit(t_ns)
+
+    def _release(self, release: Release, t_ns: int) -> list[Message]:
+        self.box.boot.allegiance.release(release.console)
+        return self.works.look_at_permit(t_ns)
+
+    def _go(self, go: Go, t_ns: int) -> list[Message]:
+        return self.works.go(go, t_ns)
+
+    def _setting_ask(self, ask: SettingAsk, t_ns: int) -> list[Message]:
+        return [self.box.settings.told(ask.setting, self.boot)]
+
+    def _trace_ask(self, ask: TraceAsk, t_ns: int) -> list[Message]:
+        bits = identity_bits(self.spec.identity)
+        if (ask.boot, ask.identity_bits) != (self.boot, bits):
+            return []
+        return list(self.works.traces.answer(ask, self.spec.identity))
 
     def _stop(self, stop: Stop, t_ns: int) -> list[Message]:
         """Latch and rest. An older number than the newest known is obeyed, and not kept."""
-        self.latched = True
-        self.stop_number = max(self.stop_number, stop.stop_number)
-        changed = self._rest_wheel(Reason.STOPPED, t_ns)
+        self.box.latched = True
+        self.box.stop_number = max(self.box.stop_number, stop.stop_number)
+        changed = self.works.rest_wheel(Reason.STOPPED, t_ns)
         return [self._stopped(t_ns), *changed]
 
     def _clear(self, clear: Clear, t_ns: int) -> list[Message]:
         """Lift the latch, but only for the newest stop this module knows."""
-        if clear.stop_number == self.stop_number:
-            self.latched = False
+        if clear.stop_number == self.box.stop_number:
+            self.box.latched = False
         return [self._stopped(t_ns)]
 
     def _stopped(self, t_ns: int) -> Stopped:
         return Stopped(
-            stop_number=self.stop_number,
-            latched=self.latched,
-            activity=self.drive.activity,
-            wheel_rpm=wheel_rpm(self.drive, t_ns),
+            stop_number=self.box.stop_number,
+            latched=self.box.latched,
+            activity=self.box.drive.activity,
+            wheel_rpm=wheel_rpm(self.box.drive, t_ns),
             boot=self.boot,
             identity_bits=identity_bits(self.spec.identity),
         )
 
-    # Commands
-
     def _command(self, command: Command, t_ns: int) -> list[Message]:
-        judged = self._memory.judge(command)
-        if isinstance(judged, Reply):
-            return [judged.message]
-        reason = refusal(command, self.drive, self.latched, t_ns)
-        if reason is not Reason.NONE:
-            return [self._answer(command, AnswerState.REFUSED, reason)]
-        return _STARTS[type(command)](self, command, t_ns)
-
-    def _start_pivot(self, pivot: Pivot, t_ns: int) -> list[Message]:
-        left_ns = self.drive.start_pivot(pivot.direction, pivot.speed_rpm, t_ns)
-        return self._accepted(pivot, left_ns, t_ns)
-
-    def _start_spin(self, spin: Spin, t_ns: int) -> list[Message]:
-        left_ns = self.drive.start_spin(spin.speed_rpm, spin.hold_ms * 1_000_000, t_ns)
-        self._count(spin, t_ns)
-        return self._accepted(spin, left_ns, t_ns)
-
-    def _start_flash(self, flash: Flash, t_ns: int) -> list[Message]:
-        left_ns = self.drive.start_flash(flash.duration_ms * 1_000_000, t_ns)
-        self._count(flash, t_ns)
-        return self._accepted(flash, left_ns, t_ns)
-
-    def _start_rest(self, rest: Rest, t_ns: int) -> list[Message]:
-        """Rest the wheel; where it is at rest already, the command is finished at once."""
-        self._count(rest, t_ns)
-        changed = self._rest_wheel(Reason.RESTED, t_ns)
-        if self.drive.activity in _AT_REST:
-            return [self._answer(rest, AnswerState.FINISHED)]
-        self._owed.append(_Owed(rest))
-        left_ns = self.drive.left_ns(t_ns)
-        return [self._answer(rest, AnswerState.ACCEPTED, left_ns=left_ns), *changed]
-
-    def _accepted(self, command: Command, left_ns: int, t_ns: int) -> list[Message]:
-        self._owed.append(_Owed(command))
-        answer = self._answer(command, AnswerState.ACCEPTED, left_ns=left_ns)
-        return [answer, self._telemetry(t_ns)]
-
-    def _rest_wheel(self, reason: Reason, t_ns: int) -> list[Message]:
-        """Start a gentle rest, if there is anything to rest; note what it cuts short."""
-        if not self.drive.rest(t_ns):
-            return []
-        for owed in self._owed:
-            owed.cut = reason
-        return [self._telemetry(t_ns)]
-
-    def _entered(self, activity: Activity, t_ns: int) -> list[Message]:
-        """React to an activity that began by itself: report it, and report what is over."""
-        said: list[Message] = []
-        if activity is Activity.BRAKING:
-            self._count_pivot(t_ns)
-            if FaultKind.RESTART_ON_BRAKE in self._faults:
-                self._faults.discard(FaultKind.RESTART_ON_BRAKE)
-                self._reboot(t_ns)
-        elif activity is Activity.STILL:
-            said += [self._ending(owed, t_ns) for owed in self._owed]
-            self._owed.clear()
-        return [*said, self._telemetry(t_ns)]
-
-    def _ending(self, owed: _Owed, t_ns: int) -> Message:
-        command = owed.command
-        if isinstance(command, Pivot):
-            measured = facts(command, owed.cut, self.drive, self._draws, t_ns)
-            self._memory.remember(command.number, measured)
-            return measured
-        cut = owed.cut is not Reason.NONE
-        state = AnswerState.CUT if cut else AnswerState.FINISHED
-        return self._answer(command, state, owed.cut)
-
-    def _answer(
-        self,
-        command: Command,
-        state: AnswerState,
-        reason: Reason = Reason.NONE,
-        left_ns: int = 0,
-    ) -> Answer:
-        """Make and remember an answer, in the epoch of the command: it may outlast its own."""
-        expect_ms = min(-(-left_ns // 1_000_000), _MAX_EXPECT_MS)
-        answer = Answer(command.epoch, self.boot, command.number, state, reason, expect_ms)
-        self._memory.remember(command.number, answer)
-        return answer
-
-    def _count(self, command: Command, t_ns: int) -> None:
-        """Enter a command in the tally, at the moment at which it is carried out."""
-        if self._tally is not None:
-            spec, motion = self.spec, _MOTIONS[type(command)]
-            entry = TallyEntry(spec.identity, self.boot, command.number, t_ns, spec.name, motion)
-            self._tally(entry)
-
-    def _count_pivot(self, t_ns: int) -> None:
-        for owed in self._owed:
-            if isinstance(owed.command, Pivot):
-                self._count(owed.command, t_ns)
-
-    def _reboot(self, t_ns: int) -> None:
-        self.boot += 1
-        self.boot_ns = t_ns
-        self._memory = CommandMemory(self.boot, self.spec.identity)
-        self._owed.clear()
-        self._reporter.restart()
-        self.drive.recover(t_ns)
+        return self.works.order(command, t_ns)
 
 
 _HANDLERS: Final[Mapping[type[Any], Callable[[VirtualModule, Any, int], list[Message]]]] = {
     RollCall: VirtualModule._roll_call,
     Query: VirtualModule._query,
+    Probe: VirtualModule._probe,
+    Permit: VirtualModule._permit,
+    Release: VirtualModule._release,
+    Go: VirtualModule._go,
+    SettingAsk: VirtualModule._setting_ask,
+    TraceAsk: VirtualModule._trace_ask,
     Stop: VirtualModule._stop,
     Clear: VirtualModule._clear,
-    Pivot: VirtualModule._command,
-    Spin: VirtualModule._command,
-    Rest: VirtualModule._command,
-    Flash: VirtualModule._command,
-}
-
-_STARTS: Final[Mapping[type[Any], Callable[[VirtualModule, Any, int], list[Message]]]] = {
-    Pivot: VirtualModule._start_pivot,
-    Spin: VirtualModule._start_spin,
-    Rest: VirtualModule._start_rest,
-    Flash: VirtualModule._start_flash,
+    **dict.fromkeys(get_args(Command), VirtualModule._command),
 }

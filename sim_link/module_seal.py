@@ -40,9 +40,11 @@ class ModuleSeal:
         self._follow(boot)
         return self._sealer.seal(payload)
 
-    def admit(self, payload: bytes, boot: int) -> Packet | None:
-        """Open what it heard; None where it does not obey. Raises RemoteProtocolError."""
+    def admit(self, payload: bytes, boot: int, epoch: int) -> Packet | None:
+        """Open what it heard while it follows ``epoch``; None where it does not obey. Raises
+        RemoteProtocolError."""
         self._follow(boot)
+        self._gate.follow(epoch)
         verdict = self._gate.admit(payload)
         return None if isinstance(verdict, Refused) else verdict
 

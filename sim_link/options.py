@@ -30,6 +30,8 @@ class FaultKind(StrEnum):
     """Starts almost empty and refuses to drive."""
     RESTART_ON_BRAKE = "restart_on_brake"
     """Its controller restarts right after the first time the brake is applied."""
+    LOST_GYRO = "lost_gyro"
+    """Its inertial unit no longer answers after the first time the brake is applied."""
     SAME_ADDRESS = "same_address"
     """Answers at the address of its neighbour in the fleet file, as after a slip of the hand."""
 

@@ -13,6 +13,7 @@ from sim_link import mechanics
 from sim_link.fleet_file import ModuleSpec
 from sim_link.kinds import Kind
 from sim_link.mechanics import MotionResult
+from sim_link.motion import Watch
 from sim_link.options import FaultKind
 from sim_link.randomness import Draws
 
@@ -52,6 +53,22 @@ class _Movement(NamedTuple):
     settled: bool
 
 
+class Braking(NamedTuple):
+    """What a brake was applied to, with this motion's luck in it: enough to compute the motion
+    again, moment by moment, where somebody asks for its trace."""
+
+    kind: Kind
+    wheel_rad_s: float
+    face_up: int
+    direction: int
+
+    def again(self, watch: Watch | None = None) -> MotionResult:
+        """Compute what comes of it."""
+        return mechanics.floor_pivot(
+            self.kind, self.wheel_rad_s, self.face_up, self.direction, watch
+        )
+
+
 def turned_face(face_up: int, faces: int) -> int:
     """Return the face that is up after so many faces forward; with the axis upright it stays."""
     if face_up > 4:
@@ -82,6 +99,8 @@ class VirtualBody:
         self.kind = own_kind(spec, draws)
         self.turned_rad = 0.0
         """Angle turned since the start, forward positive: what a gyroscope would add up."""
+        self.braking: Braking | None = None
+        """The last brake that was applied."""
         self._draws = draws
         self._face_up = spec.face_up
         self._movement: _Movement | None = None
@@ -107,7 +126,8 @@ class VirtualBody:
         speed = 1.0 + _SPEED_NOISE * self._draws.normal(count, "speed")
         torque = 1.0 + _BRAKE_NOISE * self._draws.normal(count, "brake")
         kind = replace(self.kind, brake_torque_N_m=self.kind.brake_torque_N_m * torque)
-        result = mechanics.floor_pivot(kind, abs(wheel_rad_s) * speed, self._face_up, direction)
+        self.braking = Braking(kind, abs(wheel_rad_s) * speed, self._face_up, direction)
+        result = self.braking.again()
         self._move(
             _Movement(
                 t_ns,

@@ -1,16 +1,38 @@
 """A module's own interlocks: why it refuses a command that reached it in good order.
 
-Owns the table of conditions, in the order in which they are looked at. Knows nothing of
-numbers and memory: the envelope of a command was judged before (command_memory.py).
-A rest is in no row: it is never blocked.
+Owns the table of conditions, in the order in which they are looked at: that of WIRE.md, "The
+module's own interlocks". Knows nothing of numbers and memory: the envelope of a command was
+judged before (command_memory.py). A rest is in no row: it is never blocked.
 """
 
 from collections.abc import Callable
 from typing import Any, Final, NamedTuple, cast
 
-from protocol.codes import Activity, Direction, Reason, Setting
-from protocol.message import Command, Flash, Pivot, Spin
-from sim_link.drive import Drive
+from protocol.allegiance import ms_until
+from protocol.codes import Activity, Direction, Reason, Setting, SettingId
+from protocol.message import (
+    Command,
+    Drive,
+    Flash,
+    Hop,
+    LockOut,
+    Motion,
+    Pivot,
+    SettingWrite,
+    Spin,
+    Twist,
+    Unlock,
+)
+from sim_link.box import Box
+
+
+class Look(NamedTuple):
+    """What an interlock looks at. ``engaged``: whether a command is under way or staged."""
+
+    command: Command
+    box: Box
+    engaged: bool
+    t_ns: int
 
 
 class _Refusal(NamedTuple):
@@ -18,74 +40,128 @@ class _Refusal(NamedTuple):
 
     reason: Reason
     concerns: tuple[type[Any], ...]
-    blocks: Callable[[Command, Drive, bool, int], bool]
+    blocks: Callable[[Look], bool]
 
 
-def refusal(command: Command, drive: Drive, latched: bool, t_ns: int) -> Reason:
-    """Return the first reason against carrying out ``command`` at ``t_ns``, or NONE."""
+def refusal(look: Look) -> Reason:
+    """Return the first reason against carrying out a command now, or NONE."""
     for row in _REFUSALS:
-        if isinstance(command, row.concerns) and row.blocks(command, drive, latched, t_ns):
+        if isinstance(look.command, row.concerns) and row.blocks(look):
             return row.reason
+    if isinstance(look.command, SettingWrite):
+        return look.box.settings.refusal(look.command.setting, look.command.value)
     return Reason.NONE
 
 
-def _bad_pivot(command: Command, drive: Drive, latched: bool, t_ns: int) -> bool:
-    pivot = cast(Pivot, command)
-    return (
-        pivot.speed_rpm == 0
-        or pivot.direction not in tuple(Direction)
-        or pivot.setting not in tuple(Setting)
-    )
+def _bad_motion(look: Look) -> bool:
+    motion = cast(Motion, look.command)
+    return motion.speed_rpm == 0 or motion.direction not in tuple(Direction)
 
 
-def _bad_spin(command: Command, drive: Drive, latched: bool, t_ns: int) -> bool:
-    return cast(Spin, command).speed_rpm == 0
+def _bad_setting(look: Look) -> bool:
+    return cast(Pivot, look.command).setting not in tuple(Setting)
 
 
-def _bad_flash(command: Command, drive: Drive, latched: bool, t_ns: int) -> bool:
-    return cast(Flash, command).duration_ms == 0
+def _bad_spin(look: Look) -> bool:
+    return cast(Spin, look.command).speed_rpm == 0
 
 
-def _other_setting(command: Command, drive: Drive, latched: bool, t_ns: int) -> bool:
-    return cast(Pivot, command).setting != Setting.FLOOR
+def _bad_flash(look: Look) -> bool:
+    return cast(Flash, look.command).duration_ms == 0
 
 
-def _stop_in_force(command: Command, drive: Drive, latched: bool, t_ns: int) -> bool:
-    return latched
+def _nobody(look: Look) -> bool:
+    return not cast(LockOut | Unlock, look.command).person.rstrip(b"\0")
 
 
-def _busy(command: Command, drive: Drive, latched: bool, t_ns: int) -> bool:
-    return drive.activity is not Activity.STILL
+def _unsupported(look: Look) -> bool:
+    """Only floor pivots are known here: the mechanics of the others come later."""
+    command = look.command
+    return not isinstance(command, Pivot) or command.setting != Setting.FLOOR
 
 
-def _over_speed(command: Command, drive: Drive, latched: bool, t_ns: int) -> bool:
-    return abs(cast(Pivot | Spin, command).speed_rpm) > drive.wheel_max_rpm
+def _stop_in_force(look: Look) -> bool:
+    return look.box.latched
 
 
-def _battery_low(command: Command, drive: Drive, latched: bool, t_ns: int) -> bool:
-    drive.supply.account(t_ns)
-    return drive.supply.battery.low
+def _locked_out(look: Look) -> bool:
+    return bool(look.box.person)
 
 
-def _axis_upright(command: Command, drive: Drive, latched: bool, t_ns: int) -> bool:
-    return drive.body.posture(t_ns).face_up > 4
+def _locked_by_another(look: Look) -> bool:
+    person = cast(LockOut, look.command).person.rstrip(b"\0")
+    return look.box.person not in (b"", person)
 
 
-def _not_settled(command: Command, drive: Drive, latched: bool, t_ns: int) -> bool:
-    return not drive.body.posture(t_ns).settled
+def _not_the_person(look: Look) -> bool:
+    person = cast(Unlock, look.command).person.rstrip(b"\0")
+    return look.box.person not in (b"", person)
 
 
-_WHEEL: Final = (Pivot, Spin)
+def _fault(look: Look) -> bool:
+    return bool(look.box.faults)
+
+
+def _clock_unknown(look: Look) -> bool:
+    return not look.box.boot.allegiance.clock_told
+
+
+def _too_late(look: Look) -> bool:
+    latest_ms = cast(Drive, look.command).latest_ms
+    return ms_until(latest_ms, look.box.boot.time.ms(look.t_ns)) < 0
+
+
+def _no_permit(look: Look) -> bool:
+    return not look.box.boot.permitted(look.t_ns)
+
+
+def _busy(look: Look) -> bool:
+    return look.engaged or look.box.drive.activity is not Activity.STILL
+
+
+def _over_speed(look: Look) -> bool:
+    limit_rpm = look.box.settings.value(SettingId.WHEEL_LIMIT_RPM)
+    return abs(cast(Drive, look.command).speed_rpm) > limit_rpm
+
+
+def _battery_low(look: Look) -> bool:
+    return look.box.battery_low(look.t_ns)
+
+
+def _axis_upright(look: Look) -> bool:
+    return look.box.drive.body.posture(look.t_ns).face_up > 4
+
+
+def _axis_level(look: Look) -> bool:
+    return 1 <= look.box.drive.body.posture(look.t_ns).face_up <= 4
+
+
+def _not_settled(look: Look) -> bool:
+    return not look.box.drive.body.posture(look.t_ns).settled
+
+
+_BRAKED: Final = (Pivot, Hop, Twist)
+_WHEEL: Final = (*_BRAKED, Spin)
 
 _REFUSALS: Final = (
-    _Refusal(Reason.BAD_FIELD, (Pivot,), _bad_pivot),
+    _Refusal(Reason.BAD_FIELD, _BRAKED, _bad_motion),
+    _Refusal(Reason.BAD_FIELD, (Pivot,), _bad_setting),
     _Refusal(Reason.BAD_FIELD, (Spin,), _bad_spin),
     _Refusal(Reason.BAD_FIELD, (Flash,), _bad_flash),
-    _Refusal(Reason.SETTING_UNSUPPORTED, (Pivot,), _other_setting),
+    _Refusal(Reason.BAD_FIELD, (LockOut, Unlock), _nobody),
+    _Refusal(Reason.UNSUPPORTED, _BRAKED, _unsupported),
     _Refusal(Reason.STOP_IN_FORCE, _WHEEL, _stop_in_force),
-    _Refusal(Reason.BUSY, (Pivot, Spin, Flash), _busy),
+    _Refusal(Reason.LOCKED_OUT, _WHEEL, _locked_out),
+    _Refusal(Reason.LOCKED_OUT, (LockOut,), _locked_by_another),
+    _Refusal(Reason.OTHER_PERSON, (Unlock,), _not_the_person),
+    _Refusal(Reason.FAULT, _WHEEL, _fault),
+    _Refusal(Reason.CLOCK_UNKNOWN, _WHEEL, _clock_unknown),
+    _Refusal(Reason.TOO_LATE, _WHEEL, _too_late),
+    _Refusal(Reason.NO_PERMIT, _WHEEL, _no_permit),
+    _Refusal(Reason.BUSY, (*_WHEEL, Flash), _busy),
     _Refusal(Reason.OVER_SPEED_LIMIT, _WHEEL, _over_speed),
     _Refusal(Reason.BATTERY_LOW, _WHEEL, _battery_low),
-    _Refusal(Reason.AXIS_UPRIGHT, (Pivot,), _axis_upright),
+    _Refusal(Reason.AXIS_UPRIGHT, (Pivot, Hop), _axis_upright),
+    _Refusal(Reason.AXIS_UPRIGHT, (Twist,), _axis_level),
     _Refusal(Reason.NOT_SETTLED, _WHEEL, _not_settled),
 )

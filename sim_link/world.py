@@ -4,8 +4,8 @@ Owns the order of events. Knows nothing of clocks, threads or ports: bytes and t
 out, so that real time and virtual time run the same code. One seed, one history, byte for byte.
 
 The way of a frame: console's line at the line rate, bridge (drops what fails its check), one
-radio path a module, the module's decoder; and back the same way. The bridge is transparent: it
-passes a frame on as it is, and has no say of its own in this version.
+radio path a module, the module's decoder; and back the same way. The bridge passes a frame on as it
+is, and answers questions about itself; with keys set it has none of its own and answers nothing.
 """
 
 import heapq
@@ -13,10 +13,10 @@ from collections.abc import Callable
 from dataclasses import dataclass
 from typing import Final
 
-from protocol.codes import EVERYONE_ADDRESS
+from protocol.codes import BRIDGE_ADDRESS, CONSOLE_ADDRESS, FIRST_GROUP_ADDRESS
 from protocol.errors import RemoteProtocolError
 from protocol.frame import Dropped, FrameDecoder, frame
-from protocol.message import HEADER, Packet, decode, encode
+from protocol.message import HEADER, BridgeAsk, BridgeStatus, Packet, decode, encode
 from sim_link.fleet_file import load_fleet
 from sim_link.line import Line
 from sim_link.module import VirtualModule
@@ -24,6 +24,10 @@ from sim_link.module_seal import ModuleSeal, load_keys
 from sim_link.options import SimOptions
 from sim_link.radio import Channel, Quality, Way
 from sim_link.tally import TallyEntry
+
+_SIGNAL_dBm: Final = -62
+_NOISE_dBm: Final = -97
+"""What a receiver in the invented hall would show; this radio's losses do not hang on them."""
 
 _TO_CONSOLE: Final = -1
 """In place of a module's index: what arrives at the bridge."""
@@ -85,6 +89,7 @@ class World:
         self._bridge = FrameDecoder()
         self._t_ns = 0
         self._order = 0
+        self._queue_most = 0
         self._arrivals: list[tuple[int, int, int, bytes]] = []
         self._wakes: list[tuple[int, int]] = []
         for place in range(len(self._stations)):
@@ -149,6 +154,7 @@ class World:
                 self.counts.dropped_at_bridge += 1
                 continue
             self.counts.frames_from_console += 1
+            self._bridge_hears(found)
             frame_bytes = frame(found)
             for place in self._addressed(found):
                 self._send(self._stations[place].hears, frame_bytes, place)
@@ -160,9 +166,36 @@ class World:
             self.counts.dropped_at_bridge += 1
             return ()
         destination = HEADER.unpack_from(payload)[2]
-        if destination == EVERYONE_ADDRESS:
+        if destination >= FIRST_GROUP_ADDRESS:  # a group or everyone: who is in it, modules know
             return range(len(self._stations))
         return self._by_address.get(destination, ())
+
+    def _bridge_hears(self, payload: bytes) -> None:
+        """Answer a question about the bridge itself."""
+        if self.options.keys is not None or len(payload) < HEADER.size:
+            return
+        if HEADER.unpack_from(payload)[2] == BRIDGE_ADDRESS:
+            ask = _understood(payload)
+            if ask is not None and isinstance(ask.message, BridgeAsk):
+                status = self._bridge_status(ask.message)
+                answer = Packet(CONSOLE_ADDRESS, BRIDGE_ADDRESS, status)
+                self._to_console.put(frame(encode(answer)), self._t_ns)
+
+    def _bridge_status(self, ask: BridgeAsk) -> BridgeStatus:
+        waiting = min(len(self._arrivals), 0xFFFF)
+        self._queue_most = max(self._queue_most, waiting)
+        counts = self.counts
+        return BridgeStatus(
+            sequence=ask.sequence,
+            uptime_ms=self._t_ns // 1_000_000 & 0xFFFF_FFFF,
+            frames_from_console=counts.frames_from_console,
+            frames_to_console=counts.frames_to_console,
+            dropped=counts.dropped_at_bridge,
+            queue=waiting,
+            queue_most=self._queue_most,
+            signal_dBm=_SIGNAL_dBm,
+            noise_dBm=_NOISE_dBm,
+        )
 
     def _send(self, channel: Channel, frame_bytes: bytes, place: int) -> None:
         for arrival_ns, data in channel.offer(frame_bytes, self._t_ns):
@@ -203,11 +236,19 @@ class World:
         heapq.heappush(self._wakes, (self._stations[place].module.next_wake_ns, place))
 
 
+def _understood(payload: bytes) -> Packet | None:
+    """Decode a payload; None where it is no message of this version."""
+    try:
+        return decode(payload)
+    except RemoteProtocolError:
+        return None
+
+
 def _admitted(station: _Station, payload: bytes) -> Packet | None:
     """Decode what a module received; what it does not understand or obey counts as dropped."""
+    if station.seal is None:
+        return _understood(payload)
     try:
-        if station.seal is not None:
-            return station.seal.admit(payload, station.module.boot)
-        return decode(payload)
+        return station.seal.admit(payload, station.module.boot, station.module.epoch)
     except RemoteProtocolError:
         return None

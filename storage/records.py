@@ -35,7 +35,8 @@ class BytesOut:
 @dataclass(frozen=True, slots=True)
 class SessionOpened:
     """First record of a session. ``utc`` is ISO 8601; ``pace`` is fleet seconds per second;
-    ``sealed``: whether a fleet key was set."""
+    ``sealed``: whether a fleet key was set; ``console``: the session's random number on the wire,
+    0 in logs from before it was recorded."""
 
     t_ns: int
     utc: str
@@ -44,6 +45,7 @@ class SessionOpened:
     pace: float
     program: str
     sealed: bool = False
+    console: int = 0
 
 
 @dataclass(frozen=True, slots=True)
@@ -89,9 +91,12 @@ class EpochChosen:
 class PlannedCommand:
     """One command of an order, complete before its first byte is sent.
 
-    ``command`` counts within the session; ``number`` is the one on the wire. ``setting`` and
-    ``direction`` are wire codes, 0 where the motion has none; ``trial`` is 0 outside a sheet
-    and for a sheet's return motions.
+    ``command`` counts within the session; ``number`` is the one on the wire. ``motion``: pivot,
+    hop, twist, spin, rest, flash, lock, unlock, set. ``setting`` and ``direction`` are wire codes,
+    0 where the motion has none; of a ``set``, ``setting`` is the setting's number and ``value``
+    what it is set to. ``trial`` is 0 outside a sheet and for a sheet's return motions.
+    ``latest_ms``: module time after which it must not start; ``stage`` 0: it starts at once;
+    ``person``: who locks or unlocks.
     """
 
     command: int
@@ -106,6 +111,10 @@ class PlannedCommand:
     speed_rpm: int
     duration_ms: int
     trial: int
+    latest_ms: int = 0
+    stage: int = 0
+    person: str = ""
+    value: int = 0
 
 
 @dataclass(frozen=True, slots=True)
@@ -137,6 +146,16 @@ class CommandExpired:
 
     t_ns: int
     command: int
+
+
+@dataclass(frozen=True, slots=True)
+class StageStarted:
+    """The start of a staged order's motions was agreed, ``start_ms`` of fleet time; or it was
+    given up (None), because not all modules accepted. Said with Go from now on."""
+
+    t_ns: int
+    order: int
+    start_ms: int | None
 
 
 @dataclass(frozen=True, slots=True)
@@ -212,6 +231,7 @@ NoteRecord = (
     | OrderGiven
     | OrderVoided
     | CommandExpired
+    | StageStarted
     | StopPressed
     | StopLifted
     | SheetOpened
@@ -232,6 +252,7 @@ _NOTE_TYPES: Final[dict[str, type[Any]]] = {
         OrderGiven,
         OrderVoided,
         CommandExpired,
+        StageStarted,
         StopPressed,
         StopLifted,
         SheetOpened,

@@ -12,7 +12,8 @@ from typing import Any, Final, NamedTuple
 
 
 class ModuleRow(NamedTuple):
-    """One module as last known in the session. ``identity``: 16 hexadecimal digits."""
+    """One module as last known in the session. ``identity``: 16 hexadecimal digits;
+    ``locked_by``: NULL where nobody has locked it out, empty where the name is not known."""
 
     module: int
     identity: str
@@ -24,6 +25,7 @@ class ModuleRow(NamedTuple):
     wheel_max_rpm: int
     boot: int
     boots_seen: int
+    locked_by: str | None
 
 
 class TelemetryRow(NamedTuple):
@@ -56,7 +58,11 @@ class OrderRow(NamedTuple):
 
 
 class CommandRow(NamedTuple):
-    """One command. ``ending`` is NULL until it has one: finished, refused, cut, unseen."""
+    """One command. ``ending`` is NULL until it has one: finished, refused, cut, unseen.
+
+    ``setting`` is a pivot's, or the name of what a ``set`` changes to ``value``; ``latest_ms`` is
+    module time, 0 where the command has no latest start; ``stage`` is 0 where it waits for no Go.
+    """
 
     command: int
     order_no: int
@@ -78,11 +84,15 @@ class CommandRow(NamedTuple):
     reason: str | None
     final: int
     ended_t_ns: int | None
+    latest_ms: int
+    stage: int
+    person: str
+    value: int
 
 
 class CommandEventRow(NamedTuple):
-    """One step in a command's life: ordered, sent, resent, asked, accepted, finished, refused,
-    cut, unseen, repeat ignored."""
+    """One step in a command's life: ordered, sent, resent, asked, accepted, go, no go, finished,
+    refused, cut, unseen, repeat ignored, trace."""
 
     record: int
     part: int
@@ -95,7 +105,7 @@ class CommandEventRow(NamedTuple):
 class MotionRow(NamedTuple):
     """One motion: what was measured of it, and the outcome drawn from that.
 
-    Facts are NULL where no report came (refused, unseen).
+    Facts are NULL where no report came (refused, unseen). ``started_ms``: module time.
     """
 
     command: int
@@ -118,6 +128,7 @@ class MotionRow(NamedTuple):
     spin_up_ms: int | None
     settle_ms: int | None
     sag_V: float | None
+    started_ms: int | None
 
 
 class LinkEventRow(NamedTuple):
@@ -145,7 +156,9 @@ class SheetRow(NamedTuple):
 
 
 class AlarmRow(NamedTuple):
-    """Something a person should know: all-stop, clear, restart, address conflict, damage."""
+    """Something a person should know: all-stop, clear, restart, address conflict, damage, link
+    lost, clock, fault, locked out, unlocked, owned by another console, setting differs, bridge
+    restart."""
 
     record: int
     part: int
@@ -179,6 +192,49 @@ class CorrectionRow(NamedTuple):
     reason: str
 
 
+class SettingRow(NamedTuple):
+    """A module's setting as read: a row for the first reading and for each that says something
+    else. ``setting``: a name with its unit. Read only where all three figures are equal."""
+
+    module: int
+    setting: str
+    record: int
+    part: int
+    t_ns: int
+    value: int
+    lowest: int
+    highest: int
+
+
+class TraceRow(NamedTuple):
+    """The trace of one motion, whole. ``data``: 8 bytes a sample, little-endian: wheel speed in
+    rpm i16, body rate in degrees a second i16, tilt in 0.1 degrees i16, battery in mV u16."""
+
+    command: int
+    period_us: int
+    samples: int
+    brake_sample: int
+    started_ms: int
+    data: bytes
+
+
+class BridgeStatusRow(NamedTuple):
+    """What a link's bridge said of itself; counts are since its start."""
+
+    record: int
+    part: int
+    t_ns: int
+    link: int
+    uptime_ms: int
+    frames_from_console: int
+    frames_to_console: int
+    dropped: int
+    queue: int
+    queue_most: int
+    signal_dBm: int
+    noise_dBm: int
+
+
 Row = (
     ModuleRow
     | TelemetryRow
@@ -191,6 +247,9 @@ Row = (
     | AlarmRow
     | RemarkRow
     | CorrectionRow
+    | SettingRow
+    | TraceRow
+    | BridgeStatusRow
 )
 
 
@@ -213,4 +272,7 @@ TABLES: Final[dict[type[Any], Table]] = {
     AlarmRow: Table("alarms", ("record", "part")),
     RemarkRow: Table("remarks", ("record",)),
     CorrectionRow: Table("corrections", ("record",)),
+    SettingRow: Table("settings", ("module", "setting", "record", "part")),
+    TraceRow: Table("traces", ("command",)),
+    BridgeStatusRow: Table("bridge_status", ("record", "part")),
 }

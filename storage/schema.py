@@ -14,8 +14,9 @@ from typing import TYPE_CHECKING, Final
 
 from storage.connect import BUSY_S, Connect, connect_to_write, explain, primary_code, read_only
 from storage.errors import LogUnavailableError
+from storage.later_tables import SECOND_TABLES
 from storage.tables import FIRST_TABLES
-from storage.views import FIRST_VIEWS
+from storage.views import FIRST_VIEWS, SECOND_VIEWS
 
 if TYPE_CHECKING:
     from sqlite_utils.migrations import Migrations
@@ -27,6 +28,7 @@ MIGRATION_SET: Final = "tumblewire"
 
 MIGRATIONS: Final[dict[str, tuple[str, ...]]] = {
     "0001_first_tables": FIRST_TABLES + FIRST_VIEWS,
+    "0002_settings_traces_bridges": SECOND_TABLES + SECOND_VIEWS,
 }
 """Name to statements, in order. One that has been released is never changed, only followed."""
 

@@ -1,8 +1,9 @@
 """Tables: the statements that make them, as the first migration wrote them.
 
 Owns the stored layout's first version, which never changes: a later version is a further
-migration in schema.py. Column order follows storage/rows.py; a test compares the two. Units
-stand in the names; identities are 16 hexadecimal digits, since SQLite's integers are signed.
+migration in schema.py, with its statements in later_tables.py. Column order follows
+storage/rows.py; a test compares the two. Units stand in the names; identities are 16 hexadecimal
+digits, since SQLite's integers are signed.
 
 Tables written at the line's rate have no rowid: their key is the tree's order, which saves a
 second tree (measured: 20 % faster and a sixth smaller than a rowid table with the same key).

@@ -37,8 +37,9 @@ FROZEN: Final = f"""\
   1. Keep hands and faces away from the modules: a wheel may be turning.
   2. In another terminal on this computer type: pkill -TERM tumblewire
      That is an all-stop first; then the console ends.
-  3. A wheel turns no longer than it was ordered to: each module rests
-     it by itself at the end, whatever becomes of this console.
+  3. A wheel turns only while this screen gives signs of life: a second
+     after the last one each module rests its own, whatever becomes of
+     this console. A brake already engaged stays engaged.
   4. Go near only when every wheel is at rest. An all-stop stays in
      force until a person clears it, also for a console started later."""
 
@@ -46,7 +47,11 @@ ORDERS: Final = """\
   birch pivot forward at 4500     one module, one motion; speed in rpm
   birch, elm pivot back at 4500   several: one command for each
   cedar spin at 2000 for 5 s      hold the wheel at a speed, then rest it
+  birch, elm hop at 7000 together all begin at one agreed time
   cedar flash                     light and beep: which box is it?
+  cedar lock by Ada               Ada locks it out before she touches it
+  cedar unlock by Ada             only Ada's name takes her lock off
+  cedar set wheel-limit to 6000   a setting of the module's own
   all rest                        every wheel gently to a stop
   stop                            all-stop, typed
   clear 3                         lift all-stop 3; it must be the newest"""

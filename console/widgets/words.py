@@ -70,6 +70,7 @@ ACTIVITIES: Final[dict[int, Word]] = {
     Activity.BRAKING: Word("X", "braking", Tone.MOVING),
     Activity.SETTLING: Word("~", "settling", Tone.MOVING),
     Activity.FLASHING: Word("*", "flashing", Tone.STRONG),
+    Activity.STAGED: Word("|", "staged", Tone.STRONG),
 }
 
 FINE: Final = Word(" ", "ok", Tone.DIM)
@@ -80,9 +81,22 @@ STOPPED: Final = Word("#", "stopped", Tone.STRONG)
 BATTERY_LOW: Final = Word("!", "battery", Tone.ALERT)
 TILTED: Final = Word("!", "tilted", Tone.ALERT)
 UNSETTLED: Final = Word("!", "unsettled", Tone.ALERT)
-STATES: Final = (FINE, STOPPED, UNHEARD, SILENT, OVERSPEED, BATTERY_LOW, TILTED, UNSETTLED)
-_TROUBLE_BITS: Final = int(Flags.BATTERY_LOW | Flags.UNSETTLED)
-_AT_REST: Final = frozenset({int(Activity.STILL), int(Activity.FLASHING)})
+FAULTY: Final = Word("!", "fault", Tone.ALERT)
+LOCKED: Final = Word("L", "locked", Tone.STRONG)
+STATES: Final = (
+    FINE,
+    STOPPED,
+    LOCKED,
+    UNHEARD,
+    SILENT,
+    OVERSPEED,
+    FAULTY,
+    BATTERY_LOW,
+    TILTED,
+    UNSETTLED,
+)
+_TROUBLE_BITS: Final = int(Flags.BATTERY_LOW | Flags.UNSETTLED | Flags.FAULTY)
+_AT_REST: Final = frozenset({int(Activity.STILL), int(Activity.FLASHING), int(Activity.STAGED)})
 _OUTRANKED_BY_STOP: Final = frozenset({BATTERY_LOW, TILTED, UNSETTLED})
 
 
@@ -100,6 +114,7 @@ def module_trouble(module: ModuleView, t_ns: int) -> Word | None:
     tests = (
         (silent, SILENT),
         (overspeed, OVERSPEED),
+        (bool(module.flags & Flags.FAULTY), FAULTY),
         (bool(module.flags & Flags.BATTERY_LOW), BATTERY_LOW),
         (still and module.face_up == 0, TILTED),
         (still and bool(module.flags & Flags.UNSETTLED), UNSETTLED),
@@ -108,11 +123,14 @@ def module_trouble(module: ModuleView, t_ns: int) -> Word | None:
 
 
 def module_state(module: ModuleView, t_ns: int) -> Word:
-    """The one word for a module's line: trouble, the latch of an all-stop, or ok. What the
-    latch hides here (battery, posture) is marked in its own column."""
+    """The one word for a module's line: trouble, a person's lock, the latch of an all-stop, or
+    ok. What a lock or the latch hides here (battery, posture) is marked in its own column."""
     trouble = module_trouble(module, t_ns)
-    if module.latched and (trouble is None or trouble in _OUTRANKED_BY_STOP):
-        return STOPPED
+    if trouble is None or trouble in _OUTRANKED_BY_STOP:
+        if module.flags & Flags.LOCKED_OUT:
+            return LOCKED
+        if module.latched:
+            return STOPPED
     return trouble or FINE
 
 

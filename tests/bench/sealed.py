@@ -35,7 +35,7 @@ def sealed_stream() -> tuple[bytes, bytes]:
         payload = encode(Packet(CONSOLE_ADDRESS, FIRST_MODULE_ADDRESS, message))
         return frame(sealer.seal(payload))
 
-    first = framed(Presence(9, 5, EPOCH, 0, 0, 1, 0))
+    first = framed(Presence(9, 5, EPOCH, 0, 0, 0, 0, 0, 1))
     rest = [
         framed(Telemetry(5, count & 0xFFFF, count, 2, 0, 1, 3000, 4100, 2300, 1, 9))
         for count in range(FRAMES)

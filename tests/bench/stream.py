@@ -35,7 +35,7 @@ def make_stream(modules: int, frames: int) -> Stream:
     for place in range(modules):
         identity = SIMULATED_BIT | (0x5000_0000 + place)
         source = FIRST_MODULE_ADDRESS + place
-        roll.append(_framed(source, Presence(identity, 100 + place, EPOCH, 0, 0, 1, 5)))
+        roll.append(_framed(source, Presence(identity, 100 + place, EPOCH, 9, 0, 5, 3000, 0, 1)))
         name = b"m%d" % place
         roll.append(_framed(source, Nameplate(identity, 9000, 1, name, b"paver")))
     for count in range(frames):

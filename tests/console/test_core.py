@@ -21,8 +21,7 @@ def motions(session: VirtualSession) -> list[MotionRow]:
 def opened(options: SimOptions | None = None) -> VirtualSession:
     """A session whose fleet of eight has answered in full."""
     session = VirtualSession(options)
-    session.run_for(20, lambda: len(session.view.modules) == 8 and all_named(session))
-    assert all_named(session)
+    assert session.until_drivable()
     return session
 
 
@@ -319,7 +318,7 @@ def test_a_clear_with_nothing_to_clear_is_refused() -> None:
 def test_a_console_with_an_older_clock_takes_a_newer_epoch() -> None:
     session = opened()
     session.reconnect(epoch=500)
-    session.run_for(3)
+    assert session.until_drivable()
     assert session.core.fleet.epoch == 1_000_001
     assert EpochChosen in [type(record) for _, record in session.log.records]
     session.order("birch pivot forward at 5200")

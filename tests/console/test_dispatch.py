@@ -1,5 +1,6 @@
 """Carrying out a run sheet, against a scripted engine: no radio, no log, no real time."""
 
+import itertools
 from collections.abc import Callable
 from dataclasses import replace
 
@@ -8,6 +9,7 @@ import pytest
 from console.core import OnEnd
 from console.dispatch import BLOCKED_WAIT_NS, LOG_WAIT_NS, SheetRun, TrialEnd, faces_away
 from console.errors import InputError
+from console.limits import Limits
 from console.orders import Order
 from console.sheet import parse_sheet, plan
 from console.view import CommandView, FleetView, ModuleView, Outcome
@@ -37,6 +39,7 @@ class ScriptedEngine:
         self.block = ""
         self.trouble = ""
         self.open = True
+        self.beats_ns: list[int] = []
         self.hold = False
         self.in_hand: list[Callable[[], None]] = []
 
@@ -56,6 +59,9 @@ class ScriptedEngine:
 
     def log_trouble(self) -> str:
         return self.trouble
+
+    def beat(self) -> None:
+        self.beats_ns.append(self.time_ns)
 
     def give(
         self, order: Order, source: str, trial: int = 0, on_end: OnEnd | None = None
@@ -258,3 +264,12 @@ def test_a_log_that_writes_again_in_time_only_holds_the_sheet_up() -> None:
     sheet_run, _ = run(engine)
     assert sheet_run.tally.stopped is None
     assert sheet_run.tally.ended == {"landed": 8}
+
+
+def test_a_sheet_gives_signs_of_life_more_often_than_a_permit_is_long() -> None:
+    engine = ScriptedEngine(always(Outcome.LANDED))
+    engine.block = "the module says that it holds no drive permit yet"
+    run(engine)
+    gaps = [later - earlier for earlier, later in itertools.pairwise(engine.beats_ns)]
+    assert len(gaps) > 50
+    assert max(gaps) < Limits().permit_ns // 2

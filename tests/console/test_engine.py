@@ -16,6 +16,7 @@ from console.opening import SessionOptions, open_session, operator_name
 from protocol.frame import FrameDecoder
 from protocol.message import Message, Stop, decode
 from storage.reader import LogReader
+from tests.support.heart import beating, drivable
 
 LINK = "sim://?seed=7&pace=20"
 
@@ -37,13 +38,10 @@ def log(tmp_path: Path) -> Path:
 @pytest.fixture
 def engine(log: Path) -> Iterator[Engine]:
     engine = open_session(SessionOptions((LINK,), log, operator="Ida"))
-    assert wait_for(lambda: len(known(engine)) == 8)
-    yield engine
+    with beating(engine):
+        assert wait_for(lambda: drivable(engine.view()))
+        yield engine
     engine.close()
-
-
-def known(engine: Engine) -> list[str]:
-    return [each.name for each in engine.view().modules if each.kind and each.battery_V]
 
 
 def test_an_order_is_answered_in_a_line_and_becomes_a_motion(engine: Engine, log: Path) -> None:
@@ -100,7 +98,7 @@ def test_the_end_of_each_command_is_told_once(engine: Engine) -> None:
     from console.orders import parse_order
 
     ends: list[tuple[int, str]] = []
-    names = known(engine)
+    names = [each.name for each in engine.view().modules]
     engine.give(
         parse_order("all flash for 1 s", names),
         "typed",
@@ -121,11 +119,27 @@ def test_two_links_make_one_fleet(log: Path, tmp_path: Path) -> None:
     links = (LINK, f"{LINK}&fleet={second}")
     engine = open_session(SessionOptions(links, log))
     try:
-        assert wait_for(lambda: len(known(engine)) == 16)
-        engine.order("birch, far-birch pivot forward at 5200")
-        assert wait_for(lambda: sum(len(each.outcomes) for each in engine.view().modules) == 2)
+        with beating(engine):
+            assert wait_for(lambda: drivable(engine.view(), 16))
+            engine.order("birch, far-birch pivot forward at 5200")
+            assert wait_for(lambda: sum(len(each.outcomes) for each in engine.view().modules) == 2)
         landed = {each.name for each in engine.view().modules if each.outcomes}
         assert landed == {"birch", "far-birch"}
+    finally:
+        engine.close()
+
+
+def test_a_heart_that_stops_rests_every_wheel(log: Path) -> None:
+    engine = open_session(SessionOptions((LINK,), log))
+    try:
+        with beating(engine):
+            assert wait_for(lambda: drivable(engine.view()))
+            engine.order("all spin at 4000 for 60 s")
+            assert wait_for(lambda: all(each.wheel_rpm > 3000 for each in engine.view().modules))
+        assert wait_for(lambda: all(each.wheel_rpm == 0 for each in engine.view().modules))
+        with pytest.raises(InputError, match="sign of life"):
+            engine.order("birch pivot forward at 5200")
+        assert wait_for(lambda: "permit lapsed" in str(engine.view().notices))
     finally:
         engine.close()
 

@@ -1,7 +1,8 @@
 """The reducer as a whole: the session's own records, its pictures, and what must not matter."""
 
 import random
-from typing import Any
+import sqlite3
+from typing import Any, get_args, get_type_hints
 
 import pytest
 from hypothesis import given, settings
@@ -9,8 +10,10 @@ from hypothesis import strategies as st
 
 from console.errors import LogError
 from console.fleet import RULES, FleetReducer
-from protocol.codes import SIMULATED_BIT, AnswerState, Reason, identity_bits
-from protocol.message import RollCall
+from protocol.codes import BRIDGE_ADDRESS, SIMULATED_BIT, AnswerState, Reason, identity_bits
+from protocol.message import Message, Report, Request, RollCall
+from storage.inserts import Inserter, group
+from storage.later_tables import SECOND_TABLES
 from storage.records import (
     BytesIn,
     BytesOut,
@@ -24,13 +27,24 @@ from storage.records import (
     SessionClosed,
     SheetClosed,
     SheetOpened,
+    StageStarted,
     StopLifted,
     StopPressed,
     WireRecord,
 )
-from storage.rows import TABLES, CorrectionRow, RemarkRow, Row, SheetRow
+from storage.rows import TABLES, AlarmRow, CorrectionRow, RemarkRow, Row, SheetRow
+from storage.tables import FIRST_TABLES
+from tests.support.module_words import (
+    bridge_status,
+    probe,
+    trace_ask,
+    trace_chunks,
+    upkeep,
+    words,
+)
 from tests.support.wire_script import (
     BOOT,
+    CONSOLE,
     EPOCH,
     IDENTITY,
     Fold,
@@ -154,8 +168,11 @@ def lively(seed: int) -> Script:
         )
     bits = identity_bits(ELM_IDENTITY)
     for number in range(1, 9):
-        script.order(planned(number))
+        script.order(planned(number, stage=draw.randrange(2)))
         script.sent(pivot(number))
+        script.sent(probe(number))
+        if draw.randrange(2):
+            upkeep(script, number)
         replies = [
             from_module(answer(number, AnswerState.ACCEPTED)),
             from_module(telemetry(number * 3, wheel_rpm=100 * number)),
@@ -164,19 +181,25 @@ def lively(seed: int) -> Script:
             from_module(facts(number)),
             from_module(answer(number, AnswerState.REFUSED, Reason.BUSY)),
             from_module(stopped(2, latched=draw.randrange(2))),
-            from_module(presence(stop_number=draw.randrange(4), latched=draw.randrange(2))),
+            from_module(presence(stop_number=draw.randrange(4), flags=draw.randrange(2))),
             from_module(presence(identity=ELM_IDENTITY, boot=BOOT + draw.randrange(3)), ELM),
+            *map(from_module, words(number)),
+            *map(from_module, trace_chunks(number)),
+            from_module(bridge_status(number, draw.randrange(9_000)), BRIDGE_ADDRESS),
+            from_module(telemetry(number * 3 + 1, flags=draw.randrange(128))),
             bytes(draw.randrange(1, 256) for _ in range(9)) + b"\0",
         ]
         draw.shuffle(replies)
-        script.add(BytesIn, 0, b"".join(replies[: draw.randrange(3, 11)]))
+        script.add(BytesIn, 0, b"".join(replies[: draw.randrange(3, len(replies) + 1)]))
         deed = draw.choice(
             [
                 (CommandExpired, number),
                 (StopPressed, number, "key"),
                 (StopLifted, number, "key"),
                 (OrderVoided, number, "full"),
-                (BytesOut, 0, to_everyone(RollCall(EPOCH)) + to_module(query(number))),
+                (StageStarted, number, draw.choice([None, 77])),
+                (BytesOut, 0, to_module(trace_ask(number)) * draw.randrange(1, 11)),
+                (BytesOut, 0, to_everyone(RollCall(EPOCH, CONSOLE)) + to_module(query(number))),
             ]
         )
         script.add(*deed)
@@ -233,6 +256,9 @@ def test_how_the_bytes_were_chunked_changes_no_table(seed: int, cuts: int) -> No
     assert untimed(tables_of(parts)) == untimed(tables_of(whole))
     assert other.view(1).modules == one.view(1).modules
     assert other.view(1).stop == one.view(1).stop
+    assert other.view(1).bridges == one.view(1).bridges
+    assert other.trace_wanted() == one.trace_wanted()
+    assert other.settings_wanted() == one.settings_wanted()
     assert [text for _, text in other.view(1).notices] == [text for _, text in one.view(1).notices]
 
 
@@ -281,13 +307,17 @@ def test_rows_and_pictures_agree(seed: int) -> None:
         (row.module, row.name, row.boot, row.address)
         for row in sorted(tables["modules"].values())  # type: ignore[type-var]
     ]
+    assert [module.locked_by for module in view.modules] == [
+        row.locked_by  # type: ignore[union-attr]
+        for row in sorted(tables["modules"].values())  # type: ignore[type-var]
+    ]
     motions = tables["motions"]
     for row in tables["commands"].values():
         shown = reducer.command(row.command)  # type: ignore[union-attr]
         assert shown is not None
         assert shown.ending == (row.ending or "")  # type: ignore[union-attr]
-        assert (shown.sends, shown.repeats_ignored) == row[14:16]
-        assert shown.final == bool(row[18])
+        assert (shown.sends, shown.repeats_ignored) == (row.sends, row.repeats_ignored)  # type: ignore[union-attr]
+        assert shown.final == bool(row.final)  # type: ignore[union-attr]
         kept = motions.get((shown.command,))
         assert (shown.outcome or None) == (kept and kept.outcome)  # type: ignore[union-attr]
 
@@ -303,3 +333,88 @@ def test_any_bytes_at_all_are_taken(chunks: list[bytes], link: int) -> None:
     assert len(view.modules) == 1
     inward = sum(map(len, chunks))
     assert sum(each.bytes_out for each in view.links) == inward
+
+
+def test_the_lively_session_holds_something_of_everything() -> None:
+    """Or else the properties above would say nothing of it."""
+    rows: list[Row] = []
+    for seed in range(12):
+        rows += fold_all(lively(seed).records)[0]
+    missing = {"link_events", "sheets", "remarks", "corrections"}
+    assert {TABLES[type(row)].name for row in rows} >= {
+        table.name for table in TABLES.values()
+    } - missing
+    alarms = {row.alarm for row in rows if isinstance(row, AlarmRow)}
+    assert alarms >= {"restart", "fault", "locked out", "unlocked", "bridge restart", "all-stop"}
+
+
+# -- whatever modules may say ------------------------------------------------------------
+
+FORMS = {
+    "B": st.integers(0, 2**8 - 1),
+    "H": st.integers(0, 2**16 - 1),
+    "I": st.integers(0, 2**32 - 1),
+    "Q": st.integers(0, 2**64 - 1),
+    "b": st.integers(-(2**7), 2**7 - 1),
+    "h": st.integers(-(2**15), 2**15 - 1),
+    "i": st.integers(-(2**31), 2**31 - 1),
+    "12s": st.binary(max_size=12),
+    "24s": st.binary(min_size=24, max_size=24),
+}
+"""What a field of each width may hold (protocol/layout.py)."""
+
+LIKELY = {
+    "identity": IDENTITY,
+    "boot": BOOT,
+    "epoch": EPOCH,
+    "console": CONSOLE,
+    "identity_bits": identity_bits(IDENTITY),
+}
+"""Fields without which a message would nearly always be a stranger's."""
+
+
+def any_field(name: str, form: str) -> st.SearchStrategy[Any]:
+    """A field's value: of those that name somebody mostly birch's, of numbers often small."""
+    anything = FORMS[form]
+    if name in LIKELY:
+        return st.one_of(st.just(LIKELY[name]), st.just(LIKELY[name]), anything)
+    if name in {"number", "sequence", "chunk", "chunks", "setting", "settings", "fault"}:
+        return st.one_of(st.integers(0, 3), anything)
+    return anything
+
+
+def any_message(kind: type[Any]) -> st.SearchStrategy[Message]:
+    """Any message of a kind that its layout can carry."""
+    hints = get_type_hints(kind, include_extras=True)
+    return st.builds(
+        kind, **{name: any_field(name, get_args(hint)[1]) for name, hint in hints.items()}
+    )
+
+
+REPORTS = st.one_of([any_message(kind) for kind in get_args(Report)])
+REQUESTS = st.one_of([any_message(kind) for kind in get_args(Request)])
+SENDERS = st.sampled_from([0x10, 0x10, 0x10, BRIDGE_ADDRESS, 0x11])
+
+
+@settings(max_examples=300, deadline=None)
+@given(st.lists(st.tuples(REPORTS, REQUESTS, SENDERS), max_size=12))
+def test_whatever_is_said_the_rows_fit_the_log(said: list[tuple[Message, Message, int]]) -> None:
+    """Authentic nonsense: every field of every message at any value that it can carry."""
+    script = Script().open().heard(presence(), nameplate()).order(planned())
+    script.sent(pivot()).heard(facts())
+    for report, request, address in said:
+        script.sent(request, address=address).heard(report, address=address)
+    fold = Fold(script)
+    connection = sqlite3.connect(":memory:")
+    for statement in FIRST_TABLES + SECOND_TABLES:
+        connection.execute(statement)
+    entries = [
+        (number, record, step.rows)
+        for (number, record), step in zip(script.records, fold.steps, strict=True)
+    ]
+    Inserter(1).insert(connection, group(entries))
+    for table in TABLES.values():
+        (count,) = connection.execute(f"SELECT count(*) FROM {table.name}").fetchone()
+        assert count == len(fold.table(table.name))
+    connection.close()
+    assert fold.view == Fold(script).view

@@ -13,13 +13,25 @@ from console.fleet import FleetReducer
 from console.view import Outcome
 from protocol.codes import Activity, AnswerState, Flags, Reason
 from protocol.exchange import CommandExchange, Ended, Ending, Send
-from protocol.message import Flash, Message, Rest, Spin
+from protocol.message import (
+    Echo,
+    FaultNotice,
+    Flash,
+    Hop,
+    LockOut,
+    Message,
+    Rest,
+    Spin,
+    Twist,
+    Unlock,
+)
 from storage.records import (
     CommandExpired,
     OrderGiven,
     OrderVoided,
     PlannedCommand,
     SessionClosed,
+    StageStarted,
     StopLifted,
     StopPressed,
 )
@@ -106,6 +118,10 @@ def test_an_order_is_entered_whole_before_anything_is_sent() -> None:
         reason=None,
         final=0,
         ended_t_ns=None,
+        latest_ms=25_000,
+        stage=0,
+        person="",
+        value=0,
     )
     assert command(fold, 2).trial == 9
     assert fold.events() == ["ordered"]
@@ -146,6 +162,7 @@ def test_a_landed_pivot_from_order_to_facts() -> None:
         spin_up_ms=1480,
         settle_ms=640,
         sag_V=0.21,
+        started_ms=20_500,
     )
 
 
@@ -182,15 +199,18 @@ def test_a_sending_to_another_address_is_not_counted() -> None:
 
 
 @pytest.mark.parametrize(
-    "message",
+    ("name", "message"),
     [
-        Spin(EPOCH, BOOT, 1, 0x1111, 3000, 5000),
-        Rest(EPOCH, BOOT, 1, 0x1111),
-        Flash(EPOCH, BOOT, 1, 0x1111, 2000),
+        ("spin", Spin(EPOCH, BOOT, 1, 0x1111, 25_000, 3000, 5000)),
+        ("rest", Rest(EPOCH, BOOT, 1, 0x1111)),
+        ("flash", Flash(EPOCH, BOOT, 1, 0x1111, 2000)),
+        ("lock", LockOut(EPOCH, BOOT, 1, 0x1111, b"Ada")),
+        ("unlock", Unlock(EPOCH, BOOT, 1, 0x1111, b"Ada")),
     ],
 )
-def test_every_kind_of_command_is_counted_and_ends_without_an_outcome(message: Any) -> None:
-    name = type(message).__name__.lower()
+def test_every_kind_of_command_is_counted_and_ends_without_an_outcome(
+    name: str, message: Message
+) -> None:
     script = Script().open().heard(presence())
     script.order(planned(motion=name, setting=0, direction=0, speed_rpm=0))
     fold = Fold(script.sent(message).heard(answer(1, FINISHED)))
@@ -201,6 +221,83 @@ def test_every_kind_of_command_is_counted_and_ends_without_an_outcome(message: A
     view = fold.reducer.command(1)
     assert view is not None
     assert view.outcome is None
+
+
+@pytest.mark.parametrize(
+    ("name", "message", "changes", "outcome"),
+    [
+        ("hop", Hop(EPOCH, BOOT, 1, 0x1111, 9, 0, 1, 7000), {"turned_ddeg": 1800}, "landed"),
+        ("hop", Hop(EPOCH, BOOT, 1, 0x1111, 9, 0, 1, 7000), {"peak_tilt_ddeg": 3}, "stuck"),
+        ("twist", Twist(EPOCH, BOOT, 1, 0x1111, 9, 0, -1, 4000), {"turned_ddeg": -460}, "landed"),
+        ("twist", Twist(EPOCH, BOOT, 1, 0x1111, 9, 0, -1, 4000), {"turned_ddeg": 300}, "short"),
+    ],
+)
+def test_hops_and_twists_have_outcomes_of_their_own(
+    name: str, message: Message, changes: dict[str, int], outcome: str
+) -> None:
+    script = Script().open().heard(presence()).order(planned(motion=name, setting=0))
+    fold = Fold(script.sent(message).heard(answer(1, ACCEPTED)).heard(facts(**changes)))
+    assert fold.events() == ["ordered", "sent", "accepted", "finished"]
+    assert (motion(fold).motion, motion(fold).setting) == (name, "")
+    assert motion(fold).outcome == outcome
+    assert motion(fold).started_ms == 20_500
+
+
+def test_what_a_command_carries_is_in_its_row() -> None:
+    script = Script().open().heard(presence())
+    fold = Fold(script.order(planned(latest_ms=2**32 - 1, stage=7, person="Ada", value=-5)))
+    row = command(fold)
+    assert (row.latest_ms, row.stage, row.person, row.value) == (2**32 - 1, 7, "Ada", -5)
+
+
+# -- together ----------------------------------------------------------------------------
+
+
+def staged() -> Script:
+    """Two pivots of one order were accepted, and wait for their Go."""
+    script = Script().open().heard(presence(), nameplate())
+    script.order(planned(1, stage=3), planned(2, stage=3), order=5).order(planned(9))
+    script.sent(pivot(1, stage=3)).heard(answer(1, ACCEPTED))
+    return script.sent(pivot(2, stage=3)).heard(answer(2, ACCEPTED))
+
+
+def test_the_agreed_start_is_an_event_of_each_of_its_commands() -> None:
+    script = staged()
+    script.add(StageStarted, 5, 1234)
+    fold = Fold(script)
+    for number in (1, 2):
+        assert fold.events(number) == ["ordered", "sent", "accepted", "go"]
+    assert fold.events(9) == ["ordered"]
+    gone = [row for row in fold.table("command_events") if row.event == "go"]
+    assert [row.detail for row in gone] == ["at 1234 ms of fleet time"] * 2
+    assert fold.view.notices == ()
+
+
+def test_a_stage_that_is_given_up_is_told_and_its_commands_end_by_themselves() -> None:
+    script = staged().heard(answer(1, CUT, Reason.TOO_LATE))
+    script.add(StageStarted, 5, None)
+    fold = Fold(script)
+    assert fold.events(1) == ["ordered", "sent", "accepted", "cut"]
+    assert fold.events(2)[-1] == "no go"
+    assert command(fold, 2).ending is None
+    assert fold.view.notices[-1][1] == "order 5 is not started: not every module accepted it"
+
+
+def test_a_staged_motion_that_did_not_begin_is_cut() -> None:
+    fold = Fold(staged().heard(answer(1, CUT, Reason.TOO_LATE)))
+    row = command(fold)
+    assert (row.ending, row.reason, row.final) == ("cut", "too_late", 1)
+    assert motion(fold).outcome == "cut"
+    assert motion(fold)[9:] == (None,) * 12
+
+
+def test_waiting_for_its_go_shows_in_the_picture() -> None:
+    fold = Fold(staged().heard(telemetry(1, activity=Activity.STAGED)))
+    assert fold.view.modules[0].staged
+    assert fold.view.modules[0].doing == "pivot floor forward at 4400 rpm together"
+    view = fold.reducer.command(1)
+    assert view is not None
+    assert view.accepted
 
 
 def test_a_question_is_an_event_and_no_sending() -> None:
@@ -224,8 +321,8 @@ def test_a_refusal_ends_with_its_reason(reason: Any, text: str) -> None:
     assert fold.events() == ["ordered", "sent", "refused"]
     made = motion(fold)
     assert made.outcome == "refused"
-    assert made[9:] == (None,) * 11
-    assert f"birch refused pivot floor forward at 4400: {text.replace('_', ' ')}" in [
+    assert made[9:] == (None,) * 12
+    assert f"birch refused pivot floor forward at 4400 rpm: {text.replace('_', ' ')}" in [
         notice for _, notice in fold.view.notices
     ]
 
@@ -530,14 +627,34 @@ def test_a_rest_takes_the_place_of_what_waits_and_withdraws_what_was_sent() -> N
     assert (command(fold, 1).ending, command(fold, 1).reason) == ("cut", "rested")
 
 
-@pytest.mark.parametrize("again", ["stop", "rest"])
-def test_a_rest_on_its_way_is_not_taken_back(again: str) -> None:
+def lock_order(number: int) -> PlannedCommand:
+    """A lock-out, planned."""
+    return replace(rest_order(number), motion="lock", person="Ada")
+
+
+def test_a_lock_out_does_the_same_and_says_so() -> None:
+    script = called(1).order(planned(2)).order(lock_order(3))
+    fold = Fold(script)
+    assert command(fold, 1).ending is None
+    row = command(fold, 2)
+    assert (row.ending, row.reason, row.final) == ("cut", "locked_out", 1)
+    assert command(fold, 3).ending is None
+    script.sent(LockOut(EPOCH, BOOT, 3, 0x1111, b"Ada")).heard(answer(1, CUT, Reason.LOCKED_OUT))
+    script.heard(answer(3, FINISHED))
+    fold.on()
+    assert (command(fold, 1).ending, command(fold, 1).reason) == ("cut", "locked_out")
+    assert (command(fold, 3).ending, command(fold, 3).person) == ("finished", "Ada")
+
+
+@pytest.mark.parametrize("ahead", [rest_order(2), lock_order(2)])
+@pytest.mark.parametrize("again", ["stop", "rest", "lock"])
+def test_a_rest_or_lock_out_on_its_way_is_not_taken_back(ahead: Any, again: str) -> None:
     """It goes ahead of all that waits, and no stop and no other rest drops it."""
-    script = ordered(1).order(rest_order(2))
+    script = ordered(1).order(ahead)
     if again == "stop":
         script.add(StopPressed, 1, "key")
     else:
-        script.order(rest_order(3))
+        script.order(rest_order(3) if again == "rest" else lock_order(3))
     fold = Fold(script)
     assert command(fold, 2).ending is None
     script.sent(resting(2)).heard(answer(2, FINISHED))
@@ -626,13 +743,32 @@ def test_numbers_may_wrap_and_come_again() -> None:
 
 def test_the_command_in_hand_is_told_in_words() -> None:
     fold = Fold(called(1).order(planned(2, speed_rpm=4700, direction=-1, setting=2)))
-    assert fold.view.modules[0].doing == "pivot floor forward at 4400"
+    assert fold.view.modules[0].doing == "pivot floor forward at 4400 rpm"
     fold.script.heard(facts(1))
     fold.on()
-    assert fold.view.modules[0].doing == "pivot wall back at 4700"
+    assert fold.view.modules[0].doing == "pivot wall back at 4700 rpm"
     fold.script.sent(pivot(2)).heard(facts(2))
     fold.on()
     assert fold.view.modules[0].doing == ""
+
+
+@pytest.mark.parametrize(
+    ("changes", "text"),
+    [
+        ({"motion": "hop", "setting": 0, "speed_rpm": 7000}, "hop forward at 7000 rpm"),
+        ({"motion": "twist", "setting": 0, "direction": -1}, "twist back at 4400 rpm"),
+        ({"motion": "lock", "person": "Ada"}, "lock-out by Ada"),
+        ({"motion": "unlock", "person": "Ada"}, "unlock by Ada"),
+        ({"motion": "set", "setting": 1, "value": 5000}, "set wheel limit to 5000 rpm"),
+        ({"motion": "set", "setting": 2, "value": 250}, "set telemetry period to 250 ms"),
+        ({"motion": "set", "setting": 3, "value": 3400}, "set battery low to 3400 mV"),
+        ({"motion": "set", "setting": 4, "value": 5}, "set groups to 5"),
+        ({"motion": "set", "setting": 77, "value": -1}, "set setting 77 to -1"),
+    ],
+)
+def test_each_kind_of_command_has_its_words(changes: dict[str, Any], text: str) -> None:
+    script = Script().open().heard(presence()).order(planned(**changes))
+    assert Fold(script).view.modules[0].doing == text
 
 
 def test_what_was_sent_is_told_before_what_waits() -> None:
@@ -640,7 +776,7 @@ def test_what_was_sent_is_told_before_what_waits() -> None:
     script.order(planned(4, speed_rpm=4700)).heard(facts(1))
     assert Fold(script).view.modules[0].doing == "rest"
     script = ordered(1).order(planned(2, motion="flash", setting=0, direction=0, speed_rpm=0))
-    assert Fold(script).view.modules[0].doing == "pivot floor forward at 4400"
+    assert Fold(script).view.modules[0].doing == "pivot floor forward at 4400 rpm"
     script.sent(Flash(EPOCH, BOOT, 2, 0x1111, 2000))
     assert Fold(script).view.modules[0].doing == "flash"
 
@@ -661,7 +797,13 @@ def test_a_command_s_picture_follows_it() -> None:
     view = fold.reducer.command(1)
     assert view is not None
     assert (view.sends, view.ending, view.final, view.outcome) == (1, "", False, None)
+    assert not view.accepted
     assert fold.reducer.command(1) is view
+    fold.script.heard(answer(1, ACCEPTED))
+    fold.on()
+    view = fold.reducer.command(1)
+    assert view is not None
+    assert view.accepted
     fold.script.heard(facts())
     fold.on()
     view = fold.reducer.command(1)
@@ -735,7 +877,10 @@ REPLIES = st.sampled_from(
         answer(1, REFUSED, Reason.NUMBER_PASSED),
         answer(1, REFUSED, Reason.OTHER_IDENTITY),
         answer(1, FINISHED),
+        answer(1, REFUSED, Reason.OWNED),
         answer(1, CUT, Reason.RESTED),
+        FaultNotice(BOOT + 1, 0x1111, 1, 0, 5, 0),
+        Echo(BOOT + 1, 1, 0x1111, 5, 5),
         answer(1, UNKNOWN),
         answer(1, UNKNOWN, Reason.OTHER_BOOT),
         facts(),

@@ -14,6 +14,7 @@ from storage.records import BytesIn, BytesOut, LinkChanged
 from storage.rows import LinkEventRow
 from tests.support.wire_script import (
     ADDRESS,
+    CONSOLE,
     EPOCH,
     Fold,
     Script,
@@ -63,7 +64,7 @@ def test_a_lost_link_is_an_alarm_and_a_notice() -> None:
 def test_bytes_and_frames_are_counted_each_way() -> None:
     script = Script().open()
     inward = from_module(presence()) + from_module(telemetry(1)) + b"\x02\x41\x00"
-    outward = to_everyone(RollCall(EPOCH))
+    outward = to_everyone(RollCall(EPOCH, CONSOLE))
     script.add(BytesIn, 0, inward)
     script.add(BytesOut, 0, outward)
     link = Fold(script).view.links[0]

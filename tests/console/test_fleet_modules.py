@@ -7,11 +7,12 @@ from hypothesis import example, given
 from hypothesis import strategies as st
 
 from protocol.codes import SIMULATED_BIT, Flags, identity_bits
-from storage.records import BytesIn, CommandExpired, LinkChanged
+from storage.records import BytesIn, CommandExpired, EpochChosen, LinkChanged
 from storage.rows import ModuleRow, TelemetryRow
 from tests.support.wire_script import (
     ADDRESS,
     BOOT,
+    CONSOLE,
     EPOCH,
     IDENTITY,
     Fold,
@@ -50,7 +51,7 @@ def test_a_presence_enters_a_module_and_the_nameplate_fills_it() -> None:
     fold.script.heard(nameplate())
     fold.on()
     assert fold.table("modules") == [
-        ModuleRow(1, "80005a5a00001111", 1, 0x10, "birch", "paver", 3, 9000, BOOT, 1)
+        ModuleRow(1, "80005a5a00001111", 1, 0x10, "birch", "paver", 3, 9000, BOOT, 1, None)
     ]
     module = fold.view.modules[0]
     assert (module.name, module.kind, module.wheel_max_rpm) == ("birch", "paver", 9000)
@@ -109,13 +110,77 @@ def test_a_nameplate_of_a_stranger_only_calls_the_roll() -> None:
     assert fold.reducer.unknown_heard
 
 
-def test_the_highest_epoch_heard_is_kept() -> None:
+def test_the_highest_epoch_in_the_way_is_kept() -> None:
+    """WIRE.md, "Owner": one that is greater than ours."""
     fold = Fold(met())
-    assert (fold.reducer.epoch, fold.reducer.highest_epoch) == (EPOCH, EPOCH)
+    assert (fold.reducer.epoch, fold.reducer.highest_epoch) == (EPOCH, 0)
     fold.script.heard(presence(epoch=EPOCH + 5)).heard(presence(epoch=EPOCH + 3))
     fold.on()
     assert (fold.reducer.epoch, fold.reducer.highest_epoch) == (EPOCH, EPOCH + 5)
     assert fold.view.modules[0].epoch == EPOCH + 3
+
+
+# -- owner -------------------------------------------------------------------------------
+
+
+def test_our_own_epoch_is_not_in_the_way() -> None:
+    fold = Fold(met().heard(presence(epoch=0, console=0)))
+    assert (fold.reducer.highest_epoch, fold.reducer.console) == (0, CONSOLE)
+    assert fold.view.console == CONSOLE
+
+
+def test_our_epoch_under_another_number_is_in_the_way() -> None:
+    """WIRE.md, "Owner": of its own with another console's number, too."""
+    fold = Fold(met().heard(presence(console=CONSOLE + 1)))
+    assert fold.reducer.highest_epoch == EPOCH
+    fold.script.add(EpochChosen, EPOCH + 1)
+    fold.script.heard(presence(console=CONSOLE + 1))
+    fold.on()
+    assert (fold.reducer.epoch, fold.reducer.highest_epoch) == (EPOCH + 1, EPOCH)
+    fold.script.heard(presence(console=CONSOLE + 1, epoch=EPOCH + 1))
+    fold.on()
+    assert fold.reducer.highest_epoch == EPOCH + 1
+
+
+def test_an_older_epoch_of_another_is_not_in_the_way() -> None:
+    fold = Fold(met().heard(presence(console=CONSOLE + 1, epoch=EPOCH - 1)))
+    assert fold.reducer.highest_epoch == 0
+
+
+def test_whom_a_module_follows_and_for_how_long_is_shown() -> None:
+    script = met().heard(presence(console=77, owner_left_ms=2400))
+    view = Fold(script).view.modules[0]
+    assert (view.console, view.owner_left_ms, view.owner_heard_ns) == (77, 2400, script.t_ns)
+
+
+def test_another_console_that_owns_a_module_is_told_once() -> None:
+    other = presence(console=0xABCD, epoch=EPOCH - 5, owner_left_ms=2400)
+    script = met().heard(other).heard(other)
+    fold = Fold(script)
+    assert fold.alarms == ["owned by another console"]
+    (alarm,) = fold.table("alarms")
+    assert alarm.module == 1
+    assert alarm.detail == "birch follows console 0000abcd, for 2.4 s more at least"
+    script.heard(presence()).heard(other)
+    fold.on()
+    assert len(fold.alarms) == 2
+
+
+@pytest.mark.parametrize("left", [{"owner_left_ms": 0}, {"console": 0}, {"console": CONSOLE}])
+def test_whom_nobody_else_owns_is_not_told(left: dict[str, int]) -> None:
+    word = presence(console=0xABCD, epoch=EPOCH - 5)._replace(**left)
+    assert Fold(met().heard(word)).alarms == []
+
+
+def test_a_restarted_module_follows_nobody() -> None:
+    view = Fold(met().heard(telemetry(1, boot=BOOT + 1))).view.modules[0]
+    assert (view.epoch, view.console, view.owner_left_ms) == (0, 0, 0)
+
+
+@pytest.mark.parametrize(("flags", "permitted"), [(0, False), (Flags.PERMITTED, True)])
+def test_a_drive_permit_is_shown(flags: int, permitted: bool) -> None:
+    for word in (presence(flags=flags), telemetry(1, flags=flags)):
+        assert Fold(met().heard(word)).view.modules[0].permitted is permitted
 
 
 # -- addresses and links -----------------------------------------------------------------

@@ -119,7 +119,7 @@ def test_after_a_clear_whoever_still_holds_its_latch_is_missing() -> None:
 
 
 def test_a_console_that_starts_finds_the_latch_in_force() -> None:
-    script = two().heard(presence(stop_number=6, latched=1))
+    script = two().heard(presence(stop_number=6, flags=1))
     fold = Fold(script)
     stop = fold.view.stop
     assert (stop.stop_number, stop.in_force, stop.confirmed, stop.missing) == (6, True, (1,), (2,))
@@ -127,7 +127,7 @@ def test_a_console_that_starts_finds_the_latch_in_force() -> None:
     assert fold.alarms == ["all-stop"]
     assert fold.table("alarms")[0].module == 1
     assert "6 is in force, says birch" in fold.view.notices[-1][1]
-    script.heard(presence(stop_number=6, latched=1))
+    script.heard(presence(stop_number=6, flags=1))
     fold.on()
     assert fold.alarms == ["all-stop"]
     script.add(StopLifted, 6, "key")
@@ -140,7 +140,7 @@ def test_found_in_force_whichever_module_speaks_first(latched_first: bool) -> No
     """One module was out of reach when the last console cleared: its latch still counts."""
     script = two()
     words = [
-        lambda: script.heard(presence(stop_number=3, latched=1)),
+        lambda: script.heard(presence(stop_number=3, flags=1)),
         lambda: script.heard(presence(identity=OTHER, stop_number=7), address=ELM),
     ]
     for say in words if latched_first else reversed(words):
@@ -151,7 +151,7 @@ def test_found_in_force_whichever_module_speaks_first(latched_first: bool) -> No
 
 
 def test_a_number_reported_without_a_latch_only_moves_the_count() -> None:
-    fold = Fold(two().heard(presence(stop_number=9, latched=0)))
+    fold = Fold(two().heard(presence(stop_number=9)))
     assert fold.reducer.newest_stop == 9
     assert not fold.view.stop.in_force
     assert fold.alarms == []
@@ -160,7 +160,7 @@ def test_a_number_reported_without_a_latch_only_moves_the_count() -> None:
 def test_a_latch_of_a_stop_lifted_here_is_not_in_force_again() -> None:
     script = pressed()
     script.add(StopLifted, 1, "key")
-    fold = Fold(script.heard(presence(stop_number=1, latched=1)))
+    fold = Fold(script.heard(presence(stop_number=1, flags=1)))
     assert not fold.view.stop.in_force
     assert fold.view.stop.missing == (1,)
 
@@ -173,7 +173,7 @@ def test_a_newer_stop_of_somebody_else_is_in_force_after_a_clear_here() -> None:
 
 
 def test_a_delayed_word_with_an_older_number_unlatches_nothing() -> None:
-    script = pressed(4).heard(stopped(4)).heard(presence(stop_number=3, latched=0))
+    script = pressed(4).heard(stopped(4)).heard(presence(stop_number=3))
     fold = Fold(script)
     assert fold.view.stop.confirmed == (1,)
 
@@ -182,7 +182,7 @@ def test_a_latch_in_telemetry_shows_and_calls_the_roll_where_nothing_explains_it
     fold = Fold(two().heard(telemetry(1, flags=Flags.LATCHED)))
     assert fold.view.modules[0].latched
     assert fold.reducer.unknown_heard
-    fold.script.heard(presence(stop_number=5, latched=1))
+    fold.script.heard(presence(stop_number=5, flags=1))
     fold.on()
     assert not fold.reducer.unknown_heard
     assert fold.view.stop.in_force

@@ -26,8 +26,8 @@ def test_no_breach_in_a_random_script(seed: int, loss: float) -> None:
 class ForgetsTheNewest(CommandMemory):
     """A fault: the newest number is remembered one too low, so that it is fresh once more."""
 
-    def judge(self, command: Command) -> Fresh | Reply:
-        verdict = super().judge(command)
+    def judge(self, command: Command, owned: bool = False) -> Fresh | Reply:
+        verdict = super().judge(command, owned)
         if isinstance(verdict, Fresh) and self._newest is not None:
             self._newest = (self._newest - 1) % 65_536
         return verdict
@@ -37,5 +37,5 @@ class ForgetsTheNewest(CommandMemory):
 
 
 def test_the_script_finds_a_memory_one_too_small(monkeypatch: pytest.MonkeyPatch) -> None:
-    monkeypatch.setattr("sim_link.module.CommandMemory", ForgetsTheNewest)
+    monkeypatch.setattr("sim_link.box.CommandMemory", ForgetsTheNewest)
     assert any(run_script(seed, 150, 0.3).breaches for seed in range(8))

@@ -1,20 +1,45 @@
 """From orders to numbered commands and their messages."""
 
+from dataclasses import replace
+
 import pytest
 
 from console.errors import InputError
+from console.limits import NS_PER_MS
 from console.orders import Order, parse_order
-from console.planning import build_commands, count_on, resolve, to_message
-from protocol.codes import Direction, Setting
-from protocol.message import Flash, Pivot, Rest, Spin
+from console.planning import Plan, build_commands, count_on, resolve, to_message
+from protocol.clock import ModuleClock
+from protocol.codes import Direction, Setting, SettingId
+from protocol.message import (
+    Flash,
+    Hop,
+    LockOut,
+    Pivot,
+    Rest,
+    SettingWrite,
+    Spin,
+    Twist,
+    Unlock,
+)
 from storage.records import PlannedCommand
 from tests.support.fake_fleet import NAMES, eight
 
 
-def planned(text: str, **numbers: int) -> tuple[PlannedCommand, ...]:
+def clock_of(module: int) -> ModuleClock:
+    """Module time is as many seconds ahead as the module's count, known to 2 ms."""
+    clock = ModuleClock(0)
+    heard_ns = module * 10**9 + 2 * NS_PER_MS
+    clock.sample(0, heard_ns, heard_ns, 4 * NS_PER_MS)
+    return clock
+
+
+PLAN = Plan(epoch=9, trial=3, stage=0, latest_ns=4 * NS_PER_MS)
+
+
+def planned(text: str, plan: Plan = PLAN) -> tuple[PlannedCommand, ...]:
     order = parse_order(text, NAMES)
     modules = resolve(order, eight())
-    return build_commands(order, modules, last_command=40, numbers={}, epoch=9, trial=3, **numbers)
+    return build_commands(order, modules, plan, last_command=40, numbers={}, clock_of=clock_of)
 
 
 def test_no_names_mean_everyone() -> None:
@@ -53,14 +78,26 @@ def test_commands_are_numbered_on_and_carry_who_they_are_for() -> None:
     assert all((each.setting, each.direction) == (1, -1) for each in commands)
 
 
+ENVELOPE = (9, 7, 1, 0x1002)
+LATEST_MS = 2001  # 4 ms of fleet time, 2 s ahead, less a bound of 2 ms and what 4 ms may drift
+
+
 @pytest.mark.parametrize(
     ("text", "expected"),
     [
-        ("birch pivot back at 5200", Pivot(9, 7, 1, 0x1002, Setting.FLOOR, Direction.BACK, 5200)),
-        ("birch spin at 3000 for 5 s", Spin(9, 7, 1, 0x1002, 3000, 5000)),
-        ("birch spin back at 3000 for 5 s", Spin(9, 7, 1, 0x1002, -3000, 5000)),
-        ("birch rest", Rest(9, 7, 1, 0x1002)),
-        ("birch flash for 3 s", Flash(9, 7, 1, 0x1002, 3000)),
+        (
+            "birch pivot back at 5200",
+            Pivot(*ENVELOPE, LATEST_MS, 0, Setting.FLOOR, Direction.BACK, 5200),
+        ),
+        ("birch hop at 7000", Hop(*ENVELOPE, LATEST_MS, 0, Direction.FORWARD, 7000)),
+        ("birch twist back at 4000", Twist(*ENVELOPE, LATEST_MS, 0, Direction.BACK, 4000)),
+        ("birch spin at 3000 for 5 s", Spin(*ENVELOPE, LATEST_MS, 3000, 5000)),
+        ("birch spin back at 3000 for 5 s", Spin(*ENVELOPE, LATEST_MS, -3000, 5000)),
+        ("birch rest", Rest(*ENVELOPE)),
+        ("birch flash for 3 s", Flash(*ENVELOPE, 3000)),
+        ("birch lock by Ada", LockOut(*ENVELOPE, b"Ada")),
+        ("birch unlock by Ada", Unlock(*ENVELOPE, b"Ada")),
+        ("birch set groups to 5", SettingWrite(*ENVELOPE, SettingId.GROUPS, 5)),
     ],
 )
 def test_each_motion_has_its_message(text: str, expected: object) -> None:
@@ -68,8 +105,26 @@ def test_each_motion_has_its_message(text: str, expected: object) -> None:
     assert to_message(command) == expected
 
 
+def test_each_module_s_latest_start_is_in_its_own_time() -> None:
+    commands = planned("birch, elm pivot back at 5200")
+    assert [each.latest_ms for each in commands] == [2_001, 4_001]
+
+
+def test_a_stage_goes_to_all_of_an_order() -> None:
+    plan = Plan(epoch=9, stage=17)
+    commands = planned("birch, elm twist back at 5200 together", plan)
+    assert {to_message(each).stage for each in commands} == {17}  # type: ignore[union-attr]
+
+
+def test_what_drives_no_wheel_needs_no_clock() -> None:
+    order = parse_order("birch flash", NAMES)
+    [command] = build_commands(
+        order, eight()[1:2], PLAN, last_command=0, numbers={}, clock_of=lambda _: None
+    )
+    assert command.latest_ms == 0
+
+
 def test_a_motion_without_a_message_is_refused() -> None:
     [command] = planned("birch rest")
-    hop = PlannedCommand(**{**{n: getattr(command, n) for n in command.__slots__}, "motion": "hop"})
-    with pytest.raises(InputError, match="hop"):
-        to_message(hop)
+    with pytest.raises(InputError, match="somersault"):
+        to_message(replace(command, motion="somersault"))

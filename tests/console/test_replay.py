@@ -12,7 +12,7 @@ from console.errors import InputError, LogError
 from console.fleet import FleetReducer
 from console.replay import BURST_RECORDS, ReplayPlayer, fold_rows, rebuild_session
 from console.view import FleetView
-from protocol.codes import AnswerState
+from protocol.codes import BRIDGE_ADDRESS, AnswerState
 from storage.errors import StorageMisuseError
 from storage.reader import LogReader
 from storage.records import (
@@ -23,11 +23,21 @@ from storage.records import (
     Remark,
     SessionClosed,
     SessionOpened,
+    StageStarted,
     StopLifted,
     StopPressed,
 )
 from storage.rows import TABLES
 from storage.writer import LogWriter
+from tests.support.module_words import (
+    bridge_status,
+    echo,
+    fault,
+    lock_state,
+    probe,
+    settings_read,
+    upkeep,
+)
 from tests.support.wire_script import (
     BOOT,
     EPOCH,
@@ -56,7 +66,11 @@ def session() -> Script:
     script.heard(stopped(1))
     script.add(StopLifted, 1, "key")
     script.heard(stopped(1, latched=0))
-    script.order(planned(2)).sent(pivot(2))
+    upkeep(script, 1).heard(*settings_read()).heard(lock_state(), fault(1, 50))
+    script.heard(lock_state(""), fault(0, 90)).sent(probe(2)).heard(echo(2, 9_000))
+    script.heard(bridge_status(2, 10), address=BRIDGE_ADDRESS)
+    script.order(planned(2, stage=4)).sent(pivot(2))
+    script.add(StageStarted, 2, 4000)
     script.add(CommandExpired, 2)
     script.heard(presence(boot=BOOT + 1)).heard(telemetry(3, boot=BOOT + 1, wheel_rpm=77))
     script.add(Remark, "2026-03-04T09:05:00Z", "R. Ode", "the end")
@@ -365,7 +379,9 @@ def test_rebuild_gives_the_tables_that_the_live_session_left(tmp_path: Path) -> 
     expected = {"modules": 1, "telemetry": 3, "orders": 2, "commands": 2, "motions": 2}
     assert {name: counts[name] for name in expected} == expected
     assert counts["remarks"] == 1
-    assert counts["alarms"] == 3
+    # A stop and its clear; a lock and a fault, each with its end; the bridge's restart; the boot.
+    assert counts["alarms"] == 2 + 2 + 2 + 1 + 1
+    assert (counts["settings"], counts["traces"], counts["bridge_status"]) == (5, 1, 2)
     rows = fold_rows(records)
     assert {name: len(kept) for name, kept in tables_of(rows).items()} == counts
 

@@ -13,9 +13,11 @@ from console.standing import (
     STOP_PERIOD_NS,
     RollCaller,
     StopKeeper,
+    follows,
+    owned_by_another,
     unexplained,
 )
-from console.view import FleetView, StopView
+from console.view import FleetView, ModuleView, StopView
 from tests.support.fake_fleet import eight, fleet_view
 
 EPOCH = 1_760_000_000
@@ -49,12 +51,42 @@ def test_hurry_calls_at_the_next_chance() -> None:
     assert roll.due(lambda: False, 1_300_000_000)
 
 
+CONSOLE = 0xC0C0
+
+
+def following(**changes: object) -> tuple[ModuleView, ...]:
+    first, *others = (replace(each, epoch=EPOCH, console=CONSOLE) for each in eight())
+    return (replace(first, **changes), *others)  # type: ignore[arg-type]
+
+
+def fleet_of(modules: tuple[ModuleView, ...]) -> FleetView:
+    return fleet_view(*modules, epoch=EPOCH, console=CONSOLE)
+
+
 def test_who_is_unexplained() -> None:
-    modules = eight()
-    assert not unexplained(modules, EPOCH, False)
-    assert unexplained(modules, EPOCH, True)
-    assert unexplained(modules, EPOCH + 1, False)
-    assert unexplained((replace(modules[0], kind=""), *modules[1:]), EPOCH, False)
+    assert not unexplained(fleet_of(following()), False)
+    assert unexplained(fleet_of(following()), True)
+    assert unexplained(fleet_of(following(epoch=EPOCH + 1)), False)
+    assert unexplained(fleet_of(following(console=CONSOLE + 1)), False)
+    assert unexplained(fleet_of(following(kind="")), False)
+
+
+def test_a_module_that_another_console_owns_is_explained_until_that_one_s_time_is_over() -> None:
+    now_ns = fleet_of(()).t_ns
+    owned = {"console": CONSOLE + 1, "owner_left_ms": 2000}
+    just_now = fleet_of(following(**owned, owner_heard_ns=now_ns - 1_000_000_000))
+    assert owned_by_another(just_now.modules[0], just_now)
+    assert not unexplained(just_now, False)
+    before = fleet_of(following(**owned, owner_heard_ns=now_ns - 2_000_000_000))
+    assert not owned_by_another(before.modules[0], before)
+    assert unexplained(before, False)
+
+
+def test_who_follows() -> None:
+    fleet = fleet_of(following(console=0))
+    assert not follows(fleet.modules[0], fleet)
+    assert not owned_by_another(fleet.modules[0], fleet)
+    assert follows(fleet.modules[1], fleet)
 
 
 def stopped(missing: tuple[int, ...], in_force: bool = True) -> FleetView:

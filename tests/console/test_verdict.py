@@ -107,13 +107,15 @@ ANY_FACTS = st.builds(
     spin_up_ms=st.integers(0, 65535),
     settle_ms=st.integers(0, 65535),
     sag_mV=st.integers(0, 65535),
+    started_ms=st.integers(0, 2**32 - 1),
 )
+MOTIONS = st.sampled_from(["pivot", "hop", "twist"])
 
 
-@given(ANY_FACTS)
-def test_any_facts_have_a_verdict(measured: Facts) -> None:
+@given(ANY_FACTS, MOTIONS)
+def test_any_facts_have_a_verdict(measured: Facts, motion: str) -> None:
     """Whatever a module sends gets one, and none that says that no report came."""
-    outcome = verdict(measured)
+    outcome = verdict(measured, motion)
     assert outcome not in {Outcome.UNSEEN, Outcome.REFUSED}
     if outcome is Outcome.CUT:
         assert measured.reason != 0
@@ -121,11 +123,63 @@ def test_any_facts_have_a_verdict(measured: Facts) -> None:
         assert outcome in COUNTED
 
 
-@given(ANY_FACTS, st.integers(0, 65535), st.integers(0, 65535))
-def test_only_what_the_verdict_looks_at_decides(measured: Facts, sag: int, settle: int) -> None:
+@given(ANY_FACTS, MOTIONS, st.integers(0, 65535), st.integers(0, 65535))
+def test_only_what_the_verdict_looks_at_decides(
+    measured: Facts, motion: str, sag: int, settle: int
+) -> None:
     """Battery, times and rates are facts of wear, not of where the module lies."""
-    other = measured._replace(sag_mV=sag, settle_ms=settle, peak_rate_dps=7, spin_up_ms=9)
-    assert verdict(other) is verdict(measured)
+    wear = {"sag_mV": sag, "settle_ms": settle, "peak_rate_dps": 7, "spin_up_ms": 9}
+    other = measured._replace(started_ms=1, **wear)
+    assert verdict(other, motion) is verdict(measured, motion)
+
+
+@pytest.mark.parametrize(
+    ("expected", "changes"),
+    [
+        (Outcome.LANDED, {}),
+        (Outcome.LANDED, {"turned_ddeg": 3600, "face_after": 1}),
+        (Outcome.LANDED, {"turned_ddeg": -900, "face_after": 4}),
+        (Outcome.LANDED, STAYED | {"peak_tilt_ddeg": 20}),
+        (Outcome.LANDED, {"face_after": 5}),
+        (Outcome.STUCK, STAYED | {"peak_tilt_ddeg": 19}),
+        (Outcome.ADRIFT, {"settled": 0}),
+        (Outcome.ADRIFT, {"face_after": 0}),
+        (Outcome.CUT, STAYED | UNBRAKED | {"reason": Reason.PERMIT_LAPSED, "peak_tilt_ddeg": 0}),
+    ],
+)
+def test_a_hop_lands_on_any_face_once_it_left_its_place(
+    expected: Outcome, changes: dict[str, int]
+) -> None:
+    """It has neither short nor over: where on the floor it came down, facts do not say."""
+    assert verdict(facts(**changes), "hop") is expected
+
+
+UPRIGHT = {"face_before": 5, "face_after": 5, "peak_tilt_ddeg": 0}
+
+
+@pytest.mark.parametrize(
+    ("expected", "changes"),
+    [
+        (Outcome.LANDED, {"turned_ddeg": 450}),
+        (Outcome.LANDED, {"turned_ddeg": -450}),
+        (Outcome.LANDED, {"turned_ddeg": 3000}),
+        (Outcome.SHORT, {"turned_ddeg": 449}),
+        (Outcome.SHORT, {"turned_ddeg": -20}),
+        (Outcome.STUCK, {"turned_ddeg": 19}),
+        (Outcome.ADRIFT, {"settled": 0}),
+        (Outcome.ADRIFT, {"face_after": 0}),
+        (Outcome.ADRIFT, {"face_after": 2}),
+        (Outcome.CUT, UNBRAKED | {"reason": Reason.STOPPED, "turned_ddeg": 0}),
+    ],
+)
+def test_a_twist_lands_from_half_a_quarter_turn_on(
+    expected: Outcome, changes: dict[str, int]
+) -> None:
+    assert verdict(facts(**UPRIGHT | changes), "twist") is expected
+
+
+def test_facts_of_another_motion_are_judged_as_a_pivot_s() -> None:
+    assert verdict(facts(), "roll") is verdict(facts())
 
 
 def test_the_thresholds_are_what_they_are_said_to_be() -> None:

@@ -68,7 +68,7 @@ SOME: list[Row] = [
 
 def test_the_list_of_derived_tables() -> None:
     assert DERIVED_TABLES == READER_TABLES
-    assert len(DERIVED_TABLES) == 11
+    assert len(DERIVED_TABLES) == 14
     assert not {"sessions", "wire", "records"} & set(DERIVED_TABLES)
 
 

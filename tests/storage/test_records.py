@@ -18,6 +18,7 @@ from storage.records import (
     OrderGiven,
     Remark,
     SessionOpened,
+    StageStarted,
     note_body,
     note_sort,
     read_note,
@@ -69,7 +70,28 @@ def test_the_stored_form_of_a_session_is_what_old_logs_hold() -> None:
         '"program":"tumblewire 0.1.0"}'
     )
     assert read_note("SessionOpened", 5_000_000_000, body) == OPENED  # before there was a seal
-    assert note_body(OPENED) == body[:-1] + ',"sealed":false}'
+    assert note_body(OPENED) == body[:-1] + ',"sealed":false,"console":0}'
+
+
+def test_a_command_of_an_old_log_takes_what_it_lacks_as_nothing() -> None:
+    """As it was stored before a command had a latest start, a stage, a person and a value."""
+    body = (
+        '{"order":1,"text":"birch pivot back at 4350","source":"typed","commands":[{"command":1,'
+        '"module":1,"identity":161,"boot":77,"epoch":9,"number":1,"motion":"pivot","setting":1,'
+        '"direction":-1,"speed_rpm":4350,"duration_ms":0,"trial":0}]}'
+    )
+    record = read_note("OrderGiven", 1, body)
+    assert isinstance(record, OrderGiven)
+    (command,) = record.commands
+    assert (command.identity, command.direction, command.trial) == (161, -1, 0)
+    assert (command.latest_ms, command.stage, command.person, command.value) == (0, 0, "", 0)
+
+
+@pytest.mark.parametrize(("start_ms", "stored"), [(4_000_000_000, "4000000000"), (None, "null")])
+def test_a_stage_s_start_is_a_time_or_none(start_ms: int | None, stored: str) -> None:
+    body = f'{{"order":7,"start_ms":{stored}}}'
+    assert note_body(StageStarted(1, 7, start_ms)) == body
+    assert read_note("StageStarted", 1, body) == StageStarted(1, 7, start_ms)
 
 
 def test_the_stored_form_of_a_correction_is_what_old_logs_hold() -> None:

@@ -10,7 +10,7 @@ from tests.support.log_samples import ROW_TYPES
 
 def test_every_row_type_has_a_table() -> None:
     assert set(TABLES) == set(ROW_TYPES)
-    assert len(TABLES) == 11
+    assert len(TABLES) == 14
 
 
 def test_no_two_share_a_table() -> None:
@@ -28,5 +28,5 @@ def test_keys_are_columns_at_the_front(row_type: Any) -> None:
 
 @pytest.mark.parametrize("row_type", ROW_TYPES)
 def test_fields_are_of_types_that_sqlite_keeps(row_type: Any) -> None:
-    kept = {int, str, float, int | None, str | None, float | None}
+    kept = {int, str, float, bytes, int | None, str | None, float | None}
     assert set(row_type.__annotations__.values()) <= kept

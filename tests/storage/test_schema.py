@@ -11,11 +11,12 @@ import pytest
 from storage.connect import connect_to_write
 from storage.errors import LogUnavailableError
 from storage.inserts import columns_of
+from storage.reader import LogReader
 from storage.rows import TABLES
 from storage.schema import APPLICATION_ID, MIGRATION_SET, MIGRATIONS, migrations, open_log
 from tests.support.log_samples import ROW_TYPES, ask
 
-SQL_TYPES = {int: "INTEGER", str: "TEXT", float: "REAL"}
+SQL_TYPES = {int: "INTEGER", str: "TEXT", float: "REAL", bytes: "BLOB"}
 
 
 @pytest.fixture
@@ -59,7 +60,10 @@ def test_all_tables_and_views_are_there(log: Path) -> None:
     expected = {table.name for table in TABLES.values()} | {"sessions", "wire", "records"}
     assert expected <= found
     views = {name for (name,) in ask(log, "SELECT name FROM sqlite_master WHERE type = 'view'")}
-    assert views == {"motions_named", "trials_counted", "success"}
+    assert views == {
+        *("motions_named", "trials_counted", "success"),
+        *("settings_now", "trace_samples"),
+    }
 
 
 def test_fast_tables_keep_one_tree_only(log: Path) -> None:
@@ -190,7 +194,7 @@ def test_migrations_of_another_set_are_nobodys_business(log: Path) -> None:
 
 
 def test_an_older_log_is_brought_up_to_date(log: Path, monkeypatch: pytest.MonkeyPatch) -> None:
-    later = {**MIGRATIONS, "0002_trial": ("CREATE TABLE later (x)",)}
+    later = {**MIGRATIONS, "9998_trial": ("CREATE TABLE later (x)",)}
     monkeypatch.setattr("storage.schema.MIGRATIONS", later)
     open_log(log).close()
     assert ask(log, "SELECT count(*) FROM later") == [(0,)]
@@ -198,11 +202,110 @@ def test_an_older_log_is_brought_up_to_date(log: Path, monkeypatch: pytest.Monke
     assert names == [(name,) for name in later]
 
 
+FIRST_VALUES: dict[str, tuple[Any, ...]] = {
+    "sessions": (
+        1,
+        "ab" * 16,
+        "2026-03-02T08:00:00Z",
+        5,
+        None,
+        "closed",
+        "Mira",
+        9,
+        1.0,
+        "x",
+        0,
+        0,
+    ),
+    "wire": (1, 1, 5, 0, 0, b"\x01\x02"),
+    "records": (1, 2, 6, "CommandExpired", '{"command":1}'),
+    "modules": (1, 1, "00000000000000a1", 0, 17, "birch", "paver", 3, 9000, 77, 1),
+    "telemetry": (1, 1, 0, 5, 1, 77, 9, 4500, 0, 0, 1, 0, 3905, 2410, -3),
+    "orders": (1, 1, 7, "typed", "birch pivot forward at 4350", 1),
+    "commands": (
+        *(1, 1, 1, 7, 1, "00000000000000a1", 77, 9, 101, "pivot", "floor", "forward", 4350, 0, 0),
+        *(1, 0, "finished", None, 1, 9),
+    ),
+    "command_events": (1, 3, 0, 7, 1, "ordered", ""),
+    "motions": (
+        *(1, 1, 1, "pivot", "floor", "forward", 4350, 0, 0, "landed", 90.1, 95.0, 1, 2, 1, 410),
+        *(4330, 41.5, 900, 350, 0.21),
+    ),
+    "link_events": (1, 4, 8, 0, "sim://", "open", ""),
+    "sheets": (1, 1, 5, None, "morning", 7, 40, None, "[sheet]"),
+    "alarms": (1, 5, 0, 8, None, "all-stop", "number 1"),
+    "remarks": (1, 6, 8, "2026-03-02T08:01:00Z", "Mira", "belt slipped"),
+    "corrections": (
+        *(1, 7, 9, "2026-03-02T08:02:00Z", "00000000000000a1", 77, 101),
+        *("short", "Mira", "saw it"),
+    ),
+}
+"""A row of each table as the first migration made it, written down by hand."""
+
+ADDED: dict[str, tuple[Any, ...]] = {
+    "modules": (None,),
+    "commands": (0, 0, "", 0),
+    "motions": (None,),
+}
+"""What the rows of an older log hold in the columns that came later."""
+
+
+def first_log(path: Path, monkeypatch: pytest.MonkeyPatch) -> Path:
+    """A log as the program's first version left it."""
+    first = next(iter(MIGRATIONS))
+    monkeypatch.setattr("storage.schema.MIGRATIONS", {first: MIGRATIONS[first]})
+    connection = open_log(path)
+    for table, values in FIRST_VALUES.items():
+        connection.execute(f"INSERT INTO {table} VALUES ({','.join('?' * len(values))})", values)
+    connection.close()
+    monkeypatch.undo()
+    return path
+
+
+def test_a_first_log_opens_and_keeps_its_rows(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    path = first_log(tmp_path / "first.db", monkeypatch)
+    with pytest.raises(LogUnavailableError, match="older version"):
+        LogReader.open(path)
+    open_log(path).close()
+    for table, values in FIRST_VALUES.items():
+        assert ask(path, f"SELECT * FROM {table}") == [values + ADDED.get(table, ())]
+    assert ask(path, "SELECT module, outcome, corrected_by FROM motions_named") == [
+        ("birch", "short", "Mira")
+    ]
+    new = {table.name for table in TABLES.values()} - FIRST_VALUES.keys()
+    assert new == {"settings", "traces", "bridge_status"}
+    assert all(ask(path, f"SELECT count(*) FROM {table}") == [(0,)] for table in new)
+
+
+def test_a_first_log_is_read_as_any_other_once_opened(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    path = first_log(tmp_path / "first.db", monkeypatch)
+    open_log(path).close()
+    reader = LogReader.open(path)
+    assert [record for record, _ in reader.records(1)] == [1, 2]
+    assert [trial.outcome for trial in reader.trials(1)] == ["short"]
+    assert reader.table("modules", 1)[0][-1] is None
+    reader.close()
+
+
+def test_a_log_brought_up_to_date_is_laid_out_as_a_new_one(
+    log: Path, tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    path = first_log(tmp_path / "first.db", monkeypatch)
+    open_log(path).close()
+    for table in TABLES.values():
+        layout = f"PRAGMA table_info({table.name})"
+        assert ask(path, layout) == ask(log, layout)
+
+
 def test_a_migration_that_fails_leaves_nothing(
     tmp_path: Path, monkeypatch: pytest.MonkeyPatch
 ) -> None:
     path = tmp_path / "fleet.db"
-    broken = {**MIGRATIONS, "0002_broken": ("CREATE TABLE half (x)", "CREATE TABLE half (x)")}
+    broken = {**MIGRATIONS, "9998_broken": ("CREATE TABLE half (x)", "CREATE TABLE half (x)")}
     monkeypatch.setattr("storage.schema.MIGRATIONS", broken)
     refusal(path)
     assert ask(path, "SELECT count(*) FROM sqlite_master") == [(0,)]

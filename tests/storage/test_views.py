@@ -2,18 +2,24 @@
 
 import shutil
 import sqlite3
+import struct
 import subprocess
 from collections.abc import Callable, Sequence
 from pathlib import Path
 from typing import Any
 
 import pytest
+from hypothesis import given, settings
+from hypothesis import strategies as st
 
 from storage.connect import connect_to_write
 from storage.inserts import Inserter, group
+from storage.later_tables import SECOND_TABLES
 from storage.log_file import LogFile
 from storage.records import SessionOpened
-from storage.rows import CorrectionRow, Row
+from storage.rows import CorrectionRow, Row, SettingRow, TraceRow
+from storage.tables import FIRST_TABLES
+from storage.views import SECOND_VIEWS
 from tests.support.log_samples import (
     OPENED,
     ask,
@@ -228,3 +234,64 @@ def test_many_motions_are_answered_through_keys(fill: Fill, path: Path) -> None:
     scans = [line for line in plan if line.startswith("SCAN")]
     assert len(scans) == 1, plan
     assert not [line for line in plan if "AUTOMATIC" in line], plan
+
+
+# -- settings and traces -----------------------------------------------------------------
+
+
+def test_settings_now_are_those_read_last(fill: Fill, path: Path) -> None:
+    limit, low = "wheel_limit_rpm", "battery_low_mv"
+    rows: list[Row] = [module_row(1, "birch"), module_row(2, "")]
+    rows += [
+        SettingRow(1, limit, 10, 0, OPENED.t_ns + 1_500_000_000, 9000, 100, 9000),
+        SettingRow(1, limit, 30, 1, OPENED.t_ns + 4_000_000_000, 5000, 100, 9000),
+        SettingRow(1, limit, 30, 0, OPENED.t_ns + 4_000_000_000, 6000, 100, 9000),
+        SettingRow(1, low, 20, 4, OPENED.t_ns + 2_000_000_000, 3500, 3000, 4000),
+        SettingRow(2, "calibration", 20, 2, OPENED.t_ns + 2_000_000_000, 7, 7, 7),
+    ]
+    fill(rows)
+    assert ask(path, "SELECT * FROM settings_now ORDER BY module, setting") == [
+        (1, identity(2), "calibration", 7, 7, 7, 1, 2.0),
+        (1, "birch", low, 3500, 3000, 4000, 0, 2.0),
+        (1, "birch", limit, 5000, 100, 9000, 0, 4.0),
+    ]
+
+
+SAMPLES = [
+    (0, 0, 0, 4100),
+    (-1, 1, -1, 65_535),
+    (32_767, -32_768, 256, 255),
+    (-256, 4660, -4660, 0),
+]
+"""Borders of a signed and an unsigned number of 16 bits, and bytes that differ (0x1234)."""
+
+
+def test_samples_of_a_trace_are_read_out_of_its_bytes(fill: Fill, path: Path) -> None:
+    """Packed by Python's struct, little-endian; read by SQL alone."""
+    data = b"".join(struct.pack("<hhhH", *each) for each in SAMPLES)
+    fill([TraceRow(3, 2500, 4, 2, 20_500, data), TraceRow(4, 1000, 0, 0, 0, b"")])
+    found = ask(path, "SELECT * FROM trace_samples WHERE session = 1 AND command = 3")
+    assert found == [
+        (1, 3, number, number * 2.5, int(number >= 2), rpm, dps, ddeg / 10, mV / 1000)
+        for number, (rpm, dps, ddeg, mV) in enumerate(SAMPLES)
+    ]
+    assert ask(path, "SELECT count(*) FROM trace_samples") == [(4,)]
+
+
+@settings(max_examples=30, deadline=None)
+@given(
+    st.lists(
+        st.tuples(*[st.integers(-(2**15), 2**15 - 1)] * 3, st.integers(0, 2**16 - 1)), max_size=70
+    )
+)
+def test_any_samples_come_out_as_they_went_in(samples: list[tuple[int, ...]]) -> None:
+    data = b"".join(struct.pack("<hhhH", *each) for each in samples)
+    connection = sqlite3.connect(":memory:")
+    for statement in FIRST_TABLES + SECOND_TABLES + SECOND_VIEWS:
+        connection.execute(statement)
+    connection.execute("INSERT INTO traces VALUES (1, 1, 1000, ?, 0, 0, ?)", (len(samples), data))
+    found = connection.execute(
+        "SELECT wheel_rpm, rate_dps, tilt_deg, battery_V FROM trace_samples ORDER BY sample"
+    )
+    assert found.fetchall() == [(rpm, dps, ddeg / 10, mV / 1000) for rpm, dps, ddeg, mV in samples]
+    connection.close()

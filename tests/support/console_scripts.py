@@ -86,7 +86,7 @@ def run_script(seed: int, commands: int, loss: float = 0.3) -> Outcome:
 
 def _sitting(session: VirtualSession, luck: Luck, outcome: Outcome, commands: int) -> None:
     """One console, from its opening until its last record."""
-    session.run_for(3)
+    session.until_drivable()
     given = 0
     while given < commands:
         given += _order(session, luck)

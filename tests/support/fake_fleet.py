@@ -114,6 +114,11 @@ class FakeFleet:
         self.stops: list[str] = []
         self.cleared: list[tuple[int, str]] = []
         self.refuse = ""
+        self.beats = 0
+
+    def beat(self) -> None:
+        """Count the signs of life."""
+        self.beats += 1
 
     def view(self) -> FleetView:
         """The picture that the test has set."""

@@ -122,6 +122,7 @@ def module_row(module: int, name: str, *, simulated: int = 0, kind: str = "paver
         wheel_max_rpm=9_000,
         boot=77,
         boots_seen=1,
+        locked_by=None,
     )
 
 
@@ -165,6 +166,10 @@ def motion_rows(
         reason=None,
         final=1,
         ended_t_ns=t_ns + 2_000_000_000,
+        latest_ms=25_000,
+        stage=0,
+        person="",
+        value=0,
     )
     motion = MotionRow(
         command=command,
@@ -187,6 +192,7 @@ def motion_rows(
         spin_up_ms=900,
         settle_ms=350,
         sag_V=0.21,
+        started_ms=20_500,
     )
     return [order, row, motion]
 
@@ -206,6 +212,10 @@ def planned(command: int) -> PlannedCommand:
         speed_rpm=4_350,
         duration_ms=0,
         trial=command,
+        latest_ms=2**32 - 1,
+        stage=255,
+        person="Ada",
+        value=-(2**31),
     )
 
 

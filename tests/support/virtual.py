@@ -17,6 +17,7 @@ from sim_link.tally import TallyEntry
 from sim_link.world import World
 from storage.records import LinkChanged, OrderGiven, Record, SessionOpened
 from storage.rows import Row
+from tests.support.heart import drivable
 
 SECOND_NS = 1_000_000_000
 GRAIN_NS = 1_000_000
@@ -68,17 +69,29 @@ class VirtualSession:
         self.log = MemoryLog()
         self.now_ns = 0
         self.waiting: list[tuple[OrderGiven, str]] = []
+        self.frozen = False
+        """Whether the screen gives no sign of life."""
+        self.consoles = 0
         self.reconnect(epoch)
 
     def reconnect(self, epoch: int) -> None:
-        """A new console on the same fleet, as after a crash."""
+        """A new console on the same fleet, as after a crash: with a number of its own."""
+        self.consoles += 1
         self.log = MemoryLog()
         seal = None if self.keys is None else ConsoleSeal(self.keys, epoch, lambda opening: None)
         self.core = SessionCore([Outbox(LinePacer(921_600))], self.log, self._answer, seal)
         sealed = seal is not None
-        self.core.note(
-            SessionOpened(self.now_ns, "2026-01-01T00:00:00Z", "Ida", epoch, 1.0, "test", sealed)
+        opened = SessionOpened(
+            t_ns=self.now_ns,
+            utc="2026-01-01T00:00:00Z",
+            operator="Ida",
+            epoch=epoch,
+            pace=1.0,
+            program="test",
+            sealed=sealed,
+            console=self.consoles,
         )
+        self.core.note(opened)
         self.core.note(LinkChanged(self.now_ns, 0, "sim://", "open", ""))
 
     def _answer(self, given: OrderGiven, why_not: str) -> None:
@@ -109,6 +122,8 @@ class VirtualSession:
         waiting, self.waiting = self.waiting, []
         for given, why_not in waiting:
             self.core.committed(given, why_not, self.now_ns)
+        if not self.frozen:
+            self.core.beat(self.now_ns)
         self.core.wake(self.now_ns)
         for _, frame in self.core.to_write(self.now_ns):
             self.world.write(frame, self.now_ns)
@@ -116,6 +131,11 @@ class VirtualSession:
     def run_for(self, seconds: float, done: Callable[[], bool] = lambda: False) -> bool:
         """Move both sides on by so many seconds."""
         return self.run_until(self.now_ns + int(seconds * SECOND_NS), done)
+
+    def until_drivable(self, modules: int = 8) -> bool:
+        """Move on until so many modules are known in full, follow this console, and hold its
+        permit; returns whether they do within a minute."""
+        return self.run_for(60, lambda: drivable(self.view, modules))
 
     def settle(self) -> None:
         """Move on until no command is open."""

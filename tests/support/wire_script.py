@@ -44,6 +44,7 @@ from storage.records import (
 from storage.rows import TABLES, Row
 
 EPOCH = 1_800_000_000
+CONSOLE = 0x5EED_0001
 STEP_NS = 1_000_000
 ADDRESS = 0x0010
 IDENTITY = SIMULATED_BIT | 0x0000_5A5A_0000_1111
@@ -66,8 +67,8 @@ def to_everyone(message: Message) -> bytes:
 
 
 def presence(**changes: Any) -> Presence:
-    """A module that knows our epoch, holds no latch and lies on face 1."""
-    return Presence(IDENTITY, BOOT, EPOCH, 0, 0, 1, 500)._replace(**changes)
+    """A module that follows us, holds no latch and lies on face 1."""
+    return Presence(IDENTITY, BOOT, EPOCH, CONSOLE, 0, 500, 3000, 0, 1)._replace(**changes)
 
 
 def nameplate(name: str = "birch", kind: str = "paver", **changes: Any) -> Nameplate:
@@ -90,7 +91,8 @@ def answer(number: int, state: AnswerState, reason: Reason = Reason.NONE, **more
 
 def facts(number: int = 1, **changes: Any) -> Facts:
     """A quarter turn, landed: face 1 to face 2."""
-    made = Facts(EPOCH, BOOT, number, 0, 1, 2, 1, 900, 612, 410, 4390, 8750, 1480, 640, 210)
+    measured = (0, 1, 2, 1, 900, 612, 410, 4390, 8750, 1480, 640, 210, 20_500)
+    made = Facts(EPOCH, BOOT, number, *measured)
     return made._replace(**changes)
 
 
@@ -114,13 +116,14 @@ def planned(number: int = 1, **changes: Any) -> PlannedCommand:
         "speed_rpm": 4400,
         "duration_ms": 0,
         "trial": 0,
+        "latest_ms": 25_000,
     }
     return PlannedCommand(**(values | changes))
 
 
 def pivot(number: int = 1, **changes: Any) -> Pivot:
     """The message that carries ``planned(number)``."""
-    made = Pivot(EPOCH, BOOT, number, identity_bits(IDENTITY), 1, 1, 4400)
+    made = Pivot(EPOCH, BOOT, number, identity_bits(IDENTITY), 25_000, 0, 1, 1, 4400)
     return made._replace(**changes)
 
 
@@ -145,7 +148,8 @@ class Script:
 
     def open(self) -> "Script":
         """A session and its link."""
-        self.add(SessionOpened, "2026-03-04T09:00:00Z", "R. Ode", EPOCH, 1.0, "test")
+        opening = ("2026-03-04T09:00:00Z", "R. Ode", EPOCH, 1.0, "test", False, CONSOLE)
+        self.add(SessionOpened, *opening)
         self.add(LinkChanged, 0, "sim://?modules=1", "open", "")
         return self
 

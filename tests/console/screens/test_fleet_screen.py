@@ -400,3 +400,14 @@ def test_a_picture_can_be_taken(tmp_path: Path) -> None:
         assert "cedar" in path.read_text(encoding="utf-8")
 
     play(FakeFleet(busy_view()), steps, size=(160, 50))
+
+
+def test_each_look_is_a_sign_of_life() -> None:
+    source = FakeFleet(busy_view())
+
+    async def steps(app: FleetApp, pilot: "Pilot[None]") -> None:
+        before = source.beats
+        await look(app, pilot)
+        assert source.beats == before + 1
+
+    play(source, steps)

@@ -48,6 +48,12 @@ def test_states_are_told_apart_without_colour() -> None:
         ({"latched": True, "flags": int(Flags.BATTERY_LOW)}, "stopped"),
         ({"latched": True, "heard_t_ns": NOW - 9 * SECOND_NS}, "silent"),
         ({"latched": True, "wheel_rpm": 9500}, "overspeed"),
+        ({"flags": int(Flags.FAULTY)}, "fault"),
+        ({"flags": int(Flags.FAULTY), "latched": True}, "fault"),
+        ({"flags": int(Flags.LOCKED_OUT)}, "locked"),
+        ({"flags": int(Flags.LOCKED_OUT | Flags.BATTERY_LOW), "latched": True}, "locked"),
+        ({"flags": int(Flags.LOCKED_OUT | Flags.FAULTY)}, "fault"),
+        ({"flags": int(Flags.LOCKED_OUT), "wheel_rpm": 9500}, "overspeed"),
     ],
 )
 def test_the_most_pressing_state_is_shown(changes: dict[str, object], state: str) -> None:
@@ -66,6 +72,7 @@ def test_a_latch_hides_a_low_battery_from_the_state_but_not_from_the_trouble() -
     [
         ({}, False),
         ({"activity": Activity.FLASHING}, False),
+        ({"activity": Activity.STAGED}, False),
         ({"activity": Activity.SETTLING}, True),
         ({"wheel_rpm": -1}, True),
         ({"activity": 99}, True),

@@ -1,0 +1,93 @@
+"""What is in the box: the parts of a virtual module that its rooms share.
+
+Owns two lifetimes. A Box outlasts restarts: drive, settings, the all-stop latch, a person's
+lock, faults that stand. A Boot does not: its number, its clock, its memory of commands, whom it
+follows. Decides nothing.
+"""
+
+from dataclasses import dataclass, field
+from typing import Final
+
+from protocol.allegiance import Allegiance
+from protocol.codes import Activity, Fault, Flags, SettingId, identity_bits
+from protocol.command_memory import CommandMemory
+from protocol.message import LockState, Nameplate, text_field
+from sim_link.drive import Drive
+from sim_link.fleet_file import ModuleSpec
+from sim_link.module_time import ModuleTime
+from sim_link.settings import Settings
+
+FIRMWARE: Final = 0x0100
+"""Version of this virtual firmware: 1.0."""
+
+DRIVEN: Final = frozenset({Activity.SPINNING_UP, Activity.HOLDING})
+"""Activities in which the motor drives the wheel, which needs a permit."""
+
+
+class Boot:
+    """One life of the controller, from start to restart."""
+
+    __slots__ = ("allegiance", "memory", "number", "time")
+
+    def __init__(self, number: int, identity: int, time: ModuleTime) -> None:
+        self.number = number
+        self.time = time
+        self.memory = CommandMemory(number, identity)
+        self.allegiance = Allegiance()
+
+    def owned(self, t_ns: int) -> bool:
+        """Whether the console that it follows still owns it."""
+        return self.allegiance.owner_left_ms(self.time.ms(t_ns)) > 0
+
+    def permitted(self, t_ns: int) -> bool:
+        """Whether the wheel may be driven."""
+        return self.allegiance.permit_left_ms(self.time.ms(t_ns)) > 0
+
+
+@dataclass(slots=True)
+class Box:
+    """One module, whatever boot it is in. ``person``: who has locked it out, empty for nobody."""
+
+    spec: ModuleSpec
+    drive: Drive
+    settings: Settings
+    boot: Boot
+    latched: bool = False
+    stop_number: int = 0
+    person: bytes = b""
+    faults: set[Fault] = field(default_factory=set)
+
+    def battery_low(self, t_ns: int) -> bool:
+        """Whether the voltage without load is below what the settings ask for."""
+        self.drive.supply.account(t_ns)
+        low_V = self.settings.value(SettingId.BATTERY_LOW_MV) / 1_000
+        return self.drive.supply.battery.open_circuit_V < low_V
+
+    def flags(self, t_ns: int) -> Flags:
+        """The standing conditions, as telemetry and presence report them."""
+        boot = self.boot
+        holds = (
+            (Flags.LATCHED, self.latched),
+            (Flags.BATTERY_LOW, self.battery_low(t_ns)),
+            (Flags.UNSETTLED, not self.drive.body.posture(t_ns).settled),
+            (Flags.LOCKED_OUT, bool(self.person)),
+            (Flags.FAULTY, bool(self.faults)),
+            (Flags.PERMITTED, boot.permitted(t_ns)),
+            (Flags.CLOCK_TOLD, boot.allegiance.clock_told),
+        )
+        flags = Flags(0)
+        for flag, stands in holds:
+            if stands:
+                flags |= flag
+        return flags
+
+    def nameplate(self) -> Nameplate:
+        """What is written on the box, its speed limit as the settings have it."""
+        limit_rpm = self.settings.value(SettingId.WHEEL_LIMIT_RPM)
+        name, kind = text_field(self.spec.name), text_field(self.spec.kind.name)
+        return Nameplate(self.spec.identity, limit_rpm, FIRMWARE, name, kind)
+
+    def lock_state(self) -> LockState:
+        """Who has locked it out."""
+        bits = identity_bits(self.spec.identity)
+        return LockState(self.boot.number, bits, int(bool(self.person)), self.person)

@@ -1,0 +1,334 @@
+"""What a module does about numbered commands: from the envelope to the last word on each.
+
+Owns the commands that were accepted and what is staged, the permit's timer, and the table from
+command to deed. What is done with the wheel is drive.py's; that a number is carried out at most
+once is the command memory's; why one is refused stands in refusals.py. Time is an argument.
+"""
+
+from collections.abc import Callable, Mapping
+from dataclasses import dataclass
+from typing import Any, Final
+
+from protocol.allegiance import ms_until
+from protocol.codes import Activity, AnswerState, Fault, Reason, SettingId
+from protocol.command_memory import Reply
+from protocol.message import (
+    Answer,
+    Command,
+    Flash,
+    Go,
+    Hop,
+    LockOut,
+    Message,
+    Motion,
+    Pivot,
+    Rest,
+    SettingWrite,
+    Spin,
+    Twist,
+    Unlock,
+)
+from sim_link.box import DRIVEN, Box
+from sim_link.measure import facts
+from sim_link.options import FaultKind
+from sim_link.randomness import Draws
+from sim_link.refusals import Look, refusal
+from sim_link.tally import TallyEntry
+from sim_link.tracing import TraceStore
+
+_MAX_EXPECT_MS: Final = 0xFFFF
+_STAGED_MOTION_MS: Final = 4_000
+"""What a staged motion is expected to take once it starts: its own figure is known only then."""
+_WORDS: Final[Mapping[type[Any], str]] = {
+    Pivot: "pivot",
+    Hop: "hop",
+    Twist: "twist",
+    Spin: "spin",
+    Rest: "rest",
+    Flash: "flash",
+    LockOut: "lock",
+    Unlock: "unlock",
+    SettingWrite: "set",
+}
+_AT_REST: Final = frozenset({Activity.STILL, Activity.FLASHING})
+
+
+@dataclass(slots=True)
+class _Owed:
+    """A command that was accepted and whose end is still to be reported."""
+
+    command: Command
+    cut: Reason = Reason.NONE
+
+
+@dataclass(slots=True)
+class _Staged:
+    """A motion that waits. ``start_ms``: module time of its start, None before a Go."""
+
+    command: Motion
+    start_ms: int | None = None
+
+
+class Works:
+    """The commands of one module. ``say``: makes its telemetry; ``tally``: told of each command
+    as it is carried out; ``told_faults``: says a fault that now stands."""
+
+    def __init__(
+        self,
+        box: Box,
+        draws: Draws,
+        telemetry: Callable[[int], Message],
+        fault_notice: Callable[[Fault, int], Message],
+        tally: Callable[[TallyEntry], None] | None,
+    ) -> None:
+        self.traces = TraceStore()
+        self._box = box
+        self._draws = draws
+        self._telemetry = telemetry
+        self._fault_notice = fault_notice
+        self._tally = tally
+        self._owed: list[_Owed] = []
+        self._staged: _Staged | None = None
+        self._stage_ns: int | None = None
+        self._permit_ns: int | None = None
+
+    @property
+    def activity(self) -> Activity:
+        """What the module does, a staged motion included."""
+        still = self._box.drive.activity is Activity.STILL
+        return Activity.STAGED if still and self._staged else self._box.drive.activity
+
+    @property
+    def due_ns(self) -> int | None:
+        """When ``wake`` is next needed: a stage's start or end, or a look at the permit."""
+        times = [each for each in (self._stage_ns, self._permit_ns) if each is not None]
+        return min(times, default=None)
+
+    def wake(self, t_ns: int) -> list[Message]:
+        """Do what is due at ``t_ns``."""
+        said: list[Message] = []
+        if self._permit_ns is not None and self._permit_ns <= t_ns:
+            said += self.look_at_permit(t_ns)
+        if self._stage_ns is not None and self._stage_ns <= t_ns:
+            said += self._stage_due(t_ns)
+        return said
+
+    def restart(self) -> None:
+        """A new boot: nothing is owed, nothing staged, nothing kept."""
+        self._owed.clear()
+        self._unstage()
+        self._permit_ns = None
+        self.traces.clear()
+
+    def adopted(self, t_ns: int) -> list[Message]:
+        """Another epoch is followed: what was staged under the last one is forgotten."""
+        self._unstage()
+        self.traces.clear()
+        return self.look_at_permit(t_ns)
+
+    # -- permit --------------------------------------------------------------------------
+
+    def look_at_permit(self, t_ns: int) -> list[Message]:
+        """Rest the wheel where the motor drives it without a permit; else look again in time."""
+        self._permit_ns = None
+        if self._box.drive.activity not in DRIVEN:
+            return []
+        time, allegiance = self._box.boot.time, self._box.boot.allegiance
+        left_ms = allegiance.permit_left_ms(time.ms(t_ns))
+        if left_ms == 0:
+            return self.rest_wheel(Reason.PERMIT_LAPSED, t_ns)
+        # A millisecond early, since the bound of what was told grows until then.
+        self._permit_ns = time.after_ns(t_ns, max(1, left_ms - 1))
+        return []
+
+    # -- commands ------------------------------------------------------------------------
+
+    def order(self, command: Command, t_ns: int) -> list[Message]:
+        """Take a command that came in."""
+        boot = self._box.boot
+        judged = boot.memory.judge(command, boot.owned(t_ns))
+        if isinstance(judged, Reply):
+            return [judged.message]
+        engaged = bool(self._owed) or self._staged is not None
+        reason = refusal(Look(command, self._box, engaged, t_ns))
+        if reason is not Reason.NONE:
+            return [self._answer(command, AnswerState.REFUSED, reason)]
+        if isinstance(command, Motion) and command.stage:
+            return self._stage(command, t_ns)
+        return _DEEDS[type(command)](self, command, t_ns)
+
+    def _pivot(self, pivot: Pivot, t_ns: int) -> list[Message]:
+        left_ns = self._box.drive.start_pivot(pivot.direction, pivot.speed_rpm, t_ns)
+        return self._accepted(pivot, left_ns, t_ns)
+
+    def _spin(self, spin: Spin, t_ns: int) -> list[Message]:
+        left_ns = self._box.drive.start_spin(spin.speed_rpm, spin.hold_ms * 1_000_000, t_ns)
+        self._count(spin, t_ns)
+        return self._accepted(spin, left_ns, t_ns)
+
+    def _flash(self, flash: Flash, t_ns: int) -> list[Message]:
+        left_ns = self._box.drive.start_flash(flash.duration_ms * 1_000_000, t_ns)
+        self._count(flash, t_ns)
+        return self._accepted(flash, left_ns, t_ns)
+
+    def _rest(self, rest: Rest, t_ns: int) -> list[Message]:
+        """Rest the wheel; where it is at rest already, the command is finished at once."""
+        self._count(rest, t_ns)
+        changed = self.rest_wheel(Reason.RESTED, t_ns)
+        if self._box.drive.activity in _AT_REST:
+            return [self._answer(rest, AnswerState.FINISHED), *changed]
+        self._owed.append(_Owed(rest))
+        left_ns = self._box.drive.left_ns(t_ns)
+        return [self._answer(rest, AnswerState.ACCEPTED, left_ns=left_ns), *changed]
+
+    def _lock_out(self, lock: LockOut, t_ns: int) -> list[Message]:
+        self._count(lock, t_ns)
+        self._box.person = lock.person.rstrip(b"\0")
+        changed = self.rest_wheel(Reason.LOCKED_OUT, t_ns)
+        return [self._answer(lock, AnswerState.FINISHED), self._box.lock_state(), *changed]
+
+    def _unlock(self, unlock: Unlock, t_ns: int) -> list[Message]:
+        self._count(unlock, t_ns)
+        self._box.person = b""
+        return [self._answer(unlock, AnswerState.FINISHED), self._box.lock_state()]
+
+    def _write(self, write: SettingWrite, t_ns: int) -> list[Message]:
+        self._count(write, t_ns)
+        self._box.settings.write(write.setting, write.value)
+        said: list[Message] = [self._answer(write, AnswerState.FINISHED)]
+        if write.setting == SettingId.WHEEL_LIMIT_RPM:
+            said.append(self._box.nameplate())
+        return said
+
+    def _accepted(self, command: Command, left_ns: int, t_ns: int) -> list[Message]:
+        self._owed.append(_Owed(command))
+        answer = self._answer(command, AnswerState.ACCEPTED, left_ns=left_ns)
+        return [answer, self._telemetry(t_ns), *self.look_at_permit(t_ns)]
+
+    # -- staged motions ------------------------------------------------------------------
+
+    def _stage(self, command: Motion, t_ns: int) -> list[Message]:
+        self._staged = _Staged(command)
+        time = self._box.boot.time
+        until_ms = ms_until(command.latest_ms, time.ms(t_ns))
+        self._stage_ns = time.after_ns(t_ns, until_ms + 1)
+        left_ns = (until_ms + _STAGED_MOTION_MS) * 1_000_000
+        return [
+            self._answer(command, AnswerState.ACCEPTED, left_ns=left_ns),
+            self._telemetry(t_ns),
+        ]
+
+    def go(self, go: Go, t_ns: int) -> list[Message]:
+        """Take the start of a stage, if it is this console's, in time, and not too late."""
+        boot, staged = self._box.boot, self._staged
+        start_ms = boot.allegiance.module_ms(go.start_ms)
+        followed = go.console == boot.allegiance.console
+        if staged is None or start_ms is None or not followed or go.stage != staged.command.stage:
+            return []
+        left_ms = ms_until(start_ms, boot.time.ms(t_ns))
+        if left_ms > 0 and ms_until(staged.command.latest_ms, start_ms) >= 0:
+            staged.start_ms = start_ms
+            self._stage_ns = boot.time.after_ns(t_ns, left_ms)
+        return []
+
+    def _stage_due(self, t_ns: int) -> list[Message]:
+        """Start what is staged, after a second look at every interlock; or give it up."""
+        staged = self._staged
+        self._unstage()
+        if staged is None:
+            return []
+        command = staged.command
+        reason = Reason.TOO_LATE
+        if staged.start_ms is not None:
+            reason = refusal(Look(command, self._box, False, t_ns))
+        if reason is not Reason.NONE:
+            return [self._answer(command, AnswerState.CUT, reason), self._telemetry(t_ns)]
+        return [each for each in _DEEDS[type(command)](self, command, t_ns)
+                if not isinstance(each, Answer)]  # fmt: skip
+
+    def _unstage(self) -> None:
+        self._staged = self._stage_ns = None
+
+    # -- ends ----------------------------------------------------------------------------
+
+    def rest_wheel(self, reason: Reason, t_ns: int) -> list[Message]:
+        """Erase what is staged, and start a gentle rest where there is anything to rest; note
+        what it cuts short."""
+        said: list[Message] = []
+        if self._staged is not None:
+            said.append(self._answer(self._staged.command, AnswerState.CUT, reason))
+            self._unstage()
+            said.append(self._telemetry(t_ns))
+        if self._box.drive.rest(t_ns):
+            self._permit_ns = None
+            for owed in self._owed:
+                owed.cut = reason
+            said.append(self._telemetry(t_ns))
+        return said
+
+    def entered(self, activity: Activity, t_ns: int) -> list[Message]:
+        """React to an activity that began by itself: report it, and report what is over."""
+        said: list[Message] = []
+        if activity is Activity.BRAKING:
+            self._count_motion(t_ns)
+            said += self._faults_of_braking(t_ns)
+        elif activity is Activity.STILL:
+            said += [self._ending(owed, t_ns) for owed in self._owed]
+            self._owed.clear()
+        return [*said, self._telemetry(t_ns), *self.look_at_permit(t_ns)]
+
+    def _faults_of_braking(self, t_ns: int) -> list[Message]:
+        box = self._box
+        if FaultKind.LOST_GYRO not in box.spec.faults or Fault.SENSOR_LOST in box.faults:
+            return []
+        box.faults.add(Fault.SENSOR_LOST)
+        return [self._fault_notice(Fault.SENSOR_LOST, t_ns)]
+
+    def _ending(self, owed: _Owed, t_ns: int) -> Message:
+        command = owed.command
+        if isinstance(command, Motion):
+            measured = facts(command, owed.cut, self._box, self._draws, t_ns)
+            self._box.boot.memory.remember(command.number, measured)
+            if owed.cut is Reason.NONE:
+                self.traces.keep(command, self._box)
+            return measured
+        cut = owed.cut is not Reason.NONE
+        state = AnswerState.CUT if cut else AnswerState.FINISHED
+        return self._answer(command, state, owed.cut)
+
+    def _answer(
+        self,
+        command: Command,
+        state: AnswerState,
+        reason: Reason = Reason.NONE,
+        left_ns: int = 0,
+    ) -> Answer:
+        """Make and remember an answer, in the epoch of the command: it may outlast its own."""
+        expect_ms = min(-(-left_ns // 1_000_000), _MAX_EXPECT_MS)
+        boot = self._box.boot
+        answer = Answer(command.epoch, boot.number, command.number, state, reason, expect_ms)
+        boot.memory.remember(command.number, answer)
+        return answer
+
+    def _count(self, command: Command, t_ns: int) -> None:
+        """Enter a command in the tally, at the moment at which it is carried out."""
+        if self._tally is not None:
+            spec, word = self._box.spec, _WORDS[type(command)]
+            boot, number = self._box.boot.number, command.number
+            self._tally(TallyEntry(spec.identity, boot, number, t_ns, spec.name, word))
+
+    def _count_motion(self, t_ns: int) -> None:
+        for owed in self._owed:
+            if isinstance(owed.command, Motion):
+                self._count(owed.command, t_ns)
+
+
+_DEEDS: Final[Mapping[type[Any], Callable[[Works, Any, int], list[Message]]]] = {
+    Pivot: Works._pivot,
+    Spin: Works._spin,
+    Rest: Works._rest,
+    Flash: Works._flash,
+    LockOut: Works._lock_out,
+    Unlock: Works._unlock,
+    SettingWrite: Works._write,
+}
