@@ -59,7 +59,7 @@ def test_every_activity_can_end_at_still() -> None:
     ahead = {before: set() for before in Activity}  # type: dict[Activity, set[Activity]]
     for (before, _), after in NEXT_ACTIVITY.items():
         ahead[before].add(after)
-    for start in Activity:
+    for start in set(Activity) - {Activity.STAGED}:  # in which the drive itself is still
         reached, front = {start}, {start}
         while front:
             front = set().union(*(ahead[each] for each in front)) - reached

@@ -6,17 +6,19 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from protocol.codes import Activity, Flags, Reason
+from protocol.codes import Activity, Fault, Flags, Reason, SettingId
 from protocol.message import Packet, Pivot, decode, encode
 from sim_link import mechanics
+from sim_link.box import Box
 from sim_link.drive import Drive
 from sim_link.errors import SimStateError
-from sim_link.measure import Reporter, _field, facts, uptime_ms, wheel_rpm
+from sim_link.measure import Reporter, _field, facts, wheel_rpm
 from sim_link.mechanics import MotionResult
 from sim_link.randomness import Draws
-from tests.support.virtual_console import MS, S, spec_of
+from tests.support.boxes import BOOT, boxed
+from tests.support.virtual_console import CONSOLE, MS, S, spec_of
 
-COMMAND = Pivot(1000, 5, 3, 0x1234, 1, 1, 6000)
+COMMAND = Pivot(1000, 5, 3, 0x1234, 2_000_000_000, 0, 1, 1, 6000)
 RESULT = MotionResult(
     faces=1,
     turned_rad=math.pi / 2,
@@ -28,21 +30,27 @@ RESULT = MotionResult(
 )
 
 
-def braked(monkeypatch: pytest.MonkeyPatch, seed: int = 1) -> tuple[Drive, Draws, int]:
+def box_with(draws: Draws, boot_ns: int = 0) -> Box:
+    box = boxed(boot_ns=boot_ns)
+    box.drive = Drive(box.spec, draws)
+    return box
+
+
+def braked(monkeypatch: pytest.MonkeyPatch, seed: int = 1) -> tuple[Box, Draws, int]:
     monkeypatch.setattr(mechanics, "floor_pivot", lambda *_: RESULT)
     draws = Draws(seed, 42)
-    drive = Drive(spec_of(), draws)
-    drive.start_pivot(1, 6000, 0)
-    t_ns = 0
-    while drive.due_ns is not None:
-        t_ns = drive.due_ns
-        drive.step()
-    return drive, draws, t_ns
+    box = box_with(draws, 2 * S)
+    t_ns = 3 * S
+    box.drive.start_pivot(1, 6000, t_ns)
+    while box.drive.due_ns is not None:
+        t_ns = box.drive.due_ns
+        box.drive.step()
+    return box, draws, t_ns
 
 
 def test_facts_are_in_their_units(monkeypatch: pytest.MonkeyPatch) -> None:
-    drive, draws, t_ns = braked(monkeypatch)
-    said = facts(COMMAND, Reason.NONE, drive, draws, t_ns)
+    box, draws, t_ns = braked(monkeypatch)
+    said = facts(COMMAND, Reason.NONE, box, draws, t_ns)
     assert (said.epoch, said.boot, said.number, said.reason) == (1000, 5, 3, 0)
     assert (said.face_before, said.face_after, said.settled) == (1, 2, 1)
     assert said.turned_ddeg == pytest.approx(900, abs=25)  # a quarter turn
@@ -52,15 +60,16 @@ def test_facts_are_in_their_units(monkeypatch: pytest.MonkeyPatch) -> None:
     assert said.settle_ms == pytest.approx(456, abs=20)
     assert said.wheel_at_brake_rpm == pytest.approx(6000, abs=30)
     assert 0 < said.sag_mV < 2000
+    assert said.started_ms == 1000  # a second after the boot
     assert said.spin_up_ms == pytest.approx(1885, rel=0.04)  # Iw w / tau
 
 
 def test_noise_is_keyed_and_of_the_stated_size(monkeypatch: pytest.MonkeyPatch) -> None:
     errors = []
     for seed in range(150):
-        drive, draws, t_ns = braked(monkeypatch, seed)
-        said = facts(COMMAND, Reason.NONE, drive, draws, t_ns)
-        assert said == facts(COMMAND, Reason.NONE, drive, draws, t_ns)
+        box, draws, t_ns = braked(monkeypatch, seed)
+        said = facts(COMMAND, Reason.NONE, box, draws, t_ns)
+        assert said == facts(COMMAND, Reason.NONE, box, draws, t_ns)
         errors.append(said.turned_ddeg - 900)
     spread = math.sqrt(sum(e * e for e in errors) / len(errors))
     assert spread == pytest.approx(5.0, rel=0.25)  # half a degree; 150 draws
@@ -68,13 +77,14 @@ def test_noise_is_keyed_and_of_the_stated_size(monkeypatch: pytest.MonkeyPatch) 
 
 def test_a_motion_cut_before_its_brake_has_no_brake_figures() -> None:
     draws = Draws(1, 42)
-    drive = Drive(spec_of(), draws)
+    box = box_with(draws)
+    drive = box.drive
     drive.start_pivot(1, 6000, 0)
     drive.rest(400 * MS)
     assert drive.due_ns is not None
     t_ns = drive.due_ns
     drive.step()
-    said = facts(COMMAND, Reason.RESTED, drive, draws, t_ns)
+    said = facts(COMMAND, Reason.RESTED, box, draws, t_ns)
     assert said.reason == Reason.RESTED
     assert (said.peak_rate_dps, said.wheel_at_brake_rpm, said.brake_us, said.settle_ms) == (0,) * 4
     assert abs(said.turned_ddeg) < 30
@@ -83,7 +93,7 @@ def test_a_motion_cut_before_its_brake_has_no_brake_figures() -> None:
 def test_facts_before_any_motion_are_our_mistake() -> None:
     draws = Draws(1, 1)
     with pytest.raises(SimStateError):
-        facts(COMMAND, Reason.NONE, Drive(spec_of(), draws), draws, 0)
+        facts(COMMAND, Reason.NONE, box_with(draws), draws, 0)
 
 
 @given(st.floats(-1e9, 1e9))
@@ -95,13 +105,14 @@ def test_a_sensor_at_its_stop_stays_there(value: float) -> None:
 
 def test_telemetry_fits_its_message_in_every_activity() -> None:
     draws = Draws(1, 9)
-    drive, reporter = Drive(spec_of(), draws), Reporter(spec_of().identity, draws)
+    box, reporter = box_with(draws), Reporter(spec_of().identity, draws)
+    drive, box.latched = box.drive, True
     drive.start_pivot(1, 9000, 0)
     t_ns, seen = 0, set()
     while drive.due_ns is not None:
         for part in (0.1, 0.9):
             now_ns = t_ns + int(part * (drive.due_ns - t_ns))
-            message = reporter.telemetry(drive, True, 77, 0, now_ns)
+            message = reporter.telemetry(box, drive.activity, now_ns)
             assert decode(encode(Packet(1, 0x10, message))).message == message
             assert message.flags & Flags.LATCHED
             seen.add(message.activity)
@@ -112,26 +123,28 @@ def test_telemetry_fits_its_message_in_every_activity() -> None:
 
 def test_telemetry_counts_and_says_when_the_body_moves() -> None:
     draws = Draws(1, 9)
-    drive, reporter = Drive(spec_of(), draws), Reporter(spec_of().identity, draws)
-    still = reporter.telemetry(drive, False, 77, 2 * S, 5 * S)
-    assert (still.sequence, still.time_ms, still.flags) == (1, 3000, 0)
+    box, reporter = box_with(draws, 2 * S), Reporter(spec_of().identity, draws)
+    drive = box.drive
+    still = reporter.telemetry(box, Activity.STILL, 5 * S)
+    assert (still.boot, still.sequence, still.time_ms) == (BOOT, 1, 3000)
+    assert still.flags == Flags.PERMITTED | Flags.CLOCK_TOLD
     assert (still.face_up, still.wheel_rpm, still.identity_bits) == (1, 0, 0x1234)
     assert 4000 < still.battery_mV < 4200
     assert 1500 < still.temperature_cC < 3000
     drive.start_pivot(1, 6000, 5 * S)
     drive.step()
-    moving = reporter.telemetry(drive, False, 77, 2 * S, (drive.due_ns or 0))
+    moving = reporter.telemetry(box, drive.activity, drive.due_ns or 0)
     assert (moving.sequence, moving.face_up) == (2, 0)
     assert moving.flags & Flags.UNSETTLED
     reporter.restart()
-    assert reporter.telemetry(drive, False, 78, 9 * S, 9 * S).sequence == 1
+    assert reporter.telemetry(box, drive.activity, 9 * S).sequence == 1
 
 
 def test_sequence_wraps_at_16_bits() -> None:
     draws = Draws(1, 9)
     reporter = Reporter(1, draws)
     reporter._sequence = 0xFFFF
-    assert reporter.telemetry(Drive(spec_of(), draws), False, 1, 0, 0).sequence == 0
+    assert reporter.telemetry(box_with(draws), Activity.STILL, 0).sequence == 0
 
 
 def test_a_wheel_that_hardly_turns_reads_zero() -> None:
@@ -142,6 +155,12 @@ def test_a_wheel_that_hardly_turns_reads_zero() -> None:
     assert wheel_rpm(drive, 2 * S) == -1910  # 200 rad/s are 1909.9 rpm
 
 
-def test_uptime_wraps_at_32_bits() -> None:
-    assert uptime_ms(S, 3 * S) == 2000
-    assert uptime_ms(0, (1 << 32) * MS + 5 * MS) == 5
+def test_every_standing_condition_has_its_flag() -> None:
+    reporter, box = Reporter(1, Draws(1, 9)), box_with(Draws(1, 9))
+    box.person, box.latched = b"Ada", True
+    box.faults.add(Fault.STORAGE_BAD)
+    box.settings.write(SettingId.BATTERY_LOW_MV, 4200)
+    box.drive.body.brake(600.0, 1, 1, 0)
+    assert reporter.telemetry(box, Activity.STAGED, MS).flags == sum(Flags)
+    box.boot.allegiance.release(CONSOLE)
+    assert not reporter.telemetry(box, Activity.STAGED, MS).flags & Flags.PERMITTED

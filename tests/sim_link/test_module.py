@@ -27,16 +27,20 @@ from sim_link.module import VirtualModule
 from sim_link.options import FaultKind
 from sim_link.tally import TallyEntry
 from tests.support.virtual_console import (
+    CONSOLE,
     EPOCH,
+    LATEST_MS,
     MS,
     S,
     flash,
+    permit,
     pivot,
     rest,
     spec_of,
     spin,
     to_all,
     to_module,
+    told,
 )
 
 
@@ -45,13 +49,26 @@ class Bench:
 
     def __init__(self, seed: int = 7, **spec: object) -> None:
         self.tally: list[TallyEntry] = []
-        self.module = VirtualModule(spec_of(**spec), seed, self.tally.append)  # type: ignore[arg-type]
+        made = spec_of(**spec)  # type: ignore[arg-type]
+        self.module = VirtualModule(made, seed, self.tally.append, drift_ppm=0.0)
         self.t_ns = 0
         self.heard: list[Packet] = []
+        self.permits = True
+        self.permit_ns = 20 * S
         self.me = self.roll()
 
     def roll(self) -> Presence:
-        return next(m for m in self.say(to_all(RollCall(EPOCH))) if isinstance(m, Presence))
+        """Call the roll, and give a permit."""
+        said = self.say(to_all(RollCall(EPOCH, CONSOLE)))
+        me = next(m for m in said if isinstance(m, Presence))
+        self.permit(me)
+        return me
+
+    def permit(self, me: Presence) -> None:
+        """Tell the module its clock, and let it drive for a while; its Echo is not noted."""
+        offset_ms = me.time_ms - self.t_ns // MS
+        self.module.receive(to_module(told(me, offset_ms)), self.t_ns)
+        self.module.receive(to_all(permit(self.t_ns)), self.t_ns)
 
     def say(self, packet: Packet) -> list[Message]:
         return self._note(self.module.receive(packet, self.t_ns))
@@ -64,6 +81,9 @@ class Bench:
         end_ns = self.t_ns + duration_ns
         said: list[Message] = []
         while self.module.next_wake_ns <= end_ns:
+            if self.permits and self.module.next_wake_ns > self.permit_ns:
+                self.permit_ns = self.module.next_wake_ns + 20 * S
+                said += self._note(self.module.receive(to_all(permit(self.t_ns)), self.t_ns))
             self.t_ns = self.module.next_wake_ns
             said += self._note(self.module.wake(self.t_ns))
         self.t_ns = end_ns
@@ -80,10 +100,12 @@ def of(kind: type, said: list[Message]) -> list[Message]:
 
 def test_roll_call_brings_presence_and_nameplate() -> None:
     bench = Bench()
-    presence, nameplate = bench.say(to_all(RollCall(EPOCH + 1)))
+    presence, nameplate = bench.say(to_all(RollCall(EPOCH + 1, CONSOLE)))
     assert isinstance(presence, Presence)
     assert presence.identity == bench.module.spec.identity
-    assert (presence.epoch, presence.latched, presence.face_up) == (EPOCH + 1, 0, 1)
+    assert (presence.epoch, presence.console, presence.face_up) == (EPOCH + 1, CONSOLE, 1)
+    assert presence.flags == Flags.PERMITTED | Flags.CLOCK_TOLD
+    assert presence.owner_left_ms > 40_000
     assert isinstance(nameplate, Nameplate)
     assert field_text(nameplate.name) == "alder"
     assert field_text(nameplate.kind) == "paver"
@@ -92,7 +114,7 @@ def test_roll_call_brings_presence_and_nameplate() -> None:
 
 def test_an_older_epoch_is_not_adopted() -> None:
     bench = Bench()
-    presence = bench.say(to_all(RollCall(EPOCH - 1)))[0]
+    presence = bench.say(to_all(RollCall(EPOCH - 1, CONSOLE)))[0]
     assert isinstance(presence, Presence)
     assert presence.epoch == EPOCH
 
@@ -176,7 +198,7 @@ def test_a_query_brings_the_reply_and_causes_nothing() -> None:
     ("change", "reason"),
     [
         ({"boot": 1}, Reason.OTHER_BOOT),
-        ({"epoch": EPOCH - 1}, Reason.OTHER_EPOCH),
+        ({"epoch": EPOCH - 1}, Reason.OWNED),
         ({"identity_bits": 0xFFFF}, Reason.OTHER_IDENTITY),
     ],
 )
@@ -345,7 +367,7 @@ def test_a_restart_does_not_lift_an_all_stop() -> None:
     bench.say(to_all(Stop(2)))
     bench.module.restart(bench.t_ns)
     me = bench.roll()
-    assert (me.latched, me.stop_number) == (1, 2)
+    assert (me.flags & Flags.LATCHED, me.stop_number) == (Flags.LATCHED, 2)
 
 
 def test_fault_restart_on_brake_restarts_once_and_nothing_moves_twice() -> None:
@@ -416,7 +438,7 @@ def test_waking_late_is_waking_often() -> None:
 def test_facts_of_a_motion_outlive_the_epoch_but_are_not_kept_in_the_next() -> None:
     bench = Bench()
     bench.order(pivot(bench.me, 1))
-    bench.say(to_all(RollCall(EPOCH + 5)))
+    bench.say(to_all(RollCall(EPOCH + 5, CONSOLE)))
     (facts,) = of(Facts, bench.run())
     assert isinstance(facts, Facts)
     assert facts.epoch == EPOCH
@@ -427,7 +449,7 @@ def test_facts_of_a_motion_outlive_the_epoch_but_are_not_kept_in_the_next() -> N
 
 def test_a_spin_of_the_longest_hold_fits_its_answer() -> None:
     bench = Bench()
-    longest = Spin(EPOCH, bench.me.boot, 1, bench.me.identity & 0xFFFF, 9000, 0xFFFF)
+    longest = Spin(EPOCH, bench.me.boot, 1, bench.me.identity & 0xFFFF, LATEST_MS, 9000, 0xFFFF)
     answer = bench.order(longest)[0]
     assert isinstance(answer, Answer)
     assert answer.expect_ms == 0xFFFF

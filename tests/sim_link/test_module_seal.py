@@ -5,7 +5,7 @@ from pathlib import Path
 import pytest
 
 from protocol.codes import CONSOLE_ADDRESS, EVERYONE_ADDRESS
-from protocol.message import Clear, Message, Packet, Query, Stop, Telemetry, encode
+from protocol.message import Clear, Message, Packet, Query, RollCall, Stop, Telemetry, encode
 from protocol.seal import KeyRing, Opened, Sealer, open_seal
 from sim_link.errors import SimInputError
 from sim_link.module_seal import ModuleSeal, load_keys
@@ -37,7 +37,7 @@ def test_a_restart_forgets_what_was_proven() -> None:
 
     def heard(message: Message, boot: int) -> Packet | None:
         payload = encode(Packet(EVERYONE_ADDRESS, CONSOLE_ADDRESS, message))
-        return seal.admit(console.seal(payload), boot)
+        return seal.admit(console.seal(payload), boot, epoch=1000)
 
     assert heard(Clear(1), 77) is None
     assert heard(Query(1000, 77, 0), 77) is not None
@@ -46,9 +46,26 @@ def test_a_restart_forgets_what_was_proven() -> None:
     assert heard(Stop(2), 78) is not None
 
 
+def test_another_epoch_forgets_what_was_proven_too() -> None:
+    seal = ModuleSeal(KEYS)
+    first, second = Sealer(KEYS, 1000), Sealer(KEYS, 1001)
+
+    def heard(console: Sealer, message: Message, epoch: int) -> Packet | None:
+        payload = encode(Packet(EVERYONE_ADDRESS, CONSOLE_ADDRESS, message))
+        return seal.admit(console.seal(payload), 77, epoch)
+
+    assert heard(first, Query(1000, 77, 0), 1000) is not None
+    assert heard(second, RollCall(1001, 5), 1000) is not None
+    assert heard(first, Clear(1), 1000) is not None
+    assert heard(first, Clear(1), 1001) is None
+    assert heard(second, Clear(1), 1001) is None
+    assert heard(second, Query(1001, 77, 0), 1001) is not None
+    assert heard(second, Clear(1), 1001) is not None
+
+
 def test_unsealed_words_are_not_heard() -> None:
     payload = encode(Packet(EVERYONE_ADDRESS, CONSOLE_ADDRESS, Stop(1)))
-    assert ModuleSeal(KEYS).admit(payload, 77) is None
+    assert ModuleSeal(KEYS).admit(payload, 77, 1000) is None
 
 
 @pytest.mark.parametrize("text", ["", "[[key]]\nslot = 0\nhex = 'ab'\n"])

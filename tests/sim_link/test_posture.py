@@ -94,7 +94,7 @@ def test_the_brake_gets_posture_sense_and_a_speed_without_sign(
 ) -> None:
     calls: list[tuple[Kind, float, int, int]] = []
 
-    def spy(kind: Kind, speed: float, face_up: int, sense: int) -> MotionResult:
+    def spy(kind: Kind, speed: float, face_up: int, sense: int, watch: None) -> MotionResult:
         calls.append((kind, speed, face_up, sense))
         return result_of(1, math.pi / 2)
 

@@ -14,9 +14,9 @@ import sim_link
 from protocol.frame import FrameDecoder, frame
 from protocol.message import Presence, RollCall, decode, encode
 from sim_link.protocol_sim import SEND_BUFFER_BYTES
-from tests.support.virtual_console import EPOCH, to_all
+from tests.support.virtual_console import CONSOLE, EPOCH, to_all
 
-ROLL_CALL = frame(encode(to_all(RollCall(EPOCH))))
+ROLL_CALL = frame(encode(to_all(RollCall(EPOCH, CONSOLE))))
 
 
 def port(query: str = "seed=7&pace=20", **settings: object) -> serial.SerialBase:

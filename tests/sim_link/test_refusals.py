@@ -4,28 +4,55 @@ from dataclasses import replace
 
 import pytest
 
-from protocol.codes import Reason
-from protocol.message import Command, Flash, Pivot, Rest, Spin
-from sim_link.drive import Drive
+from protocol.codes import Fault, Reason, SettingId
+from protocol.message import (
+    Command,
+    Flash,
+    Hop,
+    LockOut,
+    Pivot,
+    Probe,
+    Rest,
+    SettingWrite,
+    Spin,
+    Twist,
+    Unlock,
+)
+from sim_link.box import Boot, Box
 from sim_link.mechanics import MotionResult
-from sim_link.randomness import Draws
-from sim_link.refusals import refusal
-from tests.support.virtual_console import PAVER, S, spec_of
+from sim_link.module_time import ModuleTime
+from sim_link.refusals import Look, refusal
+from tests.support.boxes import boxed
+from tests.support.virtual_console import CONSOLE, EPOCH, PAVER, S, permit, spec_of
 
-PIVOT = Pivot(1, 1, 1, 1, 1, 1, 4000)
-SPIN = Spin(1, 1, 1, 1, -4000, 100)
+LATEST_MS = 2_000_000_000
+PIVOT = Pivot(1, 1, 1, 1, LATEST_MS, 0, 1, 1, 4000)
+SPIN = Spin(1, 1, 1, 1, LATEST_MS, -4000, 100)
 REST = Rest(1, 1, 1, 1)
 FLASH = Flash(1, 1, 1, 1, 100)
+HOP = Hop(1, 1, 1, 1, LATEST_MS, 0, 1, 4000)
+TWIST = Twist(1, 1, 1, 1, LATEST_MS, 0, 1, 4000)
+LOCK, UNLOCK = LockOut(1, 1, 1, 1, b"Ada"), Unlock(1, 1, 1, 1, b"Ada")
+GROUPS = SettingWrite(1, 1, 1, 1, SettingId.GROUPS, 5)
+ALL = (PIVOT, SPIN, FLASH, REST, LOCK, UNLOCK, GROUPS)
 
 
-def drive_of(face_up: int = 1, charge: float = 0.95) -> Drive:
-    spec = spec_of(PAVER, face_up, charge)
-    return Drive(spec, Draws(3, spec.identity))
+def box_of(face_up: int = 1, charge: float = 0.95) -> Box:
+    return boxed(spec_of(PAVER, face_up, charge))
 
 
-@pytest.mark.parametrize("command", [PIVOT, SPIN, REST, FLASH])
-def test_nothing_stands_in_the_way_of_a_good_command(command: Command) -> None:
-    assert refusal(command, drive_of(), False, 0) is Reason.NONE
+def why(command: Command, box: Box, t_ns: int = 0, engaged: bool = False) -> Reason:
+    return refusal(Look(command, box, engaged, t_ns))
+
+
+def reasons_of(box: Box, t_ns: int = 0, engaged: bool = False) -> dict[str, Reason]:
+    """Which of ALL are refused, and why."""
+    found = {type(each).__name__: why(each, box, t_ns, engaged) for each in ALL}
+    return {name: reason for name, reason in found.items() if reason is not Reason.NONE}
+
+
+def test_nothing_stands_in_the_way_of_a_good_command() -> None:
+    assert reasons_of(box_of()) == {}
 
 
 @pytest.mark.parametrize(
@@ -36,64 +63,159 @@ def test_nothing_stands_in_the_way_of_a_good_command(command: Command) -> None:
         (PIVOT._replace(direction=2), Reason.BAD_FIELD),
         (PIVOT._replace(setting=0), Reason.BAD_FIELD),
         (PIVOT._replace(setting=9), Reason.BAD_FIELD),
+        (HOP._replace(speed_rpm=0), Reason.BAD_FIELD),
+        (TWIST._replace(direction=-2), Reason.BAD_FIELD),
         (SPIN._replace(speed_rpm=0), Reason.BAD_FIELD),
         (FLASH._replace(duration_ms=0), Reason.BAD_FIELD),
-        (PIVOT._replace(setting=2), Reason.SETTING_UNSUPPORTED),
-        (PIVOT._replace(setting=4), Reason.SETTING_UNSUPPORTED),
+        (LOCK._replace(person=b""), Reason.BAD_FIELD),
+        (LOCK._replace(person=bytes(12)), Reason.BAD_FIELD),
+        (UNLOCK._replace(person=b""), Reason.BAD_FIELD),
+        (GROUPS._replace(setting=99), Reason.BAD_FIELD),
+        (GROUPS._replace(setting=SettingId.BATTERY_LOW_MV, value=2999), Reason.BAD_FIELD),
+        (GROUPS._replace(setting=SettingId.CALIBRATION), Reason.READ_ONLY),
+        (PIVOT._replace(setting=2), Reason.UNSUPPORTED),
+        (PIVOT._replace(setting=4), Reason.UNSUPPORTED),
+        (HOP, Reason.UNSUPPORTED),
+        (TWIST, Reason.UNSUPPORTED),
         (PIVOT._replace(speed_rpm=9001), Reason.OVER_SPEED_LIMIT),
         (SPIN._replace(speed_rpm=-9001), Reason.OVER_SPEED_LIMIT),
         (SPIN._replace(speed_rpm=9000), Reason.NONE),
     ],
 )
 def test_fields_are_looked_at(command: Command, reason: Reason) -> None:
-    assert refusal(command, drive_of(), False, 0) is reason
+    assert why(command, box_of()) is reason
+
+
+def both(reason: Reason) -> dict[str, Reason]:
+    return {"Pivot": reason, "Spin": reason}
 
 
 def test_a_latched_stop_blocks_wheels_and_nothing_else() -> None:
-    reasons = [refusal(command, drive_of(), True, 0) for command in (PIVOT, SPIN, FLASH, REST)]
-    assert reasons == [Reason.STOP_IN_FORCE, Reason.STOP_IN_FORCE, Reason.NONE, Reason.NONE]
+    box = box_of()
+    box.latched = True
+    assert reasons_of(box) == both(Reason.STOP_IN_FORCE)
 
 
-def test_a_busy_module_takes_nothing_but_a_rest() -> None:
-    drive = drive_of()
-    drive.start_spin(3000, S, 0)
-    reasons = [refusal(command, drive, False, S) for command in (PIVOT, SPIN, FLASH, REST)]
-    assert reasons == [Reason.BUSY] * 3 + [Reason.NONE]
+def test_a_person_s_lock_blocks_wheels_and_other_persons() -> None:
+    box = box_of()
+    box.person = b"Ada"
+    assert reasons_of(box) == both(Reason.LOCKED_OUT)
+    assert why(LOCK._replace(person=b"Bo"), box) is Reason.LOCKED_OUT
+    assert why(UNLOCK._replace(person=b"Bo"), box) is Reason.OTHER_PERSON
+    assert why(UNLOCK._replace(person=b"Ada\0\0"), box) is Reason.NONE
+
+
+def test_a_standing_fault_blocks_wheels() -> None:
+    box = box_of()
+    box.faults.add(Fault.SENSOR_LOST)
+    assert reasons_of(box) == both(Reason.FAULT)
+
+
+def test_without_its_clock_a_module_drives_nothing() -> None:
+    box = box_of()
+    box.boot = Boot(7, box.spec.identity, ModuleTime(0))
+    assert reasons_of(box) == both(Reason.CLOCK_UNKNOWN)
+
+
+def test_a_latest_start_counts_to_its_last_millisecond() -> None:
+    box = box_of()
+    early = PIVOT._replace(latest_ms=2_000)
+    assert why(early, box, 2 * S) is Reason.NONE
+    assert why(early, box, 2 * S + S // 1000) is Reason.TOO_LATE
+    assert why(SPIN._replace(latest_ms=2**32 - 1), box) is Reason.TOO_LATE
+
+
+def test_without_a_permit_no_wheel_turns() -> None:
+    assert reasons_of(box_of(), 50 * S) == both(Reason.NO_PERMIT)
+
+
+def test_a_busy_module_takes_nothing_but_what_takes_a_danger_away() -> None:
+    box = box_of()
+    box.drive.start_spin(3000, S, 0)
+    busy = {**both(Reason.BUSY), "Flash": Reason.BUSY}
+    assert reasons_of(box, S) == busy
+    assert reasons_of(box_of(), engaged=True) == busy
 
 
 def test_a_low_battery_blocks_wheels() -> None:
-    drive = drive_of(charge=0.03)
-    reasons = [refusal(command, drive, False, 0) for command in (PIVOT, SPIN, FLASH, REST)]
-    assert reasons == [Reason.BATTERY_LOW, Reason.BATTERY_LOW, Reason.NONE, Reason.NONE]
+    assert reasons_of(box_of(charge=0.03)) == both(Reason.BATTERY_LOW)
+
+
+def test_the_limits_are_those_of_the_settings() -> None:
+    box = box_of()
+    box.settings.write(SettingId.WHEEL_LIMIT_RPM, 3999)
+    assert reasons_of(box) == both(Reason.OVER_SPEED_LIMIT)
+    box.settings.write(SettingId.WHEEL_LIMIT_RPM, 4000)
+    box.settings.write(SettingId.BATTERY_LOW_MV, 4200)
+    assert reasons_of(box) == both(Reason.BATTERY_LOW)
 
 
 def test_the_battery_is_looked_at_as_it_is_now() -> None:
     spec = replace(spec_of(PAVER, 1, 0.2), kind=replace(PAVER, cell_capacity_mAh=10.0))
-    drive = Drive(spec, Draws(3, spec.identity))
-    assert refusal(PIVOT, drive, False, 0) is Reason.NONE
+    box = boxed(spec)
+    assert why(PIVOT, box) is Reason.NONE
     # 0.18 W at 3.7 V are 49 mA: the 2 mAh left last about two and a half minutes.
-    assert refusal(PIVOT, drive, False, 200 * S) is Reason.BATTERY_LOW
+    box.boot.allegiance.hear_permit(permit(200 * S), 200_000)
+    assert why(PIVOT, box, 200 * S) is Reason.BATTERY_LOW
 
 
 @pytest.mark.parametrize("face_up", [5, 6])
 def test_an_upright_axis_blocks_a_pivot_but_no_spin(face_up: int) -> None:
-    drive = drive_of(face_up)
-    assert refusal(PIVOT, drive, False, 0) is Reason.AXIS_UPRIGHT
-    assert refusal(SPIN, drive, False, 0) is Reason.NONE
+    assert reasons_of(box_of(face_up)) == {"Pivot": Reason.AXIS_UPRIGHT}
 
 
 def test_a_module_that_lies_on_no_face_takes_no_drive(monkeypatch: pytest.MonkeyPatch) -> None:
     leaning = MotionResult(0, 0.7, 0.8, 5.0, 0.01, 0.4, False)
     monkeypatch.setattr("sim_link.mechanics.floor_pivot", lambda *_: leaning)
-    drive = drive_of()
-    drive.body.brake(300.0, 1, 1, 0)
-    reasons = [refusal(command, drive, False, 5 * S) for command in (PIVOT, SPIN, FLASH, REST)]
-    assert reasons == [Reason.NOT_SETTLED, Reason.NOT_SETTLED, Reason.NONE, Reason.NONE]
+    box = box_of()
+    box.drive.body.brake(300.0, 1, 1, 0)
+    assert reasons_of(box, 5 * S) == both(Reason.NOT_SETTLED)
 
 
-def test_the_first_reason_wins() -> None:
-    drive = drive_of(charge=0.03)
-    fast = PIVOT._replace(speed_rpm=9999)
-    assert refusal(fast, drive, True, 0) is Reason.STOP_IN_FORCE
-    assert refusal(fast, drive, False, 0) is Reason.OVER_SPEED_LIMIT
-    assert refusal(fast._replace(setting=3), drive, True, 0) is Reason.SETTING_UNSUPPORTED
+def test_the_first_reason_wins_in_the_document_s_order() -> None:
+    """WIRE.md, "The module's own interlocks": each cause taken away shows the next."""
+    box = boxed(spec_of(PAVER, 5, 0.03))
+    box.boot = Boot(7, box.spec.identity, ModuleTime(0))
+    box.latched, box.person = True, b"Ada"
+    box.faults.add(Fault.WHEEL_STUCK)
+    box.drive.start_spin(3000, 60 * S, 0)
+    fast = PIVOT._replace(speed_rpm=9999, latest_ms=0)
+    seen = [
+        why(fast._replace(speed_rpm=0, setting=3), box, S),
+        why(fast._replace(setting=3), box, S),
+    ]
+    for take_away in (
+        lambda: None,
+        lambda: setattr(box, "latched", False),
+        lambda: setattr(box, "person", b""),
+        box.faults.clear,
+        lambda: box.boot.allegiance.roll_call(EPOCH, CONSOLE, 0),
+    ):
+        take_away()
+        seen.append(why(fast, box, S))
+    box.boot.allegiance.hear_probe(Probe(CONSOLE, 7, 1, 1, 0, 5), 1_000)
+    seen += [why(fast, box, S)]
+    fast = fast._replace(latest_ms=LATEST_MS)
+    seen += [why(fast, box, S)]
+    box.boot.allegiance.hear_permit(permit(0), 1_000)
+    seen += [why(fast, box, S)]
+    box.drive.rest(S)
+    box.drive.step()
+    seen += [why(fast, box, S), why(fast._replace(speed_rpm=4000), box, S)]
+    box.settings.write(SettingId.BATTERY_LOW_MV, 3000)
+    seen += [why(fast._replace(speed_rpm=4000), box, S)]
+    assert seen == [
+        Reason.BAD_FIELD,
+        Reason.UNSUPPORTED,
+        Reason.STOP_IN_FORCE,
+        Reason.LOCKED_OUT,
+        Reason.FAULT,
+        Reason.CLOCK_UNKNOWN,
+        Reason.CLOCK_UNKNOWN,
+        Reason.TOO_LATE,
+        Reason.NO_PERMIT,
+        Reason.BUSY,
+        Reason.OVER_SPEED_LIMIT,
+        Reason.BATTERY_LOW,
+        Reason.AXIS_UPRIGHT,
+    ]

@@ -17,9 +17,18 @@ from protocol.message import Message, Presence, RollCall, Telemetry, decode, enc
 from sim_link.errors import SimInputError
 from sim_link.options import SimOptions
 from sim_link.serve import _PseudoTerminal, serve_pty, serve_tcp
-from tests.support.virtual_console import EPOCH, flash, pivot, to_all, to_module
+from tests.support.virtual_console import (
+    CONSOLE,
+    EPOCH,
+    flash,
+    permit,
+    pivot,
+    to_all,
+    to_module,
+    told,
+)
 
-ROLL_CALL = frame(encode(to_all(RollCall(EPOCH))))
+ROLL_CALL = frame(encode(to_all(RollCall(EPOCH, CONSOLE))))
 FAST = SimOptions(seed=7, pace=20.0)
 
 pty_only = pytest.mark.skipif(not hasattr(os, "openpty"), reason="no pseudo-terminals here")
@@ -109,6 +118,9 @@ def test_the_tally_has_a_line_for_each_command_as_it_is_carried_out(tmp_path: Pa
         alder, birch = present[0x10], present[0x11]
         assert isinstance(alder, Presence)
         assert isinstance(birch, Presence)
+        offset_ms = alder.time_ms  # fleet time counts from the opening here: the permit is long
+        link.write(frame(encode(to_module(told(alder, offset_ms), 0x10))))
+        link.write(frame(encode(to_all(permit(0)))))
         for packet in (to_module(pivot(alder, 1), 0x10), to_module(flash(birch, 1), 0x11)):
             for _ in range(3):
                 link.write(frame(encode(packet)))

@@ -23,6 +23,7 @@ from sim_link.options import Fault, FaultKind, SimOptions
 from sim_link.tally import TallyEntry
 from sim_link.world import World
 from tests.support.virtual_console import (
+    CONSOLE,
     EPOCH,
     MS,
     S,
@@ -101,7 +102,7 @@ def test_reading_more_often_changes_nothing() -> None:
     raws = []
     for step_ms in (1, 7, 333):
         host = console(seed=3, **BAD_RADIO)
-        host.say(to_all(RollCall(EPOCH)))
+        host.say(to_all(RollCall(EPOCH, CONSOLE)))
         host.run(4 * S, step_ms * MS)
         raws.append(host.raw)
     assert raws[0] == raws[1] == raws[2]
@@ -212,7 +213,7 @@ def test_the_line_paces_both_ways() -> None:
     # 9,600 baud: 960 bytes a second. The roll call of 22 bytes takes 23 ms to the bridge, and
     # nothing of the answers is across before.
     host = console(seed=7, rate=9600)
-    call = frame(encode(to_all(RollCall(EPOCH))))
+    call = frame(encode(to_all(RollCall(EPOCH, CONSOLE))))
     host.world.write(call, 0)
     assert host.world.unsent(0) == len(call)
     across_ns = len(call) * 10 * S // 9600
@@ -224,7 +225,7 @@ def test_the_line_paces_both_ways() -> None:
 
 def test_what_is_unsent_can_be_dropped() -> None:
     host = console(seed=7, rate=1200)
-    host.world.write(frame(encode(to_all(RollCall(EPOCH)))), 0)
+    host.world.write(frame(encode(to_all(RollCall(EPOCH, CONSOLE)))), 0)
     host.world.discard_unsent(10 * MS)
     assert host.world.unsent(10 * MS) <= 1
     host.run(3 * S)
@@ -242,7 +243,7 @@ def test_good_frames_that_mean_nothing_are_dropped() -> None:
     host = console(seed=7)
     host.world.write(frame(b"\x09\x01\xff\xff\x01\x00"), 0)  # another wire version
     host.world.write(frame(b"\x01\x01\xff"), 0)  # too short for a header
-    host.say(to_module(RollCall(EPOCH), 0x99))  # nobody's address
+    host.say(to_module(RollCall(EPOCH, CONSOLE), 0x99))  # nobody's address
     host.run(100 * MS)
     assert host.present == {}
     assert host.world.counts.dropped_at_bridge == 1
@@ -275,7 +276,7 @@ def test_time_does_not_run_backwards() -> None:
     host.run(5 * S)
     before = len(host.heard)
     assert host.world.read(S) == b""
-    host.say(to_all(RollCall(EPOCH)))
+    host.say(to_all(RollCall(EPOCH, CONSOLE)))
     host.run(S)
     assert len(host.heard) > before
 

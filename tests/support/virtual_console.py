@@ -11,8 +11,10 @@ from protocol.message import (
     Flash,
     Message,
     Packet,
+    Permit,
     Pivot,
     Presence,
+    Probe,
     Rest,
     RollCall,
     Spin,
@@ -27,6 +29,12 @@ from sim_link.world import World
 MS = 1_000_000
 S = 1_000_000_000
 EPOCH = 1000
+CONSOLE = 0xC0C0
+"""Number of the console that tests speak for."""
+LATEST_MS = 2_000_000_000
+"""A latest start that no test reaches."""
+PERMIT_MS = 50_000
+TOLD_BOUND_MS = 20
 
 PAVER = Kind(
     name="paver",
@@ -74,15 +82,29 @@ def to_all(message: Message) -> Packet:
     return Packet(EVERYONE_ADDRESS, CONSOLE_ADDRESS, message)
 
 
-def pivot(to: Presence, number: int, speed_rpm: int = 6000, direction: int = 1) -> Pivot:
+def pivot(
+    to: Presence, number: int, speed_rpm: int = 6000, direction: int = 1, stage: int = 0
+) -> Pivot:
     """Make a floor pivot for the module that introduced itself with ``to``."""
     bits = identity_bits(to.identity)
-    return Pivot(EPOCH, to.boot, number, bits, 1, direction, speed_rpm)
+    return Pivot(EPOCH, to.boot, number, bits, LATEST_MS, stage, 1, direction, speed_rpm)
 
 
 def spin(to: Presence, number: int, speed_rpm: int = 3000, hold_ms: int = 1000) -> Spin:
     """Make a spin for that module."""
-    return Spin(EPOCH, to.boot, number, identity_bits(to.identity), speed_rpm, hold_ms)
+    bits = identity_bits(to.identity)
+    return Spin(EPOCH, to.boot, number, bits, LATEST_MS, speed_rpm, hold_ms)
+
+
+def told(to: Presence, offset_ms: int, bound_ms: int = TOLD_BOUND_MS) -> Probe:
+    """Tell that module what is made of its clock: module time less fleet time."""
+    bits = identity_bits(to.identity)
+    return Probe(CONSOLE, to.boot, 1, bits, offset_ms % 2**32, bound_ms)
+
+
+def permit(t_ns: int, length_ms: int = PERMIT_MS) -> Permit:
+    """A drive permit of so long from a fleet time on."""
+    return Permit(CONSOLE, t_ns // MS + length_ms)
 
 
 def rest(to: Presence, number: int) -> Rest:
@@ -104,6 +126,8 @@ class VirtualConsole:
         self.heard: list[Packet] = []
         self.raw = b""
         self.present: dict[int, Presence] = {}
+        self.present_ns: dict[int, int] = {}
+        self._permit_ns = 0
         self._decoder = FrameDecoder()
 
     def say(self, packet: Packet) -> None:
@@ -116,6 +140,9 @@ class VirtualConsole:
         end_ns = self.t_ns + duration_ns
         while self.t_ns < end_ns:
             self.t_ns = min(self.t_ns + step_ns, end_ns)
+            if self.present and self.t_ns >= self._permit_ns:
+                self._permit_ns = self.t_ns + PERMIT_MS * MS // 4
+                self.say(to_all(permit(self.t_ns)))
             data = self.world.read(self.t_ns)
             self.raw += data
             for payload in self._decoder.feed(data):
@@ -124,9 +151,14 @@ class VirtualConsole:
         return self.heard[start:]
 
     def call_roll(self, epoch: int = EPOCH) -> dict[int, Presence]:
-        """Call the roll once and return who answered, by address."""
-        self.say(to_all(RollCall(epoch)))
+        """Call the roll once, give who answered a permit, and return them by address."""
+        self.say(to_all(RollCall(epoch, CONSOLE)))
         self.run(200 * MS)
+        for address, presence in self.present.items():
+            offset_ms = presence.time_ms - self.present_ns[address] // MS
+            self.say(to_module(told(presence, offset_ms, 100), address))
+        self._permit_ns = 0
+        self.run(100 * MS)
         return self.present
 
     def replies(self, address: int, number: int) -> list[Answer | Facts]:
@@ -143,3 +175,4 @@ class VirtualConsole:
         self.heard.append(packet)
         if isinstance(packet.message, Presence):
             self.present[packet.source] = packet.message
+            self.present_ns[packet.source] = self.t_ns
