@@ -9,7 +9,7 @@ from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 from typing import Any, Final
 
-from protocol.allegiance import ms_until
+from protocol.allegiance import DRIFT_SHIFT, ms_until
 from protocol.codes import Activity, AnswerState, Fault, Reason, SettingId
 from protocol.command_memory import Reply
 from protocol.message import (
@@ -137,8 +137,9 @@ class Works:
         left_ms = allegiance.permit_left_ms(time.ms(t_ns))
         if left_ms == 0:
             return self.rest_wheel(Reason.PERMIT_LAPSED, t_ns)
-        # A millisecond early, since the bound of what was told grows until then.
-        self._permit_ns = time.after_ns(t_ns, max(1, left_ms - 1))
+        # The bound of what was told grows until then, and the permit's end comes earlier by that.
+        early_ms = (left_ms >> DRIFT_SHIFT) + 1
+        self._permit_ns = time.after_ns(t_ns, max(1, left_ms - early_ms))
         return []
 
     # -- commands ------------------------------------------------------------------------

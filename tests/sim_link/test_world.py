@@ -2,16 +2,22 @@
 
 import hashlib
 from collections import Counter
+from pathlib import Path
 
 import pytest
 
-from protocol.codes import Activity, AnswerState, Reason
+from protocol.clock import ModuleClock
+from protocol.codes import BRIDGE_ADDRESS, CONSOLE_ADDRESS, Activity, AnswerState, Reason
 from protocol.frame import frame
 from protocol.message import (
     Answer,
+    BridgeAsk,
+    BridgeStatus,
     Clear,
+    Echo,
     Facts,
     Nameplate,
+    Packet,
     RollCall,
     Stop,
     Stopped,
@@ -33,6 +39,7 @@ from tests.support.virtual_console import (
     spin,
     to_all,
     to_module,
+    told,
 )
 
 PAVERS, PEBBLES = (0x10, 0x12, 0x14, 0x16), (0x11, 0x13, 0x15, 0x17)
@@ -292,3 +299,49 @@ def test_a_thousand_modules_each_keep_their_time() -> None:
 def test_bad_fleets_and_faults_are_refused_before_anything_runs() -> None:
     with pytest.raises(SimInputError, match="no such module"):
         World(SimOptions(fault=(Fault(FaultKind.SILENT, "bob"),)))
+
+
+def test_the_bridge_says_how_it_is_and_passes_the_question_to_nobody() -> None:
+    host = VirtualConsole(World(SimOptions(seed=3)))
+    host.call_roll()
+    host.say(Packet(BRIDGE_ADDRESS, CONSOLE_ADDRESS, BridgeAsk(77)))
+    [packet] = [each for each in host.run(S) if isinstance(each.message, BridgeStatus)]
+    status = packet.message
+    assert isinstance(status, BridgeStatus)
+    assert (packet.source, status.sequence) == (BRIDGE_ADDRESS, 77)
+    counts = host.world.counts
+    assert 0 < status.frames_to_console <= counts.frames_to_console
+    assert status.frames_from_console == counts.frames_from_console
+    assert status.queue <= status.queue_most
+    assert abs(status.uptime_ms - host.t_ns // MS) < 1_100
+
+
+def test_a_bridge_without_keys_answers_nothing_in_a_sealed_fleet(tmp_path: Path) -> None:
+    keys = tmp_path / "keys.toml"
+    keys.write_text(f"[[key]]\nslot = 0\nhex = '{'ab' * 32}'\n")
+    host = VirtualConsole(World(SimOptions(seed=3, keys=keys)))
+    host.say(Packet(BRIDGE_ADDRESS, CONSOLE_ADDRESS, BridgeAsk(77)))
+    host.run(100 * MS)
+    assert host.heard == []
+
+
+def test_a_drifting_clock_is_found_within_its_bound() -> None:
+    """Probe and Echo over a delayed radio, reduced as RFC 5905 section 8 has it."""
+    host = VirtualConsole(World(SimOptions(seed=3, delay_ms=4.0)))
+    present = host.call_roll()[0x12]
+    module = next(each for each in host.world.modules if each.spec.address == 0x12)
+    clock = ModuleClock(2_000)
+    for sequence in range(20):
+        t1_ns = host.t_ns
+        host.say(to_module(told(present, 0)._replace(sequence=sequence), 0x12))
+        while not (echoes := [each for each in host.run(MS, MS) if type(each.message) is Echo]):
+            pass
+        echo = echoes[0].message
+        assert isinstance(echo, Echo)
+        assert (echo.sequence, echo.held_us) == (sequence, 0)
+        clock.sample(t1_ns, echo.received_us * 1_000, echo.received_us * 1_000, host.t_ns)
+        host.run(2 * S)
+    truth_ns = module.box.boot.time.us(host.t_ns) * 1_000 - host.t_ns
+    assert abs(clock.offset_ns(host.t_ns) - truth_ns) <= clock.bound_ns(host.t_ns)
+    drift_ppm = (module.box.boot.time._rate - 1.0) * 1e6
+    assert 1.0 < abs(drift_ppm) <= 40.0
