@@ -82,7 +82,7 @@ class SessionCore:
         self._sender = Sender(outboxes, seal)
         self._log = log
         self._answer = answer
-        self._exchange = CommandExchange()
+        self._exchange = CommandExchange(limits.resend)
         self._roll = RollCaller()
         self._stops = StopKeeper()
         answer_ns = max((each.line_ns(ANSWER_BYTES) for each in outboxes), default=0)

@@ -33,9 +33,7 @@ from protocol.message import (
     Telemetry,
     Unlock,
 )
-from protocol.rto import RoundTripEstimator
-
-_NS_PER_MS: Final = 1_000_000
+from protocol.resend import NS_PER_MS, ResendPolicy
 
 _DOUBTED_AFTER: Final = 6
 """Sends without an answer after which the round-trip estimate is no longer believed. Without
@@ -50,31 +48,6 @@ AHEAD: Final = (Rest, LockOut)
 
 _DONE_AT_ONCE: Final = (Rest, LockOut, Unlock, SettingWrite)
 """Commands whose first answer may be FINISHED, and so measures the round trip."""
-
-
-@dataclass(frozen=True, slots=True)
-class ResendPolicy:
-    """How often and how long to try. ``tries``: sends in CALLING, and again in ASKING; the
-    ``_ns`` bounds are RoundTripEstimator's; ``finish_margin_ns``: how much longer than expected
-    a command may take before the module is asked. Raises LocalProtocolError below 1 try."""
-
-    tries: int = 10
-    initial_ns: int = 250 * _NS_PER_MS
-    minimum_ns: int = 30 * _NS_PER_MS
-    maximum_ns: int = 2_000 * _NS_PER_MS
-    granularity_ns: int = 1 * _NS_PER_MS
-    finish_margin_ns: int = 300 * _NS_PER_MS
-
-    def __post_init__(self) -> None:
-        if self.tries < 1 or self.finish_margin_ns < 0:
-            raise LocalProtocolError("a resend policy needs at least one try and a margin >= 0")
-        self.estimator()  # raises where the bounds are wrong
-
-    def estimator(self) -> RoundTripEstimator:
-        """Make a fresh round-trip estimator with this policy's bounds."""
-        return RoundTripEstimator(
-            self.initial_ns, self.minimum_ns, self.maximum_ns, self.granularity_ns
-        )
 
 
 _DEFAULT_POLICY: Final = ResendPolicy()
@@ -278,7 +251,7 @@ class CommandExchange:
             if entry.returns >= self._policy.tries:
                 return self._end(lane, entry, Ending.UNSEEN)
         entry.phase = Phase.RUNNING
-        entry.due_ns = t_ns + expect_ms * _NS_PER_MS + self._policy.finish_margin_ns
+        entry.due_ns = t_ns + expect_ms * NS_PER_MS + self._policy.finish_margin_ns
         return []
 
     def _refuse(self, lane: Lane, entry: Entry, t_ns: int, _expect_ms: int) -> list[Step]:

@@ -20,6 +20,9 @@ def test_a_pace_keeps_them_in_real_time() -> None:
     assert fast.start_within_ns == 10 * Limits().start_within_ns
     assert fast.clock_bound_ns == 10 * Limits().clock_bound_ns
     assert fast.stage_lead_ns == 10 * Limits().stage_lead_ns
+    assert fast.resend.tries == Limits().resend.tries
+    assert fast.resend.minimum_ns == 10 * Limits().resend.minimum_ns
+    assert fast.resend.initial_ns == 10 * Limits().resend.initial_ns
 
 
 def test_slow_motion_does_not_shorten_them() -> None:

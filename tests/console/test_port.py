@@ -3,6 +3,8 @@
 import grp
 import os
 import pty
+import socket
+import time
 from collections.abc import Iterator
 from contextlib import contextmanager
 from pathlib import Path
@@ -10,7 +12,7 @@ from pathlib import Path
 import pytest
 
 from console.errors import InputError, LinkError
-from console.port import UNKNOWN_HOLDER, holder_of, open_port, permission_advice
+from console.port import READ_TIMEOUT_S, UNKNOWN_HOLDER, holder_of, open_port, permission_advice
 
 
 @pytest.fixture
@@ -118,3 +120,19 @@ def test_a_real_port_has_no_pace_of_its_own(terminal: tuple[int, int, str]) -> N
     port = open_port(terminal[2])
     assert port.pace == 1.0
     port.close()
+
+
+def test_a_socket_is_read_as_far_as_it_goes_at_once() -> None:
+    with socket.create_server(("127.0.0.1", 0)) as server:
+        port = open_port(f"socket://127.0.0.1:{server.getsockname()[1]}")
+        peer, _ = server.accept()
+        with peer:
+            peer.sendall(b"x" * 3000)
+            pieces = [port.read()]
+            while sum(map(len, pieces)) < 3000:
+                pieces.append(port.read())
+            assert len(pieces) < 10
+            began = time.monotonic()
+            assert port.read() == b""
+            assert time.monotonic() - began >= READ_TIMEOUT_S / 2
+        port.close()

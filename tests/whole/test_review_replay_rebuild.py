@@ -13,6 +13,7 @@ from console.opening import SessionOptions, open_session
 from console.replay import ReplayPlayer
 from console.view import FleetView
 from storage.reader import DERIVED_TABLES, LogReader
+from tests.support.heart import beating, drivable
 from tests.support.programs import run, run_json, wait_for
 from tests.support.terminal import terminal
 
@@ -86,13 +87,14 @@ def live_end(tmp_path_factory: pytest.TempPathFactory) -> tuple[Path, FleetView]
     """A session on a bad radio, with a stop in it, and its last picture."""
     path = tmp_path_factory.mktemp("replay") / "log.db"
     engine = open_session(SessionOptions((LINK,), path, operator="Ida"))
-    wait_for(lambda: sum(bool(m.kind and m.battery_V) for m in engine.view().modules) == 8, "all")
-    engine.order("all pivot forward at 4350")
-    wait_for(lambda: all(module.outcomes for module in engine.view().modules), "outcomes")
-    engine.order("all spin at 3000 for 20 s")
-    engine.stop("test")
-    wait_for(lambda: engine.view().stop.in_force and not engine.view().stop.missing, "stopped")
-    wait_for(lambda: not any(module.doing for module in engine.view().modules), "all over")
+    with beating(engine):
+        wait_for(lambda: drivable(engine.view()), "all")
+        engine.order("all pivot forward at 4350")
+        wait_for(lambda: all(module.outcomes for module in engine.view().modules), "outcomes")
+        engine.order("all spin at 3000 for 20 s")
+        engine.stop("test")
+        wait_for(lambda: engine.view().stop.in_force and not engine.view().stop.missing, "stopped")
+        wait_for(lambda: not any(module.doing for module in engine.view().modules), "all over")
     engine.close()
     return path, engine.view()
 
