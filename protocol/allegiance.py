@@ -65,7 +65,7 @@ class Allegiance:
         """Hear a roll call; follow its console where the rules allow. True where the epoch was
         adopted: the command memory is then to be emptied."""
         other = console != self.console
-        if epoch <= self.epoch or (other and self.owner_left_ms(now_ms) > 0):
+        if not console or epoch <= self.epoch or (other and self.owner_left_ms(now_ms) > 0):
             return False
         self.epoch, self.console, self._adopted_ms = epoch, console, now_ms
         if other:
@@ -74,19 +74,19 @@ class Allegiance:
 
     def hear_probe(self, probe: Probe, now_ms: int) -> None:
         """Take what the followed console makes of this module's clock; nobody else's word."""
-        if probe.console == self.console and probe.bound_ms != BOUND_UNKNOWN:
+        if self._follows(probe.console) and probe.bound_ms != BOUND_UNKNOWN:
             self._told = _Told(probe.offset_ms, probe.bound_ms, now_ms)
 
     def hear_permit(self, permit: Permit, now_ms: int) -> None:
         """Take a permit of the followed console, unless a later one was heard before."""
-        if permit.console != self.console:
+        if not self._follows(permit.console):
             return
         if self._expiry_ms is None or ms_until(permit.expiry_ms, self._expiry_ms) > 0:
             self._expiry_ms = permit.expiry_ms
 
     def release(self, console: int) -> None:
         """The followed console lets go: permit and ownership end; its epoch is still followed."""
-        if console == self.console:
+        if self._follows(console):
             self._expiry_ms = self._adopted_ms = None
 
     @property
@@ -114,3 +114,7 @@ class Allegiance:
             left_ms = ms_until(self._adopted_ms + OWNER_GRACE_MS, now_ms)
             grace_ms = left_ms if 0 < left_ms <= OWNER_GRACE_MS else 0
         return max(grace_ms, self.permit_left_ms(now_ms))
+
+    def _follows(self, console: int) -> bool:
+        """Whether this is the console followed; 0 is nobody's number, also before any was."""
+        return console != 0 and console == self.console

@@ -9,7 +9,8 @@ Why nothing is carried out twice: a number is fresh only if it is newer than eve
 before, and judging it fresh makes it the newest, in one step. The replies are kept only so that
 a repeat gets its answer again; losing one never makes its number fresh again.
 
-A module makes one CommandMemory when it boots, with its new boot number, and never another.
+A module makes one CommandMemory when it boots, with its new boot number, and never another. Its
+epoch is 0 until it adopts one, and 0 is nobody's: no command belongs to it.
 """
 
 from dataclasses import dataclass
@@ -130,7 +131,7 @@ class CommandMemory:
         """
         if query.boot != self.boot:
             return _about(query, AnswerState.UNKNOWN, Reason.OTHER_BOOT)
-        if query.epoch != self.epoch:
+        if query.epoch != self.epoch or not self.epoch:
             return _about(query, AnswerState.UNKNOWN, Reason.OTHER_EPOCH)
         remembered = self._replies.get(query.number)
         if remembered is not None:
@@ -151,7 +152,7 @@ class CommandMemory:
         faults = (
             (command.identity_bits != self._identity_bits, Reason.OTHER_IDENTITY),
             (command.boot != self.boot, Reason.OTHER_BOOT),
-            (command.epoch != self.epoch, Reason.OTHER_EPOCH),
+            (command.epoch != self.epoch or not self.epoch, Reason.OTHER_EPOCH),
             (command.number == 0, Reason.BAD_FIELD),
         )
         return next((reason for wrong, reason in faults if wrong), Reason.NONE)

@@ -63,7 +63,8 @@ def _bad_setting(look: Look) -> bool:
 
 
 def _bad_spin(look: Look) -> bool:
-    return cast(Spin, look.command).speed_rpm == 0
+    spin = cast(Spin, look.command)
+    return spin.speed_rpm == 0 or spin.hold_ms == 0
 
 
 def _bad_flash(look: Look) -> bool:

@@ -1,6 +1,9 @@
 #include "tw_frame.h"
 
+#include "tw_message.h"
+
 #define CHECK_BYTES 4u
+#define GOOD_CHECK 0x48674BC7u
 
 uint32_t tw_crc32c(const uint8_t *data, uint8_t length)
 {
@@ -16,56 +19,46 @@ uint32_t tw_crc32c(const uint8_t *data, uint8_t length)
     return value ^ 0xFFFFFFFFu;
 }
 
-/* Take the stuffing off (Cheshire and Baker 1999). Returns 1, or 0 where it is bad. */
-static uint8_t unstuff(const uint8_t *piece, uint8_t length, uint8_t *out, uint8_t *out_length)
+/* Take the stuffing off (Cheshire and Baker 1999), in place: what is written never overtakes what
+ * is read. Returns how many bytes are left, 0xff where it is bad. */
+static uint8_t unstuff(uint8_t *piece, uint8_t length)
 {
     uint8_t at = 0;
     uint8_t written = 0;
     while (at < length) {
         const uint8_t code = piece[at];
         if (code == 0u || code > length - at) {
-            return 0;
+            return 0xFFu;
         }
         for (uint8_t run = 1; run < code; run++) {
-            out[written++] = piece[at + run];
+            piece[written++] = piece[at + run];
         }
         at = (uint8_t)(at + code);
         if (at < length) {
-            out[written++] = 0u;
+            piece[written++] = 0u;
         }
     }
-    *out_length = written;
-    return 1;
+    return written;
 }
 
-static uint32_t little_endian(const uint8_t *bytes)
+static tw_found end_of_piece(tw_reader *reader, uint8_t *length)
 {
-    return (uint32_t)bytes[0] | (uint32_t)bytes[1] << 8 | (uint32_t)bytes[2] << 16 |
-           (uint32_t)bytes[3] << 24;
-}
-
-static tw_found end_of_piece(const tw_reader *reader, uint8_t *payload, uint8_t *length)
-{
-    uint8_t body = 0;
     if (reader->overflow) {
         return TW_TOO_LONG;
     }
-    if (!unstuff(reader->held, reader->length, payload, &body)) {
+    const uint8_t whole = unstuff(reader->held, reader->length);
+    if (whole == 0xFFu) {
         return TW_BAD_STUFFING;
     }
-    if (body <= CHECK_BYTES) {
+    if (whole <= CHECK_BYTES) {
         return TW_TOO_SHORT;
     }
-    body = (uint8_t)(body - CHECK_BYTES);
-    if (tw_crc32c(payload, body) != little_endian(payload + body)) {
-        return TW_DAMAGED;
-    }
-    *length = body;
-    return TW_PAYLOAD;
+    *length = (uint8_t)(whole - CHECK_BYTES);
+    /* The check over payload and check is the same number for every good frame (WIRE.md). */
+    return tw_crc32c(reader->held, whole) == GOOD_CHECK ? TW_PAYLOAD : TW_DAMAGED;
 }
 
-tw_found tw_read_byte(tw_reader *reader, uint8_t byte, uint8_t payload[TW_MAX_STUFFED],
-                      uint8_t *length)
+tw_found tw_read_byte(tw_reader *reader, uint8_t byte, uint8_t *length)
 {
     tw_found found = TW_NOTHING;
     if (byte != 0u) {
@@ -77,32 +70,28 @@ tw_found tw_read_byte(tw_reader *reader, uint8_t byte, uint8_t payload[TW_MAX_ST
         return TW_NOTHING;
     }
     if (reader->length > 0u) {
-        found = end_of_piece(reader, payload, length);
+        found = end_of_piece(reader, length);
     }
     reader->length = 0;
     reader->overflow = 0;
     return found;
 }
 
-uint8_t tw_write_frame(const uint8_t *payload, uint8_t length, uint8_t frame[TW_MAX_FRAME])
+uint8_t tw_write_frame(uint8_t frame[TW_MAX_FRAME], uint8_t length)
 {
     if (length == 0u || length > TW_MAX_PAYLOAD) {
         return 0;
     }
-    const uint32_t check = tw_crc32c(payload, length);
+    tw_put32(frame + 1 + length, tw_crc32c(frame + 1, length));
+    const uint8_t end = (uint8_t)(1u + length + CHECK_BYTES);
     uint8_t code_at = 0;
-    uint8_t written = 1;
-    for (uint8_t at = 0; at < length + CHECK_BYTES; at++) {
-        const uint8_t byte =
-            at < length ? payload[at] : (uint8_t)(check >> (8u * (uint32_t)(at - length)));
-        if (byte == 0u) {
-            frame[code_at] = (uint8_t)(written - code_at);
-            code_at = written++;
-        } else {
-            frame[written++] = byte;
+    for (uint8_t at = 1; at < end; at++) {
+        if (frame[at] == 0u) {
+            frame[code_at] = (uint8_t)(at - code_at);
+            code_at = at;
         }
     }
-    frame[code_at] = (uint8_t)(written - code_at);
-    frame[written++] = 0u;
-    return written;
+    frame[code_at] = (uint8_t)(end - code_at);
+    frame[end] = 0u;
+    return (uint8_t)(end + 1u);
 }

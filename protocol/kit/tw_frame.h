@@ -22,7 +22,8 @@ typedef enum {
     TW_TOO_SHORT
 } tw_found;
 
-/* A reader of one stream. Zero it before use; that is also how it forgets a piece begun. */
+/* A reader of one stream. Zero it before use; that is also how it forgets a piece begun. A whole
+ * payload stands at the start of held, until the next byte is read. */
 typedef struct {
     uint8_t held[TW_MAX_STUFFED];
     uint8_t length;
@@ -32,12 +33,12 @@ typedef struct {
 /* CRC-32C (RFC 3720 section 12.1) of some bytes. */
 uint32_t tw_crc32c(const uint8_t *data, uint8_t length);
 
-/* Take one byte. Where TW_PAYLOAD is returned, payload and *length hold it. */
-tw_found tw_read_byte(tw_reader *reader, uint8_t byte, uint8_t payload[TW_MAX_STUFFED],
-                      uint8_t *length);
+/* Take one byte. Where TW_PAYLOAD is returned, reader->held and *length hold it: it is unstuffed
+ * where it stands, so that one buffer serves. */
+tw_found tw_read_byte(tw_reader *reader, uint8_t byte, uint8_t *length);
 
-/* Make the frame of a payload of 1 to TW_MAX_PAYLOAD bytes, delimiter included; returns its
- * length, 0 where the payload has none of these lengths. */
-uint8_t tw_write_frame(const uint8_t *payload, uint8_t length, uint8_t frame[TW_MAX_FRAME]);
+/* Make a frame where it stands: a payload of 1 to TW_MAX_PAYLOAD bytes lies at frame + 1. Returns
+ * the frame's length, delimiter included; 0 where the payload has none of these lengths. */
+uint8_t tw_write_frame(uint8_t frame[TW_MAX_FRAME], uint8_t length);
 
 #endif

@@ -2,34 +2,13 @@
 
 #include <string.h>
 
-/* Offsets in a payload, from WIRE.md. */
+/* Query, Answer and Facts name their command as the commands themselves do; by one name here. */
 enum {
-    AT_VERSION = 0,
-    AT_CODE = 1,
-    AT_DESTINATION = 2,
-    AT_SOURCE = 4,
-    AT_EPOCH = 6,
-    AT_BOOT = 10,
-    AT_NUMBER = 14,
-    AT_IDENTITY_BITS = 16,
-    AT_REST = 16,
-    AT_STATE = 16,
-    AT_REASON = 17,
-    AT_EXPECT_MS = 18,
-    ENVELOPE_END = 18,
-    QUERY_BYTES = 16,
-    ANSWER_BYTES = 20
+    AT_EPOCH = TW_AT_ANSWER_EPOCH,
+    AT_BOOT = TW_AT_ANSWER_BOOT,
+    AT_NUMBER = TW_AT_ANSWER_NUMBER,
+    AT_REST = TW_AT_ANSWER_STATE
 };
-
-static uint16_t get16(const uint8_t *at)
-{
-    return (uint16_t)(at[0] | (uint16_t)(at[1] << 8));
-}
-
-static uint32_t get32(const uint8_t *at)
-{
-    return (uint32_t)get16(at) | (uint32_t)get16(at + 2) << 16;
-}
 
 /* RFC 1982 section 3.2 with 16 bits; exactly half the space apart, neither is newer. */
 static uint8_t is_newer(uint16_t number, uint16_t than)
@@ -43,14 +22,15 @@ static uint8_t has_passed(const tw_memory *memory, uint16_t number)
     return memory->any && !is_newer(number, memory->newest);
 }
 
-static const tw_reply *find(const tw_memory *memory, uint16_t number)
+/* Where the reply to a number is; TW_REPLIES where it is not. */
+static uint8_t find(const tw_memory *memory, uint16_t number)
 {
-    for (uint8_t place = 0; place < TW_REPLIES; place++) {
-        if (memory->replies[place].length > 0u && memory->replies[place].number == number) {
-            return &memory->replies[place];
-        }
+    uint8_t place = 0;
+    while (place < TW_REPLIES &&
+           (memory->replies[place].code == 0u || memory->replies[place].number != number)) {
+        place++;
     }
-    return NULL;
+    return place;
 }
 
 /* Make a number the newest; drop replies that are now more than half the space behind, lest they
@@ -61,12 +41,12 @@ static void take(tw_memory *memory, uint16_t number)
     memory->any = 1;
     for (uint8_t place = 0; place < TW_REPLIES; place++) {
         if (!is_newer(number, memory->replies[place].number)) {
-            memory->replies[place].length = 0;
+            memory->replies[place].code = 0;
         }
     }
 }
 
-uint8_t tw_memory_roll_call(tw_memory *memory, uint32_t epoch)
+uint8_t tw_memory_adopt(tw_memory *memory, uint32_t epoch)
 {
     if (epoch <= memory->epoch) {
         return 0;
@@ -77,113 +57,120 @@ uint8_t tw_memory_roll_call(tw_memory *memory, uint32_t epoch)
     return 1;
 }
 
-/* Header of a reply to payload, and the epoch, boot and number as they came in it. */
-static void begin_reply(const uint8_t *payload, uint8_t code, uint8_t *reply)
+uint8_t tw_end_answer(uint8_t *reply, uint8_t state, uint8_t reason, uint16_t expect_ms)
 {
-    reply[AT_VERSION] = 1u;
-    reply[AT_CODE] = code;
-    memcpy(reply + AT_DESTINATION, payload + AT_SOURCE, 2);
-    memcpy(reply + AT_SOURCE, payload + AT_DESTINATION, 2);
+    reply[TW_AT_CODE] = TW_CODE_ANSWER;
+    reply[TW_AT_ANSWER_STATE] = state;
+    reply[TW_AT_ANSWER_REASON] = reason;
+    tw_put16(reply + TW_AT_ANSWER_EXPECT_MS, expect_ms);
+    return TW_LEN_ANSWER;
+}
+
+/* Header of a reply to payload, and the epoch, boot and number as they came in it. */
+static void begin_reply(const uint8_t *payload, uint8_t *reply)
+{
+    reply[TW_AT_VERSION] = TW_WIRE_VERSION;
+    memcpy(reply + TW_AT_DESTINATION, payload + TW_AT_SOURCE, 2);
+    memcpy(reply + TW_AT_SOURCE, payload + TW_AT_DESTINATION, 2);
     memcpy(reply + AT_EPOCH, payload + AT_EPOCH, AT_REST - AT_EPOCH);
 }
 
-uint8_t tw_write_answer(const uint8_t *payload, tw_state state, tw_reason reason,
-                        uint16_t expect_ms, uint8_t reply[TW_REPLY_BYTES])
+/* What is wrong with boot or epoch, which commands and queries have alike. */
+static uint8_t name_fault(const tw_memory *memory, const uint8_t *payload)
 {
-    begin_reply(payload, TW_ANSWER, reply);
-    reply[AT_STATE] = (uint8_t)state;
-    reply[AT_REASON] = (uint8_t)reason;
-    reply[AT_EXPECT_MS] = (uint8_t)expect_ms;
-    reply[AT_EXPECT_MS + 1] = (uint8_t)(expect_ms >> 8);
-    return ANSWER_BYTES;
-}
-
-static tw_reason envelope_fault(const tw_memory *memory, const uint8_t *payload)
-{
-    if (get16(payload + AT_IDENTITY_BITS) != memory->identity_bits) {
-        return TW_REASON_OTHER_IDENTITY;
-    }
-    if (get32(payload + AT_BOOT) != memory->boot) {
+    if (tw_get32(payload + AT_BOOT) != memory->boot) {
         return TW_REASON_OTHER_BOOT;
     }
-    if (get32(payload + AT_EPOCH) != memory->epoch) {
-        return TW_REASON_OTHER_EPOCH;
-    }
-    return get16(payload + AT_NUMBER) == 0u ? TW_REASON_BAD_FIELD : TW_REASON_NONE;
+    return tw_get32(payload + AT_EPOCH) != memory->epoch ? TW_REASON_OTHER_EPOCH : TW_REASON_NONE;
 }
 
-static uint8_t again(const uint8_t *payload, const tw_reply *remembered, uint8_t *reply)
+static uint8_t envelope_fault(const tw_memory *memory, const uint8_t *payload, uint8_t owned)
 {
-    begin_reply(payload, remembered->code, reply);
-    memcpy(reply + AT_REST, remembered->rest, remembered->length);
-    return (uint8_t)(AT_REST + remembered->length);
+    if (tw_get16(payload + TW_AT_REST_IDENTITY_BITS) != memory->identity_bits) {
+        return TW_REASON_OTHER_IDENTITY;
+    }
+    const uint8_t fault = name_fault(memory, payload);
+    if (fault == TW_REASON_OTHER_EPOCH && owned) {
+        return TW_REASON_OWNED;
+    }
+    if (fault == TW_REASON_NONE && tw_get16(payload + AT_NUMBER) == 0u) {
+        return TW_REASON_BAD_FIELD;
+    }
+    return fault;
 }
 
-uint8_t tw_memory_judge(tw_memory *memory, const uint8_t *payload, uint8_t payload_length,
-                        uint8_t reply[TW_REPLY_BYTES], uint8_t *length)
+/* The reply at a place once more; begin_reply has been. */
+static uint8_t again(const tw_reply *remembered, uint8_t *reply)
 {
-    *length = 0;
-    if (payload_length < ENVELOPE_END) {
-        return 0;
-    }
-    const uint16_t number = get16(payload + AT_NUMBER);
-    tw_reason reason = envelope_fault(memory, payload);
-    const tw_reply *remembered = reason == TW_REASON_NONE ? find(memory, number) : NULL;
-    if (remembered != NULL) {
-        *length = again(payload, remembered, reply);
-        return 0;
-    }
-    if (reason == TW_REASON_NONE && has_passed(memory, number)) {
-        reason = TW_REASON_NUMBER_PASSED;
-    }
-    if (reason != TW_REASON_NONE) {
-        *length = tw_write_answer(payload, TW_STATE_REFUSED, reason, 0, reply);
-        return 0;
-    }
-    take(memory, number);
-    return 1;
+    const uint8_t length =
+        remembered->code == TW_CODE_FACTS ? TW_LEN_FACTS : (uint8_t)TW_LEN_ANSWER;
+    reply[TW_AT_CODE] = remembered->code;
+    memcpy(reply + AT_REST, remembered->rest, (size_t)(length - AT_REST));
+    return length;
 }
 
-uint8_t tw_memory_query(tw_memory *memory, const uint8_t *payload, uint8_t payload_length,
+uint8_t tw_memory_judge(tw_memory *memory, const uint8_t *payload, uint8_t owned,
                         uint8_t reply[TW_REPLY_BYTES])
 {
-    if (payload_length < QUERY_BYTES) {
-        return 0;
+    const uint16_t number = tw_get16(payload + AT_NUMBER);
+    uint8_t reason = envelope_fault(memory, payload, owned);
+    begin_reply(payload, reply);
+    if (reason == TW_REASON_NONE) {
+        const uint8_t place = find(memory, number);
+        if (place < TW_REPLIES) {
+            return again(&memory->replies[place], reply);
+        }
+        if (!has_passed(memory, number)) {
+            take(memory, number);
+            return 0;
+        }
+        reason = TW_REASON_NUMBER_PASSED;
     }
-    const uint16_t number = get16(payload + AT_NUMBER);
-    if (get32(payload + AT_BOOT) != memory->boot) {
-        return tw_write_answer(payload, TW_STATE_UNKNOWN, TW_REASON_OTHER_BOOT, 0, reply);
-    }
-    if (get32(payload + AT_EPOCH) != memory->epoch) {
-        return tw_write_answer(payload, TW_STATE_UNKNOWN, TW_REASON_OTHER_EPOCH, 0, reply);
-    }
-    const tw_reply *remembered = find(memory, number);
-    if (remembered != NULL) {
-        return again(payload, remembered, reply);
-    }
-    if (number != 0u && !has_passed(memory, number)) {
-        take(memory, number); /* so that "unknown" is final */
-    }
-    return tw_write_answer(payload, TW_STATE_UNKNOWN, TW_REASON_NONE, 0, reply);
+    return tw_end_answer(reply, TW_STATE_REFUSED, reason, 0);
 }
 
-void tw_memory_remember(tw_memory *memory, uint16_t number, const uint8_t *reply, uint8_t length)
+uint8_t tw_memory_query(tw_memory *memory, const uint8_t *payload, uint8_t reply[TW_REPLY_BYTES])
 {
-    if (length <= AT_REST || length > TW_REPLY_BYTES || !has_passed(memory, number) ||
-        get32(reply + AT_EPOCH) != memory->epoch || get32(reply + AT_BOOT) != memory->boot) {
+    const uint16_t number = tw_get16(payload + AT_NUMBER);
+    const uint8_t reason = name_fault(memory, payload);
+    begin_reply(payload, reply);
+    if (reason == TW_REASON_NONE) {
+        const uint8_t place = find(memory, number);
+        if (place < TW_REPLIES) {
+            return again(&memory->replies[place], reply);
+        }
+        if (number != 0u && !has_passed(memory, number)) {
+            take(memory, number); /* so that "unknown" is final */
+        }
+    }
+    return tw_end_answer(reply, TW_STATE_UNKNOWN, reason, 0);
+}
+
+void tw_memory_remember(tw_memory *memory, const uint8_t *reply)
+{
+    const uint16_t number = tw_get16(reply + AT_NUMBER);
+    if (!has_passed(memory, number) || name_fault(memory, reply) != TW_REASON_NONE) {
         return;
     }
-    uint8_t place = 0;
-    while (place < TW_REPLIES &&
-           (memory->replies[place].length == 0u || memory->replies[place].number != number)) {
-        place++;
-    }
+    uint8_t place = find(memory, number);
     if (place == TW_REPLIES) { /* a new one: the oldest goes */
         place = memory->next;
         memory->next = (uint8_t)((memory->next + 1u) % TW_REPLIES);
     }
-    memcpy(memory->replies[place].rest, reply + AT_REST, (size_t)(length - AT_REST));
-    memory->replies[place].length = (uint8_t)(length - AT_REST);
-    memory->replies[place].code = reply[AT_CODE];
-    memory->replies[place].number = number;
+    tw_reply *kept = &memory->replies[place];
+    kept->number = number;
+    kept->code = reply[TW_AT_CODE];
+    memcpy(kept->rest, reply + AT_REST,
+           (size_t)((kept->code == TW_CODE_FACTS ? TW_LEN_FACTS : TW_LEN_ANSWER) - AT_REST));
+}
+
+uint16_t tw_memory_accepted(const tw_memory *memory)
+{
+    for (uint8_t at = 0; at < TW_REPLIES; at++) {
+        const tw_reply *reply = &memory->replies[(memory->next + at) % TW_REPLIES];
+        if (reply->code == TW_CODE_ANSWER && reply->rest[0] == TW_STATE_ACCEPTED) {
+            return reply->number;
+        }
+    }
+    return 0;
 }

@@ -1,36 +1,28 @@
 /* The seal: HMAC-SHA-256 cut to 8 bytes, counters, the replay window, and freshness after a start
  * (WIRE.md, "Seal").
  *
- * Owns keys in the caller's memory and what is remembered of one sender, the console. The rule for
- * power loss is the caller's to keep: store a new boot number before the first frame of that boot.
+ * Owns the tag and what is remembered of the console that is followed. Keys are in the caller's
+ * memory. The rule for power loss is kept by tw_store: a new boot number is stored before the
+ * first frame of that boot.
  */
 #ifndef TW_SEAL_H
 #define TW_SEAL_H
 
 #include <stdint.h>
 
+#include "tw_message.h"
+
 #define TW_KEY_BYTES 32u
 #define TW_SLOTS 8u
 #define TW_TAG_BYTES 8u
 #define TW_SEAL_BYTES 16u
-#define TW_HEADER_BYTES 6u
-#define TW_MAX_UNSEALED 42u
+#define TW_MAX_SEALED (TW_MAX_UNSEALED + 16)
+#define TW_MAX_COVERED (TW_MAX_UNSEALED + 8)
 
-/* SHA-256 (FIPS 180-4) as a running sum. */
-typedef struct {
-    uint32_t state[8];
-    uint8_t block[64];
-    uint8_t filled;
-    uint32_t blocks;
-} tw_sha256;
-
-void tw_sha256_begin(tw_sha256 *sum);
-void tw_sha256_add(tw_sha256 *sum, const uint8_t *data, uint8_t length);
-void tw_sha256_end(tw_sha256 *sum, uint8_t digest[32]);
-
-/* The tag over some bytes: the first 8 bytes of HMAC-SHA-256 (RFC 2104). */
-void tw_tag(const uint8_t key[TW_KEY_BYTES], const uint8_t *covered, uint8_t length,
-            uint8_t tag[TW_TAG_BYTES]);
+/* The tag over at most TW_MAX_COVERED bytes: the first 8 bytes of HMAC-SHA-256 (RFC 2104, FIPS 180-4), laid by
+ * exclusive or upon the 8 bytes behind them. Zeros become the tag; the right tag becomes zeros.
+ * Returns 0 where it did, and takes the same time wherever it did not. */
+uint8_t tw_tag(const uint8_t key[TW_KEY_BYTES], uint8_t *covered, uint8_t length);
 
 /* Keys by slot; keys[slot] may be NULL. */
 typedef struct {
@@ -47,35 +39,40 @@ typedef enum {
     TW_FORGED,
     TW_REPEATED,
     TW_TOO_OLD,
-    TW_NOT_FRESH
+    TW_NOT_FRESH,
+    TW_OTHER_OPENING,
+    TW_NO_MESSAGE
 } tw_verdict;
 
-/* The module's gate for what comes from the console. Zero it, set boot, at each start. */
-typedef struct {
-    uint32_t boot;
-    uint64_t edge;
-    uint64_t seen; /* bit n: edge - n was seen */
-    uint8_t proven; /* 1: the console has shown that it knows this boot */
-} tw_gate;
-
-/* The module's own counters. opening is the boot number. */
+/* A counter: its sender's opening, and its count. A module's own opening is its boot number. */
 typedef struct {
     uint32_t opening;
     uint32_t count;
 } tw_counter;
 
-/* Check a seal. On TW_OBEYED plain and *plain_length hold the unsealed payload, *counter its
- * counter; nothing is said of its being new. Takes the same time wherever a tag differs. */
-tw_verdict tw_open(const tw_keys *keys, const uint8_t *payload, uint8_t length,
-                   uint8_t plain[TW_MAX_UNSEALED], uint8_t *plain_length, uint64_t *counter);
+/* The module's gate for what comes from the console. Zero it, set boot, at each start. The window
+ * is that of one opening, the epoch followed, so it keeps the lower half of counters only. */
+typedef struct {
+    uint32_t boot;
+    uint32_t epoch;
+    uint32_t edge;
+    uint8_t proven; /* 1: the console has shown that it knows this boot */
+    uint64_t seen;  /* bit n: edge - n was seen */
+} tw_gate;
 
-/* Check a seal and say whether the payload is obeyed now. */
-tw_verdict tw_gate_admit(tw_gate *gate, const tw_keys *keys, const uint8_t *payload,
-                         uint8_t length, uint8_t plain[TW_MAX_UNSEALED], uint8_t *plain_length);
+/* The module follows this epoch from now on; another one than before must prove itself. */
+void tw_gate_follow(tw_gate *gate, uint32_t epoch);
 
-/* Seal a payload of at most TW_MAX_UNSEALED bytes. Returns the length, 0 where it cannot be: too
- * long, no key in the sending slot, or the opening's counters are used up. */
-uint8_t tw_seal(const tw_keys *keys, tw_counter *counter, const uint8_t *payload, uint8_t length,
-                uint8_t sealed[TW_MAX_UNSEALED + TW_SEAL_BYTES]);
+/* Check a seal and take it off, where the payload stands. On TW_OBEYED *length is that of the
+ * unsealed payload, and its counter stands behind it; nothing is said of its being new. */
+tw_verdict tw_open(const tw_keys *keys, uint8_t *payload, uint8_t *length);
+
+/* Check a seal, take it off, and say whether the payload is a request that is obeyed now. */
+tw_verdict tw_gate_admit(tw_gate *gate, const tw_keys *keys, uint8_t *payload, uint8_t *length);
+
+/* Seal a payload of at most TW_MAX_UNSEALED bytes where it stands; there are 16 bytes of room
+ * behind it. Returns the length, 0 where it cannot be: too long, no key in the sending slot, or
+ * the opening's counters are used up. */
+uint8_t tw_seal(const tw_keys *keys, tw_counter *counter, uint8_t *payload, uint8_t length);
 
 #endif

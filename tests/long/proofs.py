@@ -27,7 +27,8 @@ class Proof(NamedTuple):
 
 
 def exchange_piece(seed: int, size: int) -> Figures:
-    """Law 1 between an exchange and command memories, over fair and foul air in turn."""
+    """Law 1 between two consoles' exchanges and modules that follow one of them, over fair and foul
+    air in turn."""
     world = World(seed, FOUL if seed % 2 else FAIR).run(size)
     wrong = [*world.breaches(), *map(str, world.false_refusals())]
     for each in wrong:
@@ -38,6 +39,9 @@ def exchange_piece(seed: int, size: int) -> Figures:
         "carried_out": sum(world.deeds.carried_out.values()),
         "restarts": world.deeds.restarts,
         "repeats": world.deeds.repeats,
+        "console_restarts": world.console_restarts,
+        "takeovers": world.deeds.takeovers,
+        "permits_lapsed": world.deeds.lapses,
         "breaches": len(wrong),
         **endings,
     }

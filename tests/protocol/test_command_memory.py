@@ -6,6 +6,7 @@ from hypothesis import strategies as st
 
 from protocol.codes import AnswerState, Reason
 from protocol.command_memory import (
+    REMEMBERED_REPLIES,
     CommandMemory,
     Fresh,
     Reply,
@@ -13,7 +14,21 @@ from protocol.command_memory import (
     next_number,
 )
 from protocol.errors import LocalProtocolError
-from protocol.message import Answer, Command, Facts, Flash, Pivot, Query, Rest, Spin
+from protocol.message import (
+    Answer,
+    Command,
+    Facts,
+    Flash,
+    Hop,
+    LockOut,
+    Pivot,
+    Query,
+    Rest,
+    SettingWrite,
+    Spin,
+    Twist,
+    Unlock,
+)
 
 STEADY = settings(derandomize=True, deadline=None)
 """The same examples each time, and no deadline on a busy machine."""
@@ -24,7 +39,7 @@ BITS = 0xBEEF
 
 def memory(capacity: int = 16) -> CommandMemory:
     made = CommandMemory(BOOT, IDENTITY, capacity)
-    assert made.roll_call(EPOCH)
+    assert made.adopt(EPOCH)
     return made
 
 
@@ -37,7 +52,8 @@ def query(number: int, epoch: int = EPOCH, boot: int = BOOT) -> Query:
 
 
 def facts(number: int, epoch: int = EPOCH) -> Facts:
-    return Facts(epoch, BOOT, number, Reason.NONE, 1, 2, 1, 900, 950, 300, 4000, 9000, 800, 400, 90)
+    measured = (1, 2, 1, 900, 950, 300, 4000, 9000, 800, 400, 90, 60_000)
+    return Facts(epoch, BOOT, number, Reason.NONE, *measured)
 
 
 def carry_out(at: CommandMemory, number: int) -> Answer:
@@ -95,13 +111,18 @@ def test_a_first_command_is_fresh_whatever_its_number() -> None:
 @pytest.mark.parametrize(
     "command",
     [
-        Pivot(EPOCH, BOOT, 3, BITS, 1, -1, 4700),
-        Spin(EPOCH, BOOT, 3, BITS, -2000, 500),
+        Pivot(EPOCH, BOOT, 3, BITS, 9000, 0, 1, -1, 4700),
+        Hop(EPOCH, BOOT, 3, BITS, 9000, 2, -1, 4700),
+        Twist(EPOCH, BOOT, 3, BITS, 9000, 0, 1, 4700),
+        Spin(EPOCH, BOOT, 3, BITS, 9000, -2000, 500),
         Rest(EPOCH, BOOT, 3, BITS),
         Flash(EPOCH, BOOT, 3, BITS, 1000),
+        LockOut(EPOCH, BOOT, 3, BITS, b"Ada"),
+        Unlock(EPOCH, BOOT, 3, BITS, b"Ada"),
+        SettingWrite(EPOCH, BOOT, 3, BITS, 1, 7000),
     ],
 )
-def test_all_four_commands_are_judged_alike(command: Command) -> None:
+def test_all_commands_are_judged_alike(command: Command) -> None:
     at = memory()
     assert at.judge(command) == Fresh()
     reply = at.answer(3, AnswerState.ACCEPTED, expect_ms=900)
@@ -164,6 +185,42 @@ def test_a_number_is_taken_by_the_judgement_itself() -> None:
     assert at.judge(rest(7)) == refusal(Reason.NUMBER_PASSED, 7)
 
 
+OWNED_CASES = [
+    # Only what would be OTHER_EPOCH becomes OWNED; what is wrong before it is told as ever.
+    (rest(5, epoch=999), refusal(Reason.OWNED, 5, epoch=999)),
+    (rest(5, epoch=1001), refusal(Reason.OWNED, 5, epoch=1001)),
+    (rest(0, epoch=999), refusal(Reason.OWNED, 0, epoch=999)),
+    (rest(5, 999, 76), refusal(Reason.OTHER_BOOT, 5, 999, 76)),
+    (rest(5, 999, 77, 0), refusal(Reason.OTHER_IDENTITY, 5, 999)),
+    (rest(0), refusal(Reason.BAD_FIELD, 0)),
+]
+
+
+@pytest.mark.parametrize(("command", "expected"), OWNED_CASES)
+def test_an_owned_module_says_so_to_another_epoch(command: Rest, expected: Reply) -> None:
+    at = memory()
+    assert at.judge(command, owned=True) == expected
+    assert at.judge(rest(4), owned=True) == Fresh()
+
+
+def test_its_owner_is_served_as_if_it_were_alone() -> None:
+    at = memory()
+    assert at.judge(rest(5), owned=True) == Fresh()
+    reply = at.answer(5, AnswerState.FINISHED)
+    at.remember(5, reply)
+    assert at.judge(rest(5), owned=True) == Reply(reply, repeat=True)
+    assert at.judge(rest(4), owned=True) == refusal(Reason.NUMBER_PASSED, 4)
+
+
+def test_eight_replies_are_kept_where_nothing_else_is_said() -> None:
+    assert REMEMBERED_REPLIES == 8
+    at = CommandMemory(BOOT, IDENTITY)
+    at.adopt(EPOCH)
+    replies = [carry_out(at, number) for number in range(1, 10)]
+    assert at.judge(rest(1)) == refusal(Reason.NUMBER_PASSED, 1)
+    assert [at.judge(rest(n)) for n in range(2, 10)] == [Reply(r, True) for r in replies[1:]]
+
+
 @pytest.mark.parametrize("capacity", [1, 2, 16])
 def test_evicting_a_reply_never_makes_its_number_fresh(capacity: int) -> None:
     at = memory(capacity)
@@ -218,6 +275,15 @@ def test_unknown_is_final() -> None:
     assert at.judge(rest(7)) == Fresh()
 
 
+def test_before_any_epoch_nothing_is_taken_of_epoch_zero_either() -> None:
+    at = CommandMemory(BOOT, IDENTITY)
+    assert at.judge(rest(5, epoch=0)) == refusal(Reason.OTHER_EPOCH, 5, epoch=0)
+    unknown = Answer(0, BOOT, 5, AnswerState.UNKNOWN, Reason.OTHER_EPOCH, 0)
+    assert at.query(query(5, epoch=0)) == unknown
+    at.adopt(EPOCH)
+    assert at.judge(rest(5)) == Fresh()
+
+
 def test_a_query_for_another_boot_or_epoch_or_number_zero_takes_no_number() -> None:
     at = memory()
     for asked in (query(9, boot=76), query(9, epoch=999), query(0)):
@@ -228,9 +294,9 @@ def test_a_query_for_another_boot_or_epoch_or_number_zero_takes_no_number() -> N
 def test_only_a_newer_epoch_is_adopted_and_empties_the_memory() -> None:
     at = memory()
     carry_out(at, 5)
-    assert [at.roll_call(epoch) for epoch in (EPOCH, EPOCH - 1, 0)] == [False] * 3
+    assert [at.adopt(epoch) for epoch in (EPOCH, EPOCH - 1, 0)] == [False] * 3
     assert isinstance(at.judge(rest(5)), Reply)
-    assert at.roll_call(EPOCH + 1)
+    assert at.adopt(EPOCH + 1)
     assert at.epoch == EPOCH + 1
     assert at.judge(rest(5, EPOCH + 1)) == Fresh()
     assert at.judge(rest(5)) == refusal(Reason.OTHER_EPOCH, 5)
@@ -239,7 +305,7 @@ def test_only_a_newer_epoch_is_adopted_and_empties_the_memory() -> None:
 def test_facts_of_the_epoch_before_do_not_pass_for_a_reply_in_the_new_one() -> None:
     at = memory()
     carry_out(at, 5)
-    at.roll_call(EPOCH + 1)
+    at.adopt(EPOCH + 1)
     at.remember(5, facts(5))
     at.remember(5, facts(5, EPOCH + 1))  # never taken in this epoch
     assert at.judge(rest(5, EPOCH + 1)) == Fresh()

@@ -1,24 +1,31 @@
 """The console's side of "at most once": each phase, each way to an end, each timer."""
 
+from collections.abc import Callable
+
 import pytest
 
 from protocol.codes import EVERYONE_ADDRESS, AnswerState, Reason
 from protocol.command_phases import TRANSITIONS, Act, Event, Phase, event_of
 from protocol.errors import LocalProtocolError
-from protocol.exchange import CommandExchange, Ended, Ending, ResendPolicy, Send
+from protocol.exchange import CommandExchange, Ended, Ending, Send
 from protocol.message import (
     Answer,
     Command,
     Facts,
+    LockOut,
     Message,
     Pivot,
     Presence,
     Query,
     Rest,
+    SettingWrite,
+    Spin,
     Stop,
     Stopped,
     Telemetry,
+    Unlock,
 )
+from protocol.resend import ResendPolicy
 
 MS = 1_000_000
 BIRCH, ELM = 0x10, 0x11
@@ -27,11 +34,26 @@ POLICY = ResendPolicy(tries=4)
 
 
 def pivot(number: int, boot: int = BOOT) -> Pivot:
-    return Pivot(EPOCH, boot, number, BITS, 1, 1, 4700)
+    return Pivot(EPOCH, boot, number, BITS, 9000, 0, 1, 1, 4700)
 
 
 def rest(number: int) -> Rest:
     return Rest(EPOCH, BOOT, number, BITS)
+
+
+def lock_out(number: int) -> LockOut:
+    return LockOut(EPOCH, BOOT, number, BITS, b"Ada")
+
+
+def unlock(number: int) -> Unlock:
+    return Unlock(EPOCH, BOOT, number, BITS, b"Ada")
+
+
+def setting_write(number: int) -> SettingWrite:
+    return SettingWrite(EPOCH, BOOT, number, BITS, 1, 7000)
+
+
+AT_ONCE = (lock_out, unlock, setting_write)
 
 
 def answer(
@@ -41,7 +63,8 @@ def answer(
 
 
 def facts(number: int, reason: Reason = Reason.NONE) -> Facts:
-    return Facts(EPOCH, BOOT, number, reason, 1, 2, 1, 900, 950, 300, 4000, 9000, 800, 400, 90)
+    measured = (1, 2, 1, 900, 950, 300, 4000, 9000, 800, 400, 90, 60_000)
+    return Facts(EPOCH, BOOT, number, reason, *measured)
 
 
 def telemetry(boot: int, bits: int = BITS) -> Telemetry:
@@ -141,6 +164,7 @@ ENDS: list[tuple[str, Message, Ending | None]] = [
     ("calling", answer(1, AnswerState.REFUSED, Reason.NUMBER_PASSED), Ending.REFUSED),
     ("calling", answer(1, AnswerState.REFUSED, Reason.OTHER_BOOT), Ending.REFUSED),
     ("calling", answer(1, AnswerState.REFUSED, Reason.OTHER_EPOCH), Ending.REFUSED),
+    ("calling", answer(1, AnswerState.REFUSED, Reason.OWNED), Ending.REFUSED),
     ("calling", UNKNOWN, None),
     ("running", facts(1), Ending.FINISHED),
     ("running", facts(1, Reason.RESTED), Ending.CUT),
@@ -148,6 +172,7 @@ ENDS: list[tuple[str, Message, Ending | None]] = [
     ("running", answer(1, AnswerState.CUT, Reason.RESTED), Ending.CUT),
     ("running", answer(1, AnswerState.REFUSED, Reason.OTHER_BOOT), Ending.UNSEEN),
     ("running", answer(1, AnswerState.REFUSED, Reason.OTHER_EPOCH), Ending.UNSEEN),
+    ("running", answer(1, AnswerState.REFUSED, Reason.OWNED), Ending.UNSEEN),
     ("running", answer(1, AnswerState.REFUSED, Reason.NUMBER_PASSED), Ending.UNSEEN),
     # Another box with the same address; ours has accepted.
     ("running", answer(1, AnswerState.REFUSED, Reason.OTHER_IDENTITY), None),
@@ -157,9 +182,11 @@ ENDS: list[tuple[str, Message, Ending | None]] = [
     ("asking", answer(1, AnswerState.FINISHED), Ending.FINISHED),
     ("asking", UNKNOWN, Ending.UNSEEN),
     ("asking", answer(1, AnswerState.UNKNOWN, Reason.OTHER_BOOT), Ending.UNSEEN),
+    ("asking", answer(1, AnswerState.REFUSED, Reason.OWNED), Ending.UNSEEN),
     ("asking", answer(1, AnswerState.REFUSED, Reason.NUMBER_PASSED), Ending.UNSEEN),
     ("recalled", UNKNOWN, Ending.CUT),
     ("recalled", answer(1, AnswerState.UNKNOWN, Reason.OTHER_BOOT), Ending.UNSEEN),
+    ("recalled", answer(1, AnswerState.REFUSED, Reason.OWNED), Ending.UNSEEN),
     ("recalled", answer(1, AnswerState.REFUSED, Reason.NUMBER_PASSED), Ending.REFUSED),
     ("recalled", facts(1), Ending.FINISHED),
     ("recalled", facts(1, Reason.STOPPED), Ending.CUT),
@@ -254,7 +281,7 @@ def test_a_repeated_acceptance_does_not_move_the_timer() -> None:
 
 def test_a_refusal_for_another_boot_after_a_resend_leaves_it_unseen() -> None:
     """The boot before may have taken the first copy, and told so in an answer that was lost."""
-    for reason in (Reason.OTHER_BOOT, Reason.OTHER_EPOCH):
+    for reason in (Reason.OTHER_BOOT, Reason.OTHER_EPOCH, Reason.OWNED):
         desk = calling()
         desk.wake()
         assert desk.hear(answer(1, AnswerState.REFUSED, reason)) == [Ended(0, Ending.UNSEEN)]
@@ -329,10 +356,11 @@ def test_six_sends_in_vain_put_the_estimate_in_doubt() -> None:
     assert waits_ms == [30, 30, 30, 30, 30, 30, 250, 250]
 
 
-def test_a_rest_that_is_finished_at_once_measures_the_round_trip() -> None:
+@pytest.mark.parametrize("make", [*AT_ONCE, rest])
+def test_what_is_finished_at_once_measures_the_round_trip(make: Callable[[int], Command]) -> None:
     desk = Desk()
     exchange_one(desk, 1, 40)
-    desk.submit(2, rest(2))
+    desk.submit(2, make(2))
     desk.hear(answer(2, AnswerState.FINISHED), after_ms=40)
     # By hand, RFC 6298 section 2.3: RTTVAR 20 -> 15, SRTT 40; timeout 40 + 4 * 15.
     assert timeout_ms(desk, 3) == 100
@@ -369,11 +397,28 @@ def test_those_that_wait_keep_their_order() -> None:
     assert order == [2, 3, 4]
 
 
-def test_rest_waits_for_nothing() -> None:
+@pytest.mark.parametrize("make", [rest, lock_out])
+def test_rest_and_lock_out_wait_for_nothing(make: Callable[[int], Command]) -> None:
     desk = calling()
     desk.submit(1, pivot(2))
-    assert desk.submit(2, rest(3)) == [Send(2, BIRCH, rest(3), 1)]
-    assert desk.submit(3, rest(4)) == [Send(3, BIRCH, rest(4), 1)]
+    assert desk.submit(2, make(3)) == [Send(2, BIRCH, make(3), 1)]
+    assert desk.submit(3, make(4)) == [Send(3, BIRCH, make(4), 1)]
+
+
+@pytest.mark.parametrize("make", [unlock, setting_write, pivot])
+def test_whatever_takes_no_danger_away_waits(make: Callable[[int], Command]) -> None:
+    desk = calling()
+    assert desk.submit(1, make(2)) == []
+    assert desk.hear(facts(1))[1:] == [Send(1, BIRCH, make(2), 1)]
+
+
+def test_a_spin_that_is_finished_in_place_of_a_lost_acceptance_measures_nothing() -> None:
+    """It is told when the spin ends, not when the command arrives."""
+    desk = Desk()
+    exchange_one(desk, 1, 40)
+    desk.submit(2, Spin(EPOCH, BOOT, 2, BITS, 9000, 3000, 500))
+    desk.hear(answer(2, AnswerState.FINISHED), after_ms=100)
+    assert timeout_ms(desk, 3) == 120
 
 
 def test_what_waits_comes_after_the_rest_as_well() -> None:
@@ -447,7 +492,7 @@ def test_after_withdrawing_new_commands_are_taken() -> None:
 @pytest.mark.parametrize("phase", IN_HAND)
 @pytest.mark.parametrize(
     "word",
-    [telemetry(78), Presence(0x8000_0000_0012_BEEF, 78, 0, 0, 0, 1, 0)],
+    [telemetry(78), Presence(0x8000_0000_0012_BEEF, 78, 0, 0, 0, 1, 0, 0, 1)],
     ids=["telemetry", "presence"],
 )
 def test_another_boot_ends_what_was_meant_for_the_old_one(phase: str, word: Message) -> None:

@@ -1,11 +1,13 @@
 """Layouts and packing: each message there and back, bytes worked by hand, bad bytes refused."""
 
+import re
 import struct
 
 import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
+from protocol import message
 from protocol.codes import CONSOLE_ADDRESS, EVERYONE_ADDRESS, WIRE_VERSION, Code
 from protocol.errors import LocalProtocolError, RemoteProtocolError
 from protocol.frame import MAX_PAYLOAD_BYTES
@@ -16,17 +18,21 @@ from protocol.message import (
     MAX_BODY_BYTES,
     Answer,
     Facts,
+    LockOut,
     Message,
     Nameplate,
     Packet,
     Pivot,
     Presence,
     Query,
+    Release,
     Rest,
     RollCall,
+    SettingWrite,
     Spin,
     Stop,
     Telemetry,
+    TraceChunk,
     decode,
     encode,
     field_text,
@@ -43,22 +49,23 @@ _RANGES = {
     "Q": st.integers(0, 2**64 - 1),
     "b": st.integers(-(2**7), 2**7 - 1),
     "h": st.integers(-(2**15), 2**15 - 1),
+    "i": st.integers(-(2**31), 2**31 - 1),
     "12s": st.binary(min_size=12, max_size=12),
+    "24s": st.binary(min_size=24, max_size=24),
 }
 
 
 def formats(code: int) -> list[str]:
     """The struct codes of a layout, one a field."""
-    text = LAYOUTS[code].body.format.lstrip("<").replace("12s", "s")
-    return ["12s" if letter == "s" else letter for letter in text]
+    return re.findall(r"\d*[a-zA-Z]", LAYOUTS[code].body.format)
 
 
 @st.composite
 def packets(draw: st.DrawFn) -> Packet:
     code = draw(st.sampled_from(sorted(LAYOUTS)))
     values = [draw(_RANGES[each]) for each in formats(code)]
-    message: Message = LAYOUTS[code].message_type(*values)
-    return Packet(draw(_RANGES["H"]), draw(_RANGES["H"]), message)
+    made: Message = LAYOUTS[code].message_type(*values)
+    return Packet(draw(_RANGES["H"]), draw(_RANGES["H"]), made)
 
 
 @STEADY
@@ -80,15 +87,18 @@ def test_decode_gives_the_very_types(packet: Packet) -> None:
     [
         # By hand: version, code, destination, source, body; all low byte first.
         (Packet(EVERYONE_ADDRESS, CONSOLE_ADDRESS, Stop(3)), "01 20 ffff 0100 03000000"),
-        (Packet(0xFFFF, 1, RollCall(0x01020304)), "01 01 ffff 0100 04030201"),
+        (
+            Packet(0xFFFF, 1, RollCall(0x01020304, 0xA1B2C3D4)),
+            "01 01 ffff 0100 04030201 d4c3b2a1",
+        ),
         (Packet(0x10, 1, Query(1, 2, 3)), "01 02 1000 0100 01000000 02000000 0300"),
         (
-            Packet(0x10, 1, Pivot(1, 2, 3, 0xBEEF, 1, -1, 4700)),
-            "01 10 1000 0100 01000000 02000000 0300 efbe 01 ff 5c12",
+            Packet(0x10, 1, Pivot(1, 2, 3, 0xBEEF, 0x1234, 9, 1, -1, 4700)),
+            "01 10 1000 0100 01000000 02000000 0300 efbe 34120000 09 01 ff 5c12",
         ),
         (
-            Packet(0x10, 1, Spin(1, 2, 3, 4, -2, 500)),
-            "01 11 1000 0100 01000000 02000000 0300 0400 feff f401",
+            Packet(0x10, 1, Spin(1, 2, 3, 4, 0x1234, -2, 500)),
+            "01 11 1000 0100 01000000 02000000 0300 0400 34120000 feff f401",
         ),
         (Packet(0x10, 1, Rest(1, 2, 3, 4)), "01 12 1000 0100 01000000 02000000 0300 0400"),
         (
@@ -178,7 +188,10 @@ def test_any_body_under_a_good_header_does_too(code: int, body: bytes) -> None:
         Packet(1, 0x10, Stop(2**32)),
         Packet(70_000, 0x10, Stop(1)),
         Packet(1, -1, Stop(1)),
-        Packet(1, 0x10, Spin(1, 2, 3, 4, 40_000, 5)),
+        Packet(1, 0x10, Spin(1, 2, 3, 4, 5, 40_000, 5)),
+        Packet(1, 0x10, SettingWrite(1, 2, 3, 4, 1, 2**31)),
+        Packet(1, 0x10, LockOut(1, 2, 3, 4, b"thirteen byte")),
+        Packet(1, 0x10, TraceChunk(1, 2, 3, 4, 5, bytes(25))),
         Packet(1, 0x10, Stop("3")),  # type: ignore[arg-type]
         Packet(1, 0x10, Stop(1.5)),  # type: ignore[arg-type]
         Packet(1, 0x10, "stop"),  # type: ignore[arg-type]
@@ -193,11 +206,11 @@ def test_what_does_not_fit_its_width_is_misuse(packet: Packet) -> None:
 
 
 def test_equality_is_strict_about_the_type() -> None:
-    assert RollCall(3) != Stop(3)
+    assert Release(3) != Stop(3)
     assert Stop(3) == Stop(3)
     assert hash(Stop(3)) == hash(Stop(3))
     assert Stop(3) != (3,)
-    assert len({RollCall(3), Stop(3), Stop(3)}) == 2
+    assert len({Release(3), Stop(3), Stop(3)}) == 2
 
 
 @pytest.mark.parametrize(
@@ -231,6 +244,15 @@ def test_bad_text_shows_as_such() -> None:
 
 
 def test_the_longest_bodies_are_what_they_are_said_to_be() -> None:
-    # By hand: 4+4+2+4x1+2+2+2+2+4+2+2+2 and 8+2+2+12+12 and 8+4+4+4+1+1+4.
-    sizes = {cls: LAYOUTS[CODES[cls]].body.size for cls in (Facts, Nameplate, Presence)}
-    assert sizes == {Facts: 32, Nameplate: 36, Presence: 26}
+    # By hand: 4+4+2+4x1+2+2+2+2+4+2+2+2+4, 8+2+2+12+12, 4+2+2+2+2+24 and 8+5x4+2+1+1.
+    longest = (Facts, Nameplate, TraceChunk, Presence)
+    sizes = {cls: LAYOUTS[CODES[cls]].body.size for cls in longest}
+    assert sizes == {Facts: 36, Nameplate: 36, TraceChunk: 36, Presence: 32}
+    assert max(layout.body.size for layout in LAYOUTS.values()) == MAX_BODY_BYTES
+
+
+def test_what_is_exported_is_every_message_and_what_reads_them() -> None:
+    names = {layout.message_type.__name__ for layout in LAYOUTS.values()}
+    assert names < set(message.__all__)
+    assert sorted(message.__all__) == sorted(set(message.__all__))
+    assert all(hasattr(message, name) for name in message.__all__)

@@ -9,11 +9,14 @@ import pytest
 
 import protocol
 from protocol import codes
-from protocol.codes import Activity, AnswerState, Code, Flags, Reason, Setting
+from protocol.allegiance import DRIFT_SHIFT, LONGEST_PERMIT_MS, OWNER_GRACE_MS
+from protocol.clock import DRIFT_LIMIT_PPM, SAMPLES_KEPT
+from protocol.codes import Activity, AnswerState, Code, Fault, Flags, Reason, Setting, SettingId
 from protocol.command_memory import REMEMBERED_REPLIES
-from protocol.exchange import ResendPolicy
 from protocol.frame import MAX_FRAME_BYTES, MAX_STUFFED_BYTES, frame
-from protocol.message import HEADER, LAYOUTS
+from protocol.message import BOUND_UNKNOWN, HEADER, LAYOUTS
+from protocol.resend import ResendPolicy
+from protocol.trace import ASK_AT_ONCE, CHUNK_BYTES, SAMPLES_A_CHUNK, TraceHead, TraceSample
 
 TEXT = Path(protocol.__file__).with_name("WIRE.md").read_text(encoding="utf-8")
 
@@ -29,6 +32,7 @@ TYPES = {
     "data24": "24s",
 }
 BYTES = {name: struct.calcsize("<" + form) for name, form in TYPES.items()}
+IN_WORDS = {8: "eight"}
 UNITS = {
     "rpm": "rpm",
     "ms": "ms",
@@ -101,6 +105,8 @@ def test_each_unit_is_that_of_the_fields_name(code: int) -> None:
         ("### Settings", Setting),
         ("### Activities", Activity),
         ("### Flags", Flags),
+        ("### Setting numbers", SettingId),
+        ("### Faults", Fault),
     ],
 )
 def test_each_table_of_codes(heading: str, codes_of: type[Enum]) -> None:
@@ -141,5 +147,56 @@ def test_the_figures_in_the_text() -> None:
         f"between {policy.minimum_ns // 10**6} ms and {policy.maximum_ns // 10**9} s",
         f"{policy.initial_ns // 10**6} ms before the first measurement",
         f"granularity ({policy.granularity_ns // 10**6} ms)",
+        f"**owns** a module for {OWNER_GRACE_MS:,} ms",
+        f"A permit that would last longer than {LONGEST_PERMIT_MS:,} ms is none",
+        f"(age of what was told) / 2^{DRIFT_SHIFT} - 1 ms",
+        f"apart by {DRIFT_LIMIT_PPM} parts in a million",
+        f"Of the last {IN_WORDS[SAMPLES_KEPT]} exchanges",
+        f"the group of address 0x{codes.FIRST_GROUP_ADDRESS:04x} + n",
+        f"n from 0 to {codes.GROUPS - 1}",
+        f"0x{BOUND_UNKNOWN:04x}: not known yet",
     ]:
         assert sentence in plain
+
+
+STRUCT_OF = {"u32": "I", "u16": "H", "i16": "h", "12 bytes": "12x"}
+
+
+def test_the_head_and_the_samples_of_a_trace() -> None:
+    text = section("## Traces")
+    head, sample = re.findall(r"(?:^\|.*\|$\n?)+", text, re.MULTILINE)
+    assert [row[1] for row in rows(head)[:-1]] == list(TraceHead._fields)
+    assert [row[1] for row in rows(sample)] == list(TraceSample._fields)
+    for table, size in ((head, CHUNK_BYTES), (sample, CHUNK_BYTES // SAMPLES_A_CHUNK)):
+        offset = 0
+        for at, _, kind, _ in rows(table):
+            assert int(at) == offset
+            offset += struct.calcsize("<" + STRUCT_OF[kind])
+        assert offset == size
+    assert f"for up to {IN_WORDS[ASK_AT_ONCE]} chunks at once" in " ".join(text.split())
+
+
+def test_the_interlocks_are_told_in_known_words() -> None:
+    table = rows(section("### The module's own interlocks"))
+    assert {row[2] for row in table} <= {reason.name for reason in Reason}
+
+
+def test_what_may_go_to_groups_and_to_everyone() -> None:
+    plain = " ".join(TEXT.split())
+    assert "harm: RollCall, Permit, Release, Go, Stop, Clear; anything else" in plain
+
+
+def test_the_list_of_the_command_memory_names_its_refusals_in_order() -> None:
+    table = rows(section("### The module: at most once"))
+    told = [row[1].rpartition(", ")[2] for row in table if "REFUSED" in row[1]]
+    assert told == [
+        each.name
+        for each in (
+            Reason.OTHER_IDENTITY,
+            Reason.OTHER_BOOT,
+            Reason.OWNED,
+            Reason.OTHER_EPOCH,
+            Reason.BAD_FIELD,
+            Reason.NUMBER_PASSED,
+        )
+    ]

@@ -78,7 +78,7 @@ def assault(seed: int, frames: int) -> Assault:
     result = Assault()
     heard: list[bytes] = []
     for source in SENDERS:
-        presence = Presence(source, 5, EPOCH, 0, 0, 1, 0)
+        presence = Presence(source, 5, EPOCH, 7, 0, 0, 0, 0, 1)
         heard.append(sealers[source].seal(_payload(source, presence)))
         assert isinstance(gate.admit(heard[-1]), Packet)
     count = 0

@@ -2,16 +2,21 @@
 
 `python -m tests.support.vector_lines` prints one step a line; protocol/kit/test/check.c says what
 each word means. Messages' fields are left out: the kit works on payloads.
+
+A ``-`` stands for nothing. Where a step expects several payloads, they may come in any order, and
+an asterisk stands for any digit.
 """
 
 import json
 from collections.abc import Iterator
 from pathlib import Path
-from typing import Any
+from typing import Any, Final
+
+from protocol.codes import Code
 
 VECTORS = Path(__file__).parents[2] / "protocol/vectors.json"
 
-VERDICTS = {
+VERDICTS: Final = {
     "opened": "obeyed",
     "obeyed": "obeyed",
     "unsealed": "unsealed",
@@ -21,7 +26,12 @@ VERDICTS = {
     "repeated": "repeated",
     "too old": "too_old",
     "not fresh": "not_fresh",
+    "of another console": "other_opening",
 }
+
+
+_FROM_MODULE: Final = 0x80
+_PAYLOAD_CODE: Final = slice(2, 4)
 
 
 def _frame(vector: dict[str, Any]) -> Iterator[str]:
@@ -32,14 +42,45 @@ def _frame(vector: dict[str, Any]) -> Iterator[str]:
 
 
 def _message(vector: dict[str, Any]) -> Iterator[str]:
-    yield f"write {vector['payload']} {vector['frame']}"
-    yield f"frame {vector['frame']} {vector['payload']}"
+    """Its frame, both ways; and a module takes for a request what a console sends to one."""
+    payload = vector["payload"]
+    code = int(payload[_PAYLOAD_CODE], 16)
+    yield f"write {payload} {vector['frame']}"
+    yield f"frame {vector['frame']} {payload}"
+    yield f"request {payload} {int(code < _FROM_MODULE and code != Code.BRIDGE_ASK)}"
+
+
+def _no_message(vector: dict[str, Any]) -> Iterator[str]:
+    yield f"request {vector['payload'] or '-'} 0"
 
 
 def _memory(vector: dict[str, Any]) -> Iterator[str]:
     yield f"memory {vector['boot']} {vector['identity_bits']}"
     for step in vector["steps"]:
-        yield f"hears {step['in']} {int(step['fresh'])} {step['out'] or '-'}"
+        owned, fresh = int(step.get("owned", False)), int(step["fresh"])
+        yield f"judges {step['in']} {owned} {fresh} {step['out'] or '-'}"
+
+
+def _stop(vector: dict[str, Any]) -> Iterator[str]:
+    yield "module 8000000000000010 1 16"
+    for step in vector["steps"]:
+        yield f"stops {step['in']} {step['stop_number']} {int(step['latched'])}"
+
+
+def _allegiance(vector: dict[str, Any]) -> Iterator[str]:
+    yield "allegiance"
+    for step in vector["steps"]:
+        expected = step["expect"]
+        yield (
+            f"follows {step['at_ms']} {step['payload'] or '-'} {expected['epoch']}"
+            f" {expected['console']} {expected['owner_left_ms']} {expected['permit_left_ms']}"
+        )
+
+
+def _module(vector: dict[str, Any]) -> Iterator[str]:
+    yield f"module {vector['identity']:016x} {vector['boot']} {vector['address']}"
+    for step in vector["steps"]:
+        yield " ".join(("hears", str(step["at_ms"]), step["in"] or "-", *step["out"]))
 
 
 def _seal(vector: dict[str, Any]) -> Iterator[str]:
@@ -49,29 +90,30 @@ def _seal(vector: dict[str, Any]) -> Iterator[str]:
 def _gate(vector: dict[str, Any]) -> Iterator[str]:
     yield f"gate {vector['boot']}"
     for step in vector["steps"]:
-        yield f"admit {step['in']} {VERDICTS[step['verdict']]}"
+        yield f"admit {step['follows']} {step['in']} {VERDICTS[step['verdict']]}"
 
 
-WRITERS = {
+WRITERS: Final = {
     "check": lambda vector: iter([f"crc {vector['data']} {vector['crc32c']}"]),
     "frame": _frame,
     "message": _message,
+    "no message": _no_message,
     "memory": _memory,
+    "stop": _stop,
+    "allegiance": _allegiance,
+    "module": _module,
     "seal": _seal,
     "open": lambda vector: iter([f"open {vector['payload']} {VERDICTS[vector['verdict']]}"]),
     "gate": _gate,
 }
-NOT_IN_THE_KIT = frozenset({"no message", "stop"})
-"""The kit has no message decoder and no stop latch yet."""
 
 
 def lines() -> Iterator[str]:
-    """All steps, in the file's order."""
+    """All steps, in the file's order. Raises KeyError for a kind that nobody runs."""
     document = json.loads(VECTORS.read_text())
     yield f"key {document['key']}"
     for vector in document["vectors"]:
-        if vector["kind"] not in NOT_IN_THE_KIT:
-            yield from WRITERS[vector["kind"]](vector)
+        yield from WRITERS[vector["kind"]](vector)
 
 
 if __name__ == "__main__":

@@ -1,0 +1,88 @@
+#include "tw_allegiance.h"
+
+#include "tw_message.h"
+
+/* Twelve days: a quarter of the way round the clock. */
+#define TOO_OLD_MS 0x40000000u
+
+uint8_t tw_hear_roll_call(tw_allegiance *allegiance, const uint8_t *payload, uint32_t now_ms)
+{
+    const uint32_t epoch = tw_get32(payload + TW_AT_ROLL_CALL_EPOCH);
+    const uint32_t console = tw_get32(payload + TW_AT_ROLL_CALL_CONSOLE);
+    const uint8_t other = console != allegiance->console;
+    if (epoch <= allegiance->epoch || (other && tw_owner_left_ms(allegiance, now_ms) > 0u)) {
+        return 0;
+    }
+    allegiance->epoch = epoch;
+    allegiance->console = console;
+    allegiance->adopted_ms = now_ms;
+    allegiance->adopted = 1;
+    if (other) {
+        allegiance->told = 0;
+        allegiance->permit = 0;
+    }
+    return 1;
+}
+
+void tw_hear_probe(tw_allegiance *allegiance, const uint8_t *payload, uint32_t now_ms)
+{
+    const uint16_t bound_ms = tw_get16(payload + TW_AT_PROBE_BOUND_MS);
+    if (tw_get32(payload + TW_AT_PROBE_CONSOLE) != allegiance->console ||
+        bound_ms == TW_BOUND_UNKNOWN) {
+        return;
+    }
+    allegiance->offset_ms = tw_get32(payload + TW_AT_PROBE_OFFSET_MS);
+    allegiance->bound_ms = bound_ms;
+    allegiance->told_ms = now_ms;
+    allegiance->told = 1;
+}
+
+void tw_hear_permit(tw_allegiance *allegiance, const uint8_t *payload)
+{
+    const uint32_t expiry_ms = tw_get32(payload + TW_AT_PERMIT_EXPIRY_MS);
+    if (tw_get32(payload + TW_AT_PERMIT_CONSOLE) == allegiance->console &&
+        (!allegiance->permit || tw_until(expiry_ms, allegiance->expiry_ms) > 0u)) {
+        allegiance->expiry_ms = expiry_ms;
+        allegiance->permit = 1;
+    }
+}
+
+void tw_hear_release(tw_allegiance *allegiance, const uint8_t *payload)
+{
+    if (tw_get32(payload + TW_AT_RELEASE_CONSOLE) == allegiance->console) {
+        allegiance->permit = 0;
+        allegiance->adopted = 0;
+    }
+}
+
+uint32_t tw_permit_left_ms(const tw_allegiance *allegiance, uint32_t now_ms)
+{
+    if (!allegiance->told || !allegiance->permit) {
+        return 0;
+    }
+    const uint32_t age_ms = tw_until(now_ms, allegiance->told_ms);
+    const uint32_t doubt_ms = allegiance->bound_ms + (age_ms >> TW_DRIFT_SHIFT) + 1u;
+    const uint32_t end_ms = allegiance->expiry_ms + allegiance->offset_ms - doubt_ms;
+    const uint32_t left_ms = tw_until(end_ms, now_ms);
+    return left_ms <= TW_LONGEST_PERMIT_MS ? left_ms : 0u;
+}
+
+uint32_t tw_owner_left_ms(const tw_allegiance *allegiance, uint32_t now_ms)
+{
+    const uint32_t permit_ms = tw_permit_left_ms(allegiance, now_ms);
+    uint32_t grace_ms = tw_until(allegiance->adopted_ms + TW_OWNER_GRACE_MS, now_ms);
+    if (!allegiance->adopted || grace_ms > TW_OWNER_GRACE_MS) {
+        grace_ms = 0;
+    }
+    return grace_ms > permit_ms ? grace_ms : permit_ms;
+}
+
+void tw_allegiance_age(tw_allegiance *allegiance, uint32_t now_ms)
+{
+    if (now_ms - allegiance->adopted_ms > TW_OWNER_GRACE_MS) {
+        allegiance->adopted = 0;
+    }
+    if (now_ms - allegiance->told_ms >= TOO_OLD_MS) {
+        allegiance->told = 0;
+    }
+}

@@ -1,0 +1,496 @@
+/* The wire's numbers: codes, offsets of fields in a payload, lengths of payloads.
+ *
+ * Made by tests/support/make_header.py from the tables of the Python side; not written by hand.
+ * WIRE.md says what each means. TW_AT_<MESSAGE>_<FIELD> counts from the payload's first byte;
+ * TW_LEN_<MESSAGE> is the whole payload, unsealed.
+ */
+#ifndef TW_WIRE_H
+#define TW_WIRE_H
+
+/* Single numbers. */
+enum {
+    TW_WIRE_VERSION = 1,
+    TW_HEADER_BYTES = 6,
+    TW_MAX_UNSEALED = 42,
+    TW_TEXT_BYTES = 12,
+    TW_CHUNK_BYTES = 24,
+    TW_SAMPLES_A_CHUNK = 3,
+    TW_GROUPS = 32,
+    TW_AT_VERSION = 0,
+    TW_AT_CODE = 1,
+    TW_AT_DESTINATION = 2,
+    TW_AT_SOURCE = 4,
+};
+
+/* bound_ms of a Probe whose console does not know the clock yet. */
+#define TW_BOUND_UNKNOWN 0xffffu
+
+/* Addresses. */
+enum {
+    TW_ADDRESS_CONSOLE = 0x0001,
+    TW_ADDRESS_BRIDGE = 0x0002,
+    TW_ADDRESS_FIRST_MODULE = 0x0010,
+    TW_ADDRESS_LAST_MODULE = 0xefff,
+    TW_ADDRESS_FIRST_GROUP = 0xf000,
+    TW_ADDRESS_EVERYONE = 0xffff,
+};
+
+/* Messages. */
+enum {
+    TW_CODE_ROLL_CALL = 0x01,
+    TW_CODE_QUERY = 0x02,
+    TW_CODE_PROBE = 0x03,
+    TW_CODE_PERMIT = 0x04,
+    TW_CODE_RELEASE = 0x05,
+    TW_CODE_GO = 0x06,
+    TW_CODE_SETTING_ASK = 0x07,
+    TW_CODE_TRACE_ASK = 0x08,
+    TW_CODE_BRIDGE_ASK = 0x09,
+    TW_CODE_PIVOT = 0x10,
+    TW_CODE_SPIN = 0x11,
+    TW_CODE_REST = 0x12,
+    TW_CODE_FLASH = 0x13,
+    TW_CODE_HOP = 0x14,
+    TW_CODE_TWIST = 0x15,
+    TW_CODE_LOCK_OUT = 0x16,
+    TW_CODE_UNLOCK = 0x17,
+    TW_CODE_SETTING_WRITE = 0x18,
+    TW_CODE_STOP = 0x20,
+    TW_CODE_CLEAR = 0x21,
+    TW_CODE_PRESENCE = 0x81,
+    TW_CODE_NAMEPLATE = 0x82,
+    TW_CODE_TELEMETRY = 0x83,
+    TW_CODE_ANSWER = 0x84,
+    TW_CODE_FACTS = 0x85,
+    TW_CODE_STOPPED = 0x86,
+    TW_CODE_ECHO = 0x87,
+    TW_CODE_LOCK_STATE = 0x88,
+    TW_CODE_SETTING_VALUE = 0x89,
+    TW_CODE_TRACE_CHUNK = 0x8a,
+    TW_CODE_FAULT_NOTICE = 0x8b,
+    TW_CODE_BRIDGE_STATUS = 0x8c,
+};
+
+/* Answer states. */
+enum {
+    TW_STATE_ACCEPTED = 1,
+    TW_STATE_REFUSED = 2,
+    TW_STATE_FINISHED = 3,
+    TW_STATE_CUT = 4,
+    TW_STATE_UNKNOWN = 5,
+};
+
+/* Reasons. */
+enum {
+    TW_REASON_NONE = 0,
+    TW_REASON_OTHER_BOOT = 1,
+    TW_REASON_OTHER_EPOCH = 2,
+    TW_REASON_OTHER_IDENTITY = 3,
+    TW_REASON_NUMBER_PASSED = 4,
+    TW_REASON_BUSY = 5,
+    TW_REASON_STOP_IN_FORCE = 6,
+    TW_REASON_OVER_SPEED_LIMIT = 7,
+    TW_REASON_BATTERY_LOW = 8,
+    TW_REASON_AXIS_UPRIGHT = 9,
+    TW_REASON_NOT_SETTLED = 10,
+    TW_REASON_UNSUPPORTED = 11,
+    TW_REASON_STOPPED = 12,
+    TW_REASON_RESTED = 13,
+    TW_REASON_BAD_FIELD = 14,
+    TW_REASON_OWNED = 15,
+    TW_REASON_TOO_LATE = 16,
+    TW_REASON_CLOCK_UNKNOWN = 17,
+    TW_REASON_NO_PERMIT = 18,
+    TW_REASON_PERMIT_LAPSED = 19,
+    TW_REASON_LOCKED_OUT = 20,
+    TW_REASON_OTHER_PERSON = 21,
+    TW_REASON_READ_ONLY = 22,
+    TW_REASON_FAULT = 23,
+};
+
+/* Settings of a pivot: what it stands on. */
+enum {
+    TW_STANDS_ON_FLOOR = 1,
+    TW_STANDS_ON_WALL = 2,
+    TW_STANDS_ON_CREST = 3,
+    TW_STANDS_ON_FLAT = 4,
+};
+
+/* Setting numbers. */
+enum {
+    TW_SETTING_WHEEL_LIMIT_RPM = 1,
+    TW_SETTING_TELEMETRY_PERIOD_MS = 2,
+    TW_SETTING_BATTERY_LOW_MV = 3,
+    TW_SETTING_GROUPS = 4,
+    TW_SETTING_CALIBRATION = 5,
+};
+
+/* Faults. */
+enum {
+    TW_FAULT_WATCHDOG = 1,
+    TW_FAULT_BROWN_OUT = 2,
+    TW_FAULT_SENSOR_LOST = 3,
+    TW_FAULT_WHEEL_STUCK = 4,
+    TW_FAULT_STORAGE_BAD = 5,
+    TW_FAULT_OVERHEATED = 6,
+    TW_FAULT_BRAKE_WEAK = 7,
+};
+
+/* Flags, bits of one byte. */
+enum {
+    TW_FLAG_LATCHED = 1,
+    TW_FLAG_BATTERY_LOW = 2,
+    TW_FLAG_UNSETTLED = 4,
+    TW_FLAG_LOCKED_OUT = 8,
+    TW_FLAG_FAULTY = 16,
+    TW_FLAG_PERMITTED = 32,
+    TW_FLAG_CLOCK_TOLD = 64,
+};
+
+/* Activities. */
+enum {
+    TW_ACTIVITY_STILL = 0,
+    TW_ACTIVITY_SPINNING_UP = 1,
+    TW_ACTIVITY_HOLDING = 2,
+    TW_ACTIVITY_RESTING = 3,
+    TW_ACTIVITY_BRAKING = 4,
+    TW_ACTIVITY_SETTLING = 5,
+    TW_ACTIVITY_FLASHING = 6,
+    TW_ACTIVITY_STAGED = 7,
+};
+
+/* RollCall. */
+enum {
+    TW_AT_ROLL_CALL_EPOCH = 6,
+    TW_AT_ROLL_CALL_CONSOLE = 10,
+    TW_LEN_ROLL_CALL = 14,
+};
+
+/* Query. */
+enum {
+    TW_AT_QUERY_EPOCH = 6,
+    TW_AT_QUERY_BOOT = 10,
+    TW_AT_QUERY_NUMBER = 14,
+    TW_LEN_QUERY = 16,
+};
+
+/* Probe. */
+enum {
+    TW_AT_PROBE_CONSOLE = 6,
+    TW_AT_PROBE_BOOT = 10,
+    TW_AT_PROBE_SEQUENCE = 14,
+    TW_AT_PROBE_IDENTITY_BITS = 16,
+    TW_AT_PROBE_OFFSET_MS = 18,
+    TW_AT_PROBE_BOUND_MS = 22,
+    TW_LEN_PROBE = 24,
+};
+
+/* Permit. */
+enum {
+    TW_AT_PERMIT_CONSOLE = 6,
+    TW_AT_PERMIT_EXPIRY_MS = 10,
+    TW_LEN_PERMIT = 14,
+};
+
+/* Release. */
+enum {
+    TW_AT_RELEASE_CONSOLE = 6,
+    TW_LEN_RELEASE = 10,
+};
+
+/* Go. */
+enum {
+    TW_AT_GO_CONSOLE = 6,
+    TW_AT_GO_STAGE = 10,
+    TW_AT_GO_START_MS = 11,
+    TW_LEN_GO = 15,
+};
+
+/* SettingAsk. */
+enum {
+    TW_AT_SETTING_ASK_SETTING = 6,
+    TW_LEN_SETTING_ASK = 7,
+};
+
+/* TraceAsk. */
+enum {
+    TW_AT_TRACE_ASK_EPOCH = 6,
+    TW_AT_TRACE_ASK_BOOT = 10,
+    TW_AT_TRACE_ASK_NUMBER = 14,
+    TW_AT_TRACE_ASK_IDENTITY_BITS = 16,
+    TW_AT_TRACE_ASK_FIRST = 18,
+    TW_AT_TRACE_ASK_WANTED = 20,
+    TW_LEN_TRACE_ASK = 24,
+};
+
+/* BridgeAsk. */
+enum {
+    TW_AT_BRIDGE_ASK_SEQUENCE = 6,
+    TW_LEN_BRIDGE_ASK = 8,
+};
+
+/* Pivot. */
+enum {
+    TW_AT_PIVOT_EPOCH = 6,
+    TW_AT_PIVOT_BOOT = 10,
+    TW_AT_PIVOT_NUMBER = 14,
+    TW_AT_PIVOT_IDENTITY_BITS = 16,
+    TW_AT_PIVOT_LATEST_MS = 18,
+    TW_AT_PIVOT_STAGE = 22,
+    TW_AT_PIVOT_SETTING = 23,
+    TW_AT_PIVOT_DIRECTION = 24,
+    TW_AT_PIVOT_SPEED_RPM = 25,
+    TW_LEN_PIVOT = 27,
+};
+
+/* Spin. */
+enum {
+    TW_AT_SPIN_EPOCH = 6,
+    TW_AT_SPIN_BOOT = 10,
+    TW_AT_SPIN_NUMBER = 14,
+    TW_AT_SPIN_IDENTITY_BITS = 16,
+    TW_AT_SPIN_LATEST_MS = 18,
+    TW_AT_SPIN_SPEED_RPM = 22,
+    TW_AT_SPIN_HOLD_MS = 24,
+    TW_LEN_SPIN = 26,
+};
+
+/* Rest. */
+enum {
+    TW_AT_REST_EPOCH = 6,
+    TW_AT_REST_BOOT = 10,
+    TW_AT_REST_NUMBER = 14,
+    TW_AT_REST_IDENTITY_BITS = 16,
+    TW_LEN_REST = 18,
+};
+
+/* Flash. */
+enum {
+    TW_AT_FLASH_EPOCH = 6,
+    TW_AT_FLASH_BOOT = 10,
+    TW_AT_FLASH_NUMBER = 14,
+    TW_AT_FLASH_IDENTITY_BITS = 16,
+    TW_AT_FLASH_DURATION_MS = 18,
+    TW_LEN_FLASH = 20,
+};
+
+/* Hop. */
+enum {
+    TW_AT_HOP_EPOCH = 6,
+    TW_AT_HOP_BOOT = 10,
+    TW_AT_HOP_NUMBER = 14,
+    TW_AT_HOP_IDENTITY_BITS = 16,
+    TW_AT_HOP_LATEST_MS = 18,
+    TW_AT_HOP_STAGE = 22,
+    TW_AT_HOP_DIRECTION = 23,
+    TW_AT_HOP_SPEED_RPM = 24,
+    TW_LEN_HOP = 26,
+};
+
+/* Twist. */
+enum {
+    TW_AT_TWIST_EPOCH = 6,
+    TW_AT_TWIST_BOOT = 10,
+    TW_AT_TWIST_NUMBER = 14,
+    TW_AT_TWIST_IDENTITY_BITS = 16,
+    TW_AT_TWIST_LATEST_MS = 18,
+    TW_AT_TWIST_STAGE = 22,
+    TW_AT_TWIST_DIRECTION = 23,
+    TW_AT_TWIST_SPEED_RPM = 24,
+    TW_LEN_TWIST = 26,
+};
+
+/* LockOut. */
+enum {
+    TW_AT_LOCK_OUT_EPOCH = 6,
+    TW_AT_LOCK_OUT_BOOT = 10,
+    TW_AT_LOCK_OUT_NUMBER = 14,
+    TW_AT_LOCK_OUT_IDENTITY_BITS = 16,
+    TW_AT_LOCK_OUT_PERSON = 18,
+    TW_LEN_LOCK_OUT = 30,
+};
+
+/* Unlock. */
+enum {
+    TW_AT_UNLOCK_EPOCH = 6,
+    TW_AT_UNLOCK_BOOT = 10,
+    TW_AT_UNLOCK_NUMBER = 14,
+    TW_AT_UNLOCK_IDENTITY_BITS = 16,
+    TW_AT_UNLOCK_PERSON = 18,
+    TW_LEN_UNLOCK = 30,
+};
+
+/* SettingWrite. */
+enum {
+    TW_AT_SETTING_WRITE_EPOCH = 6,
+    TW_AT_SETTING_WRITE_BOOT = 10,
+    TW_AT_SETTING_WRITE_NUMBER = 14,
+    TW_AT_SETTING_WRITE_IDENTITY_BITS = 16,
+    TW_AT_SETTING_WRITE_SETTING = 18,
+    TW_AT_SETTING_WRITE_VALUE = 19,
+    TW_LEN_SETTING_WRITE = 23,
+};
+
+/* Stop. */
+enum {
+    TW_AT_STOP_STOP_NUMBER = 6,
+    TW_LEN_STOP = 10,
+};
+
+/* Clear. */
+enum {
+    TW_AT_CLEAR_STOP_NUMBER = 6,
+    TW_LEN_CLEAR = 10,
+};
+
+/* Presence. */
+enum {
+    TW_AT_PRESENCE_IDENTITY = 6,
+    TW_AT_PRESENCE_BOOT = 14,
+    TW_AT_PRESENCE_EPOCH = 18,
+    TW_AT_PRESENCE_CONSOLE = 22,
+    TW_AT_PRESENCE_STOP_NUMBER = 26,
+    TW_AT_PRESENCE_TIME_MS = 30,
+    TW_AT_PRESENCE_OWNER_LEFT_MS = 34,
+    TW_AT_PRESENCE_FLAGS = 36,
+    TW_AT_PRESENCE_FACE_UP = 37,
+    TW_LEN_PRESENCE = 38,
+};
+
+/* Nameplate. */
+enum {
+    TW_AT_NAMEPLATE_IDENTITY = 6,
+    TW_AT_NAMEPLATE_WHEEL_MAX_RPM = 14,
+    TW_AT_NAMEPLATE_FIRMWARE = 16,
+    TW_AT_NAMEPLATE_NAME = 18,
+    TW_AT_NAMEPLATE_KIND = 30,
+    TW_LEN_NAMEPLATE = 42,
+};
+
+/* Telemetry. */
+enum {
+    TW_AT_TELEMETRY_BOOT = 6,
+    TW_AT_TELEMETRY_SEQUENCE = 10,
+    TW_AT_TELEMETRY_TIME_MS = 12,
+    TW_AT_TELEMETRY_ACTIVITY = 16,
+    TW_AT_TELEMETRY_FLAGS = 17,
+    TW_AT_TELEMETRY_FACE_UP = 18,
+    TW_AT_TELEMETRY_WHEEL_RPM = 19,
+    TW_AT_TELEMETRY_BATTERY_MV = 21,
+    TW_AT_TELEMETRY_TEMPERATURE_CC = 23,
+    TW_AT_TELEMETRY_TILT_DDEG = 25,
+    TW_AT_TELEMETRY_IDENTITY_BITS = 27,
+    TW_LEN_TELEMETRY = 29,
+};
+
+/* Answer. */
+enum {
+    TW_AT_ANSWER_EPOCH = 6,
+    TW_AT_ANSWER_BOOT = 10,
+    TW_AT_ANSWER_NUMBER = 14,
+    TW_AT_ANSWER_STATE = 16,
+    TW_AT_ANSWER_REASON = 17,
+    TW_AT_ANSWER_EXPECT_MS = 18,
+    TW_LEN_ANSWER = 20,
+};
+
+/* Facts. */
+enum {
+    TW_AT_FACTS_EPOCH = 6,
+    TW_AT_FACTS_BOOT = 10,
+    TW_AT_FACTS_NUMBER = 14,
+    TW_AT_FACTS_REASON = 16,
+    TW_AT_FACTS_FACE_BEFORE = 17,
+    TW_AT_FACTS_FACE_AFTER = 18,
+    TW_AT_FACTS_SETTLED = 19,
+    TW_AT_FACTS_TURNED_DDEG = 20,
+    TW_AT_FACTS_PEAK_TILT_DDEG = 22,
+    TW_AT_FACTS_PEAK_RATE_DPS = 24,
+    TW_AT_FACTS_WHEEL_AT_BRAKE_RPM = 26,
+    TW_AT_FACTS_BRAKE_US = 28,
+    TW_AT_FACTS_SPIN_UP_MS = 32,
+    TW_AT_FACTS_SETTLE_MS = 34,
+    TW_AT_FACTS_SAG_MV = 36,
+    TW_AT_FACTS_STARTED_MS = 38,
+    TW_LEN_FACTS = 42,
+};
+
+/* Stopped. */
+enum {
+    TW_AT_STOPPED_STOP_NUMBER = 6,
+    TW_AT_STOPPED_LATCHED = 10,
+    TW_AT_STOPPED_ACTIVITY = 11,
+    TW_AT_STOPPED_WHEEL_RPM = 12,
+    TW_AT_STOPPED_BOOT = 14,
+    TW_AT_STOPPED_IDENTITY_BITS = 18,
+    TW_LEN_STOPPED = 20,
+};
+
+/* Echo. */
+enum {
+    TW_AT_ECHO_BOOT = 6,
+    TW_AT_ECHO_SEQUENCE = 10,
+    TW_AT_ECHO_IDENTITY_BITS = 12,
+    TW_AT_ECHO_RECEIVED_US = 14,
+    TW_AT_ECHO_HELD_US = 22,
+    TW_LEN_ECHO = 26,
+};
+
+/* LockState. */
+enum {
+    TW_AT_LOCK_STATE_BOOT = 6,
+    TW_AT_LOCK_STATE_IDENTITY_BITS = 10,
+    TW_AT_LOCK_STATE_LOCKED = 12,
+    TW_AT_LOCK_STATE_PERSON = 13,
+    TW_LEN_LOCK_STATE = 25,
+};
+
+/* SettingValue. */
+enum {
+    TW_AT_SETTING_VALUE_BOOT = 6,
+    TW_AT_SETTING_VALUE_IDENTITY_BITS = 10,
+    TW_AT_SETTING_VALUE_SETTING = 12,
+    TW_AT_SETTING_VALUE_SETTINGS = 13,
+    TW_AT_SETTING_VALUE_VALUE = 14,
+    TW_AT_SETTING_VALUE_LOWEST = 18,
+    TW_AT_SETTING_VALUE_HIGHEST = 22,
+    TW_LEN_SETTING_VALUE = 26,
+};
+
+/* TraceChunk. */
+enum {
+    TW_AT_TRACE_CHUNK_BOOT = 6,
+    TW_AT_TRACE_CHUNK_NUMBER = 10,
+    TW_AT_TRACE_CHUNK_IDENTITY_BITS = 12,
+    TW_AT_TRACE_CHUNK_CHUNK = 14,
+    TW_AT_TRACE_CHUNK_CHUNKS = 16,
+    TW_AT_TRACE_CHUNK_DATA = 18,
+    TW_LEN_TRACE_CHUNK = 42,
+};
+
+/* FaultNotice. */
+enum {
+    TW_AT_FAULT_NOTICE_BOOT = 6,
+    TW_AT_FAULT_NOTICE_IDENTITY_BITS = 10,
+    TW_AT_FAULT_NOTICE_FAULT = 12,
+    TW_AT_FAULT_NOTICE_STANDING = 13,
+    TW_AT_FAULT_NOTICE_TIME_MS = 14,
+    TW_AT_FAULT_NOTICE_DETAIL = 18,
+    TW_LEN_FAULT_NOTICE = 20,
+};
+
+/* BridgeStatus. */
+enum {
+    TW_AT_BRIDGE_STATUS_SEQUENCE = 6,
+    TW_AT_BRIDGE_STATUS_UPTIME_MS = 8,
+    TW_AT_BRIDGE_STATUS_FRAMES_FROM_CONSOLE = 12,
+    TW_AT_BRIDGE_STATUS_FRAMES_TO_CONSOLE = 16,
+    TW_AT_BRIDGE_STATUS_DROPPED = 20,
+    TW_AT_BRIDGE_STATUS_QUEUE = 24,
+    TW_AT_BRIDGE_STATUS_QUEUE_MOST = 26,
+    TW_AT_BRIDGE_STATUS_SIGNAL_DBM = 28,
+    TW_AT_BRIDGE_STATUS_NOISE_DBM = 29,
+    TW_LEN_BRIDGE_STATUS = 30,
+};
+
+#endif
