@@ -220,12 +220,17 @@ def _passed(command: CommandState, answer: Answer) -> str | None:
 
 
 def _disowned(command: CommandState, answer: Answer) -> str | None:
-    """The module does not take it in this boot or epoch; an earlier copy may have been taken in
-    the last one, so only a single copy is known to have been refused."""
+    """The module does not take it in this boot; an earlier copy may have been taken in the last
+    one, so only a single copy is known to have been refused."""
     if command.ending is not None:
         return None
     sure = command.sends <= 1 and not (command.accepted or command.withdrawn)
     return "refused" if sure else OPEN_ENDED
+
+
+def _outlived(command: CommandState, answer: Answer) -> str | None:
+    """The module follows another epoch or console by now; what it did before, it has forgotten."""
+    return OPEN_ENDED if command.ending is None else None
 
 
 def _unknown(command: CommandState, answer: Answer) -> str | None:
@@ -244,5 +249,6 @@ _JUDGES: Final[dict[Event, Callable[[CommandState, Answer], str | None]]] = {
     Event.REFUSED: _refused,
     Event.PASSED: _passed,
     Event.DISOWNED: _disowned,
+    Event.OUTLIVED: _outlived,
     Event.UNKNOWN: _unknown,
 }

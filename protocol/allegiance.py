@@ -30,6 +30,9 @@ DRIFT_SHIFT: Final = 13
 """The bound grows by its age divided by 2**13, 122 parts in a million: DRIFT_LIMIT_PPM of
 clock.py, as a shift that the smallest module has."""
 
+_TOO_OLD_MS: Final = 1 << 30
+"""Twelve days: a quarter of the way round the clock."""
+
 _WRAP: Final = 1 << 32
 _HALF: Final = 1 << 31
 
@@ -114,6 +117,16 @@ class Allegiance:
             left_ms = ms_until(self._adopted_ms + OWNER_GRACE_MS, now_ms)
             grace_ms = left_ms if 0 < left_ms <= OWNER_GRACE_MS else 0
         return max(grace_ms, self.permit_left_ms(now_ms))
+
+    def forget_old(self, now_ms: int) -> None:
+        """Forget what has ended, lest it seem to lie ahead once the milliseconds have wrapped: to
+        be called now and then, at least every twelve days."""
+        if self._told is not None and (now_ms - self._told.at_ms) % _WRAP >= _TOO_OLD_MS:
+            self._told = None
+        if self._told is not None and self.permit_left_ms(now_ms) == 0:
+            self._expiry_ms = None
+        if self._adopted_ms is not None and (now_ms - self._adopted_ms) % _WRAP > OWNER_GRACE_MS:
+            self._adopted_ms = None
 
     def _follows(self, console: int) -> bool:
         """Whether this is the console followed; 0 is nobody's number, also before any was."""

@@ -20,8 +20,9 @@ accepted               CALLING, RECALLED: to RUNNING; ASKING: the same, but not
 finished, cut          everywhere but WAITING: end finished or cut
 refused                CALLING, RECALLED: end refused
 number passed          CALLING, RECALLED: end refused; RUNNING, ASKING: unseen
-other boot, epoch or   CALLING: end refused if only one copy was sent, else
-owner                  unseen; RUNNING, ASKING, RECALLED: end unseen
+other boot             CALLING: end refused if only one copy was sent, else
+                       unseen; RUNNING, ASKING, RECALLED: end unseen
+other epoch or owner   everywhere but WAITING: end unseen
 unknown                ASKING: end unseen; RECALLED: end cut
 restarted              everywhere: end unseen
 withdrawn              WAITING: end cut; CALLING: to RECALLED
@@ -29,9 +30,11 @@ withdrawn              WAITING: end cut; CALLING: to RECALLED
 
 Whatever the table does not name is ignored: late, repeated and stray replies.
 
-A module that replies "other boot", "other epoch" or "number passed" says that it does not take
-the command now, not that it never did. So once a command is known to have been accepted, or
-where the boot before may have taken an earlier copy, such a reply ends it as unseen.
+A module that replies "other boot", "other epoch", "owned" or "number passed" says that it does
+not take the command now, not that it never did. So once a command is known to have been accepted,
+or where the boot before may have taken an earlier copy, such a reply ends it as unseen. An epoch or
+an owner may change between two copies that the air itself made of one send, in far less time than
+a restart takes: so of those two not even the only copy is known to have been refused.
 """
 
 from enum import Enum, auto, unique
@@ -64,7 +67,9 @@ class Event(Enum):
     REFUSED = auto()
     PASSED = auto()
     DISOWNED = auto()
-    """The module has no memory of the command's time: another boot, another epoch or owner."""
+    """The module has no memory of the command's boot."""
+    OUTLIVED = auto()
+    """It follows another epoch or another console by now."""
     UNKNOWN = auto()
     RESTARTED = auto()
     WITHDRAWN = auto()
@@ -97,6 +102,7 @@ TRANSITIONS: Final[dict[tuple[Phase, Event], Act]] = {
     (Phase.CALLING, Event.REFUSED): Act.END_REFUSED,
     (Phase.CALLING, Event.PASSED): Act.END_REFUSED,
     (Phase.CALLING, Event.DISOWNED): Act.END_REFUSED_IF_ONE_COPY,
+    (Phase.CALLING, Event.OUTLIVED): Act.END_UNSEEN,
     (Phase.CALLING, Event.RESTARTED): Act.END_UNSEEN,
     (Phase.CALLING, Event.WITHDRAWN): Act.RECALL,
     (Phase.RUNNING, Event.DUE): Act.ASK,
@@ -104,6 +110,7 @@ TRANSITIONS: Final[dict[tuple[Phase, Event], Act]] = {
     (Phase.RUNNING, Event.CUT): Act.END_CUT,
     (Phase.RUNNING, Event.PASSED): Act.END_UNSEEN,
     (Phase.RUNNING, Event.DISOWNED): Act.END_UNSEEN,
+    (Phase.RUNNING, Event.OUTLIVED): Act.END_UNSEEN,
     (Phase.RUNNING, Event.RESTARTED): Act.END_UNSEEN,
     (Phase.ASKING, Event.DUE): Act.TRY_AGAIN,
     (Phase.ASKING, Event.ACCEPTED): Act.RUN,
@@ -111,6 +118,7 @@ TRANSITIONS: Final[dict[tuple[Phase, Event], Act]] = {
     (Phase.ASKING, Event.CUT): Act.END_CUT,
     (Phase.ASKING, Event.PASSED): Act.END_UNSEEN,
     (Phase.ASKING, Event.DISOWNED): Act.END_UNSEEN,
+    (Phase.ASKING, Event.OUTLIVED): Act.END_UNSEEN,
     (Phase.ASKING, Event.UNKNOWN): Act.END_UNSEEN,
     (Phase.ASKING, Event.RESTARTED): Act.END_UNSEEN,
     (Phase.RECALLED, Event.DUE): Act.TRY_AGAIN,
@@ -120,6 +128,7 @@ TRANSITIONS: Final[dict[tuple[Phase, Event], Act]] = {
     (Phase.RECALLED, Event.REFUSED): Act.END_REFUSED,
     (Phase.RECALLED, Event.PASSED): Act.END_REFUSED,
     (Phase.RECALLED, Event.DISOWNED): Act.END_UNSEEN,
+    (Phase.RECALLED, Event.OUTLIVED): Act.END_UNSEEN,
     (Phase.RECALLED, Event.UNKNOWN): Act.END_CUT,
     (Phase.RECALLED, Event.RESTARTED): Act.END_UNSEEN,
 }
@@ -134,11 +143,11 @@ _BY_STATE: Final[dict[int, Event]] = {
 
 _BY_STATE_AND_REASON: Final[dict[tuple[int, int], Event]] = {
     (AnswerState.REFUSED, Reason.OTHER_BOOT): Event.DISOWNED,
-    (AnswerState.REFUSED, Reason.OTHER_EPOCH): Event.DISOWNED,
-    (AnswerState.REFUSED, Reason.OWNED): Event.DISOWNED,
+    (AnswerState.REFUSED, Reason.OTHER_EPOCH): Event.OUTLIVED,
+    (AnswerState.REFUSED, Reason.OWNED): Event.OUTLIVED,
     (AnswerState.REFUSED, Reason.NUMBER_PASSED): Event.PASSED,
     (AnswerState.UNKNOWN, Reason.OTHER_BOOT): Event.DISOWNED,
-    (AnswerState.UNKNOWN, Reason.OTHER_EPOCH): Event.DISOWNED,
+    (AnswerState.UNKNOWN, Reason.OTHER_EPOCH): Event.OUTLIVED,
 }
 
 

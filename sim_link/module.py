@@ -139,6 +139,7 @@ class VirtualModule:
                 said += self.works.wake(now_ns)
             else:
                 self._report_ns += self._period_ns
+                self.box.boot.allegiance.forget_old(self.box.boot.time.ms(now_ns))
                 said.append(self._telemetry(now_ns))
         return self._out(said)
 

@@ -5,12 +5,19 @@
 /* Twelve days: a quarter of the way round the clock. */
 #define TOO_OLD_MS 0x40000000u
 
+/* Whether a console is the one followed; 0 is nobody's number, also before any was. */
+static uint8_t follows(const tw_allegiance *allegiance, const uint8_t *console)
+{
+    const uint32_t number = tw_get32(console);
+    return number != 0u && number == allegiance->console;
+}
+
 uint8_t tw_hear_roll_call(tw_allegiance *allegiance, const uint8_t *payload, uint32_t now_ms)
 {
     const uint32_t epoch = tw_get32(payload + TW_AT_ROLL_CALL_EPOCH);
     const uint32_t console = tw_get32(payload + TW_AT_ROLL_CALL_CONSOLE);
     const uint8_t other = console != allegiance->console;
-    if (epoch <= allegiance->epoch || (other && tw_owner_left_ms(allegiance, now_ms) > 0u)) {
+    if (console == 0u || epoch <= allegiance->epoch || (other && tw_owner_left_ms(allegiance, now_ms) > 0u)) {
         return 0;
     }
     allegiance->epoch = epoch;
@@ -27,7 +34,7 @@ uint8_t tw_hear_roll_call(tw_allegiance *allegiance, const uint8_t *payload, uin
 void tw_hear_probe(tw_allegiance *allegiance, const uint8_t *payload, uint32_t now_ms)
 {
     const uint16_t bound_ms = tw_get16(payload + TW_AT_PROBE_BOUND_MS);
-    if (tw_get32(payload + TW_AT_PROBE_CONSOLE) != allegiance->console ||
+    if (!follows(allegiance, payload + TW_AT_PROBE_CONSOLE) ||
         bound_ms == TW_BOUND_UNKNOWN) {
         return;
     }
@@ -40,7 +47,7 @@ void tw_hear_probe(tw_allegiance *allegiance, const uint8_t *payload, uint32_t n
 void tw_hear_permit(tw_allegiance *allegiance, const uint8_t *payload)
 {
     const uint32_t expiry_ms = tw_get32(payload + TW_AT_PERMIT_EXPIRY_MS);
-    if (tw_get32(payload + TW_AT_PERMIT_CONSOLE) == allegiance->console &&
+    if (follows(allegiance, payload + TW_AT_PERMIT_CONSOLE) &&
         (!allegiance->permit || tw_until(expiry_ms, allegiance->expiry_ms) > 0u)) {
         allegiance->expiry_ms = expiry_ms;
         allegiance->permit = 1;
@@ -49,7 +56,7 @@ void tw_hear_permit(tw_allegiance *allegiance, const uint8_t *payload)
 
 void tw_hear_release(tw_allegiance *allegiance, const uint8_t *payload)
 {
-    if (tw_get32(payload + TW_AT_RELEASE_CONSOLE) == allegiance->console) {
+    if (follows(allegiance, payload + TW_AT_RELEASE_CONSOLE)) {
         allegiance->permit = 0;
         allegiance->adopted = 0;
     }
@@ -84,5 +91,8 @@ void tw_allegiance_age(tw_allegiance *allegiance, uint32_t now_ms)
     }
     if (now_ms - allegiance->told_ms >= TOO_OLD_MS) {
         allegiance->told = 0;
+    }
+    if (allegiance->told && tw_permit_left_ms(allegiance, now_ms) == 0u) {
+        allegiance->permit = 0;
     }
 }

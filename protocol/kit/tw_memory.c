@@ -81,7 +81,8 @@ static uint8_t name_fault(const tw_memory *memory, const uint8_t *payload)
     if (tw_get32(payload + AT_BOOT) != memory->boot) {
         return TW_REASON_OTHER_BOOT;
     }
-    return tw_get32(payload + AT_EPOCH) != memory->epoch ? TW_REASON_OTHER_EPOCH : TW_REASON_NONE;
+    const uint32_t epoch = tw_get32(payload + AT_EPOCH); /* 0 is nobody's */
+    return epoch == 0u || epoch != memory->epoch ? TW_REASON_OTHER_EPOCH : TW_REASON_NONE;
 }
 
 static uint8_t envelope_fault(const tw_memory *memory, const uint8_t *payload, uint8_t owned)

@@ -454,3 +454,52 @@ def test_never_two_owners_and_epochs_only_rise(
         assert module.epoch >= before[0]
         if owned and word != "release" and before[1]:
             assert module.console == before[1]
+
+
+# -- what has ended is forgotten -------------------------------------------------------------
+
+
+def permitted_once() -> Allegiance:
+    module = Allegiance()
+    module.roll_call(5, 9, 0)
+    module.hear_probe(Probe(9, 1, 1, 1, 0, 5), 0)
+    module.hear_permit(Permit(9, 1_000), 0)
+    return module
+
+
+def test_an_ended_permit_does_not_come_back_when_the_milliseconds_wrap() -> None:
+    """Module time has 32 bits of milliseconds: 49.7 days (2**32 / 86,400,000)."""
+    careless, careful = permitted_once(), permitted_once()
+    careful.forget_old(2_000)
+    assert careless.permit_left_ms(0) > 900  # what would be seen 2**32 ms later
+    assert careful.permit_left_ms(0) == 0
+    assert careful.clock_told
+
+
+def test_a_clock_told_long_ago_is_told_no_more() -> None:
+    module = permitted_once()
+    module.forget_old((1 << 30) - 1)
+    assert module.clock_told
+    module.forget_old(1 << 30)
+    assert not module.clock_told
+
+
+def test_the_grace_after_an_adoption_does_not_come_back_either() -> None:
+    module = Allegiance()
+    module.roll_call(5, 9, 0)
+    module.forget_old(2_999)
+    assert module.owner_left_ms(2_999) == 1
+    module.forget_old(3_001)
+    assert module.owner_left_ms(0) == 0
+
+
+def test_nothing_that_still_holds_is_forgotten() -> None:
+    module = permitted_once()
+    module.forget_old(900)
+    assert module.permit_left_ms(900) > 90
+    early = Allegiance()
+    early.roll_call(5, 9, 0)
+    early.hear_permit(Permit(9, 5_000), 0)  # before its clock was told
+    early.forget_old(100)
+    early.hear_probe(Probe(9, 1, 1, 1, 0, 5), 200)
+    assert early.permit_left_ms(200) > 4_000

@@ -163,8 +163,8 @@ ENDS: list[tuple[str, Message, Ending | None]] = [
     ("calling", answer(1, AnswerState.REFUSED, Reason.OTHER_IDENTITY), Ending.REFUSED),
     ("calling", answer(1, AnswerState.REFUSED, Reason.NUMBER_PASSED), Ending.REFUSED),
     ("calling", answer(1, AnswerState.REFUSED, Reason.OTHER_BOOT), Ending.REFUSED),
-    ("calling", answer(1, AnswerState.REFUSED, Reason.OTHER_EPOCH), Ending.REFUSED),
-    ("calling", answer(1, AnswerState.REFUSED, Reason.OWNED), Ending.REFUSED),
+    ("calling", answer(1, AnswerState.REFUSED, Reason.OTHER_EPOCH), Ending.UNSEEN),
+    ("calling", answer(1, AnswerState.REFUSED, Reason.OWNED), Ending.UNSEEN),
     ("calling", UNKNOWN, None),
     ("running", facts(1), Ending.FINISHED),
     ("running", facts(1, Reason.RESTED), Ending.CUT),
@@ -574,6 +574,6 @@ def test_a_restart_ends_every_phase() -> None:
 @pytest.mark.parametrize("reason", Reason)
 def test_every_refusal_and_every_report_means_something(reason: Reason) -> None:
     refused = event_of(answer(1, AnswerState.REFUSED, reason))
-    assert refused in (Event.REFUSED, Event.PASSED, Event.DISOWNED)
+    assert refused in (Event.REFUSED, Event.PASSED, Event.DISOWNED, Event.OUTLIVED)
     cut = event_of(facts(1, reason))
     assert cut is (Event.FINISHED if reason is Reason.NONE else Event.CUT)

@@ -49,10 +49,6 @@ class Deeds:
     cut_short: set[Key] = field(default_factory=set)
     restarts: int = 0
     repeats: int = 0
-    adopted: list[tuple[int, int]] = field(default_factory=list)
-    """Address and time of each adoption."""
-    first_ns: dict[Key, int] = field(default_factory=dict)
-    """When it was carried out first."""
     takeovers: int = 0
     lapses: int = 0
     without_permit: int = 0
@@ -177,7 +173,6 @@ class Box:
         before = self.allegiance.console
         if self.allegiance.roll_call(*call, self.now_ms):
             self.memory.adopt(call.epoch)
-            self._deeds.adopted.append((self.address, self._clock.t_ns))
             self._deeds.takeovers += before not in (0, call.console)
             self._look_at_permit()
         follows = self.allegiance
@@ -212,7 +207,6 @@ class Box:
     def _carry_out(self, command: Pivot | Rest, duration_ms: int) -> None:
         key = key_of(self.address, command)
         self._deeds.carried_out[key] += 1
-        self._deeds.first_ns.setdefault(key, self._clock.t_ns)
         if (self.umpire.epoch, {self.umpire.console}) != (
             command.epoch,
             self._deeds.senders.get(key),

@@ -280,30 +280,13 @@ class World:
         return found
 
     def false_refusals(self) -> list[Key]:
-        """Commands told as refused that were carried out.
-
-        Left out is what WIRE.md supposes away: between two copies of one send, which the air
-        made of it, the module adopted another epoch, and told the second copy so.
-        """
-        weather = self.weather
-        air_ns = (weather.delay_ms + weather.spread_ms + weather.late_ms) * MS
+        """Commands told as refused that were carried out."""
         keys = [
             key_of(address, message)
             for command, (address, message) in self.sent.items()
             if Ending.REFUSED in self.ended[command]
         ]
-        return [
-            key
-            for key in keys
-            if self.deeds.carried_out[key]
-            and not self._adopted_within(key[0], self.deeds.first_ns[key], air_ns)
-        ]
-
-    def _adopted_within(self, address: int, t_ns: int, span_ns: int) -> bool:
-        return any(
-            at == address and t_ns <= adopted_ns <= t_ns + span_ns
-            for at, adopted_ns in self.deeds.adopted
-        )
+        return [key for key in keys if self.deeds.carried_out[key]]
 
     def endings(self) -> Counter[Ending]:
         return Counter(how for endings in self.ended.values() for how in endings)
