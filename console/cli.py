@@ -38,9 +38,8 @@ rate_option = click.option(
 )
 keys_option = click.option(
     "--keys",
-    type=_File(),
     metavar="FILE",
-    help="Key file of a sealed fleet; must be readable by you alone.",
+    help="Key file of a sealed fleet, yours alone; or keyring:NAME.",
 )
 pace_option = click.option(
     "--pace",

@@ -11,6 +11,7 @@ from pathlib import Path
 from typing import Final
 
 from console.errors import InputError
+from console.key_ring_store import PREFIX, keyring_text
 from protocol.errors import LocalProtocolError
 from protocol.key_text import read_keys
 from protocol.seal import KeyRing
@@ -33,6 +34,18 @@ def load_keys(path: Path) -> KeyRing:
         return read_keys(text)
     except LocalProtocolError as error:
         raise InputError(f"{path}: {error}") from error
+
+
+def load_keys_from(source: str) -> KeyRing:
+    """Read keys from a file, or from the system's keyring where ``source`` is ``keyring:NAME``.
+    Raises InputError as either does."""
+    if not source.startswith(PREFIX):
+        return load_keys(Path(source))
+    text = keyring_text(source.removeprefix(PREFIX))
+    try:
+        return read_keys(text)
+    except LocalProtocolError as error:
+        raise InputError(f"{source}: {error}") from error
 
 
 def default_opening_path() -> Path:

@@ -14,7 +14,7 @@ from typing import Final
 from console.clock import SessionClock, next_utc_second, utc_now, utc_seconds
 from console.engine import Engine
 from console.errors import InputError, LogError
-from console.key_file import OpeningStore, default_opening_path, load_keys
+from console.key_file import OpeningStore, default_opening_path, load_keys_from
 from console.paths import default_log_path
 from console.port import Port, open_port
 from console.sealing import ConsoleSeal
@@ -28,14 +28,15 @@ PRACTICE_LINK: Final = "sim://?modules=8"
 @dataclass(frozen=True, slots=True)
 class SessionOptions:
     """What a person chose for a session. ``log`` None: the default place; ``pace`` None: the
-    port's own (a simulated one says it), else 1; ``keys``: the key file of a sealed fleet."""
+    port's own (a simulated one says it), else 1; ``keys``: the key file of a sealed fleet, or
+    ``keyring:NAME``."""
 
     links: tuple[str, ...]
     log: Path | None = None
     operator: str = ""
     rate_baud: int = 921_600
     pace: float | None = None
-    keys: Path | None = None
+    keys: str | None = None
 
 
 def program_name() -> str:
@@ -62,7 +63,7 @@ def open_session(options: SessionOptions) -> Engine:
     Raises InputError, LinkError or LogError; then nothing is left open and no session is in
     the log.
     """
-    keys = None if options.keys is None else load_keys(options.keys)
+    keys = None if options.keys is None else load_keys_from(options.keys)
     ports: list[Port] = []
     try:
         ports += [open_port(url, options.rate_baud) for url in options.links]

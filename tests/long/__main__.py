@@ -11,6 +11,7 @@ import time
 from concurrent.futures import ProcessPoolExecutor
 
 from tests.long.proofs import PROOFS, Figures, Proof, add_up
+from tests.support.fuzz_runs import CannotFuzzError
 
 
 def prove(proof: Proof, part: float, seed: int, pool: ProcessPoolExecutor) -> Figures:
@@ -38,7 +39,12 @@ def main() -> int:
             if chosen.names and proof.name not in chosen.names:
                 continue
             begun = time.monotonic()
-            figures = prove(proof, chosen.part, chosen.seed, pool)
+            try:
+                figures = prove(proof, chosen.part, chosen.seed, pool)
+            except CannotFuzzError as lack:
+                failed += 1
+                print(f"{proof.name}: {lack}", flush=True)
+                continue
             failed += bool(figures["breaches"])
             told = ", ".join(f"{name} {count}" for name, count in figures.items())
             print(f"{proof.name}: {told} ({time.monotonic() - begun:.0f} s)", flush=True)

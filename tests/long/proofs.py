@@ -11,6 +11,7 @@ from typing import NamedTuple
 from tests.support.console_scripts import run_script
 from tests.support.exchange_world import FAIR, FOUL, World
 from tests.support.forgery import assault
+from tests.support.fuzz_runs import Fuzzed, fuzz_decoder, fuzz_kit
 from tests.support.mutations import run_mutations
 
 Figures = dict[str, int]
@@ -69,11 +70,29 @@ def decoder_piece(seed: int, size: int) -> Figures:
     return {**found, "breaches": 0}
 
 
+def decoder_coverage_piece(seed: int, size: int) -> Figures:
+    """The Python side under a fuzzer that looks at which branches it reaches."""
+    return _fuzzed(seed, fuzz_decoder(seed, size))
+
+
+def kit_coverage_piece(seed: int, size: int) -> Figures:
+    """The whole C module under such a fuzzer, with the sanitizers."""
+    return _fuzzed(seed, fuzz_kit(seed, size))
+
+
+def _fuzzed(seed: int, found: Fuzzed) -> Figures:
+    if found.report:
+        print(f"seed {seed}: {found.report}")
+    return {"frames": found.frames, "breaches": int(bool(found.report))}
+
+
 PROOFS = (
     Proof("law_one_exchange", 200_000, 1_000, exchange_piece, "commands"),
     Proof("law_one_console", 20_000, 300, console_piece, "commands"),
     Proof("seal_forgeries", 1_000_000, 20_000, seal_piece, "frames"),
     Proof("decoder_mutations", 10_000_000, 100_000, decoder_piece, "frames"),
+    Proof("decoder_coverage", 4_000_000, 400_000, decoder_coverage_piece, "frames"),
+    Proof("kit_coverage", 400_000, 40_000, kit_coverage_piece, "frames"),
 )
 
 

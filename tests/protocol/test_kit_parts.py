@@ -24,6 +24,7 @@ from protocol.message import (
 )
 from protocol.trace import TraceHead, TraceSample, pack_trace
 from tests.support.kit_build import KIT, built
+from tests.support.kit_seeds import write_seeds
 from tests.support.kit_sizes import Calls
 
 ROOT = Path(__file__).parents[2]
@@ -240,14 +241,6 @@ def test_a_stack_that_is_not_fixed_is_refused() -> None:
         Calls([GRAPH.format(how="dynamic", callee="far")])
 
 
-ROLL_CALL = bytes((0x01, 5, 0, 0, 0, 1, 0, 0, 0))
-PROBE = bytes((0x03, 2)) + bytes(17)
-PERMIT = bytes((0x04, 250)) + bytes(7)
-PIVOT = bytes((0x10, 100)) + bytes(15) + bytes((0, 1, 1, 0x88, 0x13))
-DRIVEN = ROLL_CALL + PROBE + PERMIT + PIVOT + b"\xff\xff" + PERMIT + b"\x90" * 9
-"""What the fuzzer reads as: called over, told its clock, permitted, a pivot, and time for it."""
-
-
 def test_the_fuzzer_finds_nothing_in_a_few_thousand(
     tmp_path_factory: pytest.TempPathFactory,
 ) -> None:
@@ -256,8 +249,7 @@ def test_the_fuzzer_finds_nothing_in_a_few_thousand(
         pytest.skip("needs clang with its fuzzer library")
     fuzzer = built(tmp_path_factory, "fuzz")
     corpus = tmp_path_factory.mktemp("seeds")
-    for options in range(8):
-        (corpus / f"seed-{options}").write_bytes(bytes((options,)) + DRIVEN)
+    write_seeds(corpus)
     words = [fuzzer, "-runs=4000", "-seed=1", "-max_len=200", str(corpus)]
     done = subprocess.run(words, capture_output=True, text=True, check=False, cwd=corpus.parent)
     assert done.returncode == 0, done.stderr[-2000:]
