@@ -105,10 +105,15 @@ class Allegiance:
         """How long the wheel may still turn; 0 without a permit."""
         if self._told is None or self._expiry_ms is None:
             return 0
-        age_ms = max(0, ms_until(now_ms, self._told.at_ms))
-        doubt_ms = self._told.bound_ms + (age_ms >> DRIFT_SHIFT) + 1
-        left_ms = ms_until(self._expiry_ms + self._told.offset_ms - doubt_ms, now_ms)
+        left_ms = self._permit_ends_in_ms(self._told, self._expiry_ms, now_ms)
         return left_ms if 0 < left_ms <= LONGEST_PERMIT_MS else 0
+
+    @staticmethod
+    def _permit_ends_in_ms(told: _Told, expiry_ms: int, now_ms: int) -> int:
+        """Milliseconds until a permit's end in module time; negative once past."""
+        age_ms = max(0, ms_until(now_ms, told.at_ms))
+        doubt_ms = told.bound_ms + (age_ms >> DRIFT_SHIFT) + 1
+        return ms_until(expiry_ms + told.offset_ms - doubt_ms, now_ms)
 
     def owner_left_ms(self, now_ms: int) -> int:
         """How long no other console can take the module over; 0: any can."""
@@ -119,12 +124,14 @@ class Allegiance:
         return max(grace_ms, self.permit_left_ms(now_ms))
 
     def forget_old(self, now_ms: int) -> None:
-        """Forget what has ended, lest it seem to lie ahead once the milliseconds have wrapped: to
-        be called now and then, at least every twelve days."""
+        """Forget what ended long ago, lest it seem to lie ahead once the milliseconds have
+        wrapped: to be called now and then, at least every twelve days."""
         if self._told is not None and (now_ms - self._told.at_ms) % _WRAP >= _TOO_OLD_MS:
             self._told = None
-        if self._told is not None and self.permit_left_ms(now_ms) == 0:
-            self._expiry_ms = None
+        if self._told is not None and self._expiry_ms is not None:
+            ends_in_ms = self._permit_ends_in_ms(self._told, self._expiry_ms, now_ms)
+            if ends_in_ms <= -_TOO_OLD_MS:
+                self._expiry_ms = None
         if self._adopted_ms is not None and (now_ms - self._adopted_ms) % _WRAP > OWNER_GRACE_MS:
             self._adopted_ms = None
 

@@ -62,15 +62,20 @@ void tw_hear_release(tw_allegiance *allegiance, const uint8_t *payload)
     }
 }
 
+/* Module time at which the permit ends; only where there is one, and a clock was told. */
+static uint32_t permit_end_ms(const tw_allegiance *allegiance, uint32_t now_ms)
+{
+    const uint32_t age_ms = tw_until(now_ms, allegiance->told_ms);
+    const uint32_t doubt_ms = allegiance->bound_ms + (age_ms >> TW_DRIFT_SHIFT) + 1u;
+    return allegiance->expiry_ms + allegiance->offset_ms - doubt_ms;
+}
+
 uint32_t tw_permit_left_ms(const tw_allegiance *allegiance, uint32_t now_ms)
 {
     if (!allegiance->told || !allegiance->permit) {
         return 0;
     }
-    const uint32_t age_ms = tw_until(now_ms, allegiance->told_ms);
-    const uint32_t doubt_ms = allegiance->bound_ms + (age_ms >> TW_DRIFT_SHIFT) + 1u;
-    const uint32_t end_ms = allegiance->expiry_ms + allegiance->offset_ms - doubt_ms;
-    const uint32_t left_ms = tw_until(end_ms, now_ms);
+    const uint32_t left_ms = tw_until(permit_end_ms(allegiance, now_ms), now_ms);
     return left_ms <= TW_LONGEST_PERMIT_MS ? left_ms : 0u;
 }
 
@@ -92,7 +97,8 @@ void tw_allegiance_age(tw_allegiance *allegiance, uint32_t now_ms)
     if (now_ms - allegiance->told_ms >= TOO_OLD_MS) {
         allegiance->told = 0;
     }
-    if (allegiance->told && tw_permit_left_ms(allegiance, now_ms) == 0u) {
+    const uint32_t past_ms = now_ms - permit_end_ms(allegiance, now_ms);
+    if (allegiance->told && past_ms >= TOO_OLD_MS && past_ms < 2u * TOO_OLD_MS) {
         allegiance->permit = 0;
     }
 }
