@@ -12,6 +12,8 @@ ROLL_OPENING_CALLS: Final = 4
 ROLL_OPENING_PERIOD_NS: Final = 300_000_000
 ROLL_HASTE_PERIOD_NS: Final = 500_000_000
 ROLL_CALM_PERIOD_NS: Final = 10_000_000_000
+ROLL_LOOK_NS: Final = 100_000_000
+"""How often the fleet is looked at for strangers, between calls."""
 STOP_PERIOD_NS: Final = 150_000_000
 """Above the round trip of a busy half-duplex channel, below what a person would wait."""
 STOP_LOOK_NS: Final = 30_000_000
@@ -26,6 +28,7 @@ class RollCaller:
     def __init__(self) -> None:
         self._calls = 0
         self._last_ns: int | None = None
+        self._looked_ns: int | None = None
         self.next_ns: int = 0
 
     def hurry(self) -> None:
@@ -37,13 +40,19 @@ class RollCaller:
         asked only where the answer matters, since it looks at every module."""
         if t_ns < self.next_ns:
             hasty_ns = None if self._last_ns is None else self._last_ns + ROLL_HASTE_PERIOD_NS
-            if hasty_ns is None or t_ns < hasty_ns or not strange():
+            if hasty_ns is None or t_ns < hasty_ns or not self._look(strange, t_ns):
                 return False
         self._calls += 1
         self._last_ns = t_ns
         opening = self._calls < ROLL_OPENING_CALLS
         self.next_ns = t_ns + (ROLL_OPENING_PERIOD_NS if opening else ROLL_CALM_PERIOD_NS)
         return True
+
+    def _look(self, strange: Callable[[], bool], t_ns: int) -> bool:
+        if self._looked_ns is not None and t_ns < self._looked_ns + ROLL_LOOK_NS:
+            return False
+        self._looked_ns = t_ns
+        return strange()
 
 
 def unexplained(fleet: FleetView, unknown_heard: bool) -> bool:

@@ -42,6 +42,13 @@ def test_a_stranger_hastens_the_roll() -> None:
     assert gaps == {ROLL_HASTE_PERIOD_NS}
 
 
+def test_between_calls_the_fleet_is_looked_at_ten_times_a_second_at_most() -> None:
+    roll, looks = RollCaller(), []
+    for t_ns in range(0, 5_000_000_000, 1_000_000):
+        roll.due(lambda: bool(looks.append(1)), t_ns)
+    assert 20 < len(looks) <= 50
+
+
 def test_hurry_calls_at_the_next_chance() -> None:
     roll = RollCaller()
     assert [roll.due(lambda: False, 300_000_000 * count) for count in range(5)] == [True] * 4 + [
