@@ -2,9 +2,11 @@
 
 import itertools
 from dataclasses import replace
+from pathlib import Path
 
 import pytest
 
+import protocol
 from protocol.codes import Activity
 from sim_link import mechanics
 from sim_link.drive import NEXT_ACTIVITY, Cue, Drive
@@ -214,3 +216,17 @@ def test_a_step_with_nothing_due_is_our_mistake() -> None:
         drive.step()
     with pytest.raises(SimStateError):
         drive._enter_braking(0)
+
+
+def test_the_wire_document_s_table_of_activities_is_the_drive_s() -> None:
+    """WIRE.md, "What a module does, and what changes it"; what is staged is works.py's."""
+    text = Path(protocol.__file__).with_name("WIRE.md").read_text(encoding="utf-8")
+    table = text.split("### What a module does, and what changes it")[1].split("### ")[0]
+    rows = [
+        [cell.strip() for cell in line[1:-1].split("|")]
+        for line in table.splitlines()
+        if line.startswith("| ") and not line.startswith("| from")
+    ]
+    told = {(before, after) for before, _, after in rows if "STAGED" not in (before, after)}
+    done = {(before.name, after.name) for (before, _), after in NEXT_ACTIVITY.items()}
+    assert told == done
