@@ -15,7 +15,7 @@ from sim_link.errors import SimStateError
 from sim_link.measure import Reporter, _field, facts, wheel_rpm
 from sim_link.mechanics import MotionResult
 from sim_link.randomness import Draws
-from tests.support.sim_boxes import BOOT, boxed
+from tests.support.boxes import BOOT, boxed
 from tests.support.virtual_console import CONSOLE, MS, S, spec_of
 
 COMMAND = Pivot(1000, 5, 3, 0x1234, 2_000_000_000, 0, 1, 1, 6000)

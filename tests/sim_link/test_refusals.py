@@ -22,7 +22,7 @@ from sim_link.box import Boot, Box
 from sim_link.mechanics import MotionResult
 from sim_link.module_time import ModuleTime
 from sim_link.refusals import Look, refusal
-from tests.support.sim_boxes import boxed
+from tests.support.boxes import boxed
 from tests.support.virtual_console import CONSOLE, EPOCH, PAVER, S, permit, spec_of
 
 LATEST_MS = 2_000_000_000
