@@ -21,24 +21,6 @@ enum {
     TW_SAY_TELEMETRY = 1u << 11
 };
 
-/* Reports that tw_fields.c has tables of. */
-typedef enum {
-    TW_PRESENCE = 0,
-    TW_NAMEPLATE,
-    TW_TELEMETRY,
-    TW_STOPPED,
-    TW_ECHO,
-    TW_LOCK_STATE,
-    TW_FACTS,
-    TW_SETTING_VALUE,
-    TW_FAULT_NOTICE,
-    TW_TRACE_CHUNK
-} tw_report;
-
-/* tw_fields.c: write a report into the frame, without its addresses; returns its length. given:
- * the numbers that lie nowhere in the module, in the order of their fields; NULL for none. */
-uint8_t tw_write(tw_module *module, tw_report report, const int32_t *given);
-
 /* tw_report.c: say all that is to be said. payload: what was heard, NULL for none; its TraceAsk
  * is used up. */
 void tw_flush(tw_module *module, uint8_t *payload);

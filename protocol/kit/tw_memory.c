@@ -100,51 +100,51 @@ static uint8_t envelope_fault(const tw_memory *memory, const uint8_t *payload, u
     return fault;
 }
 
-/* Copy all behind the number of an Answer or Facts; returns the whole length of such a one. */
-static uint8_t copy_rest(uint8_t *to, const uint8_t *from, uint8_t code)
+/* The reply at a place once more; begin_reply has been. */
+static uint8_t again(const tw_reply *remembered, uint8_t *reply)
 {
-    const uint8_t length = code == TW_CODE_FACTS ? TW_LEN_FACTS : TW_LEN_ANSWER;
-    memcpy(to, from, (size_t)(length - AT_REST));
+    const uint8_t length =
+        remembered->code == TW_CODE_FACTS ? TW_LEN_FACTS : (uint8_t)TW_LEN_ANSWER;
+    reply[TW_AT_CODE] = remembered->code;
+    memcpy(reply + AT_REST, remembered->rest, (size_t)(length - AT_REST));
     return length;
-}
-
-/* What commands and queries have alike: the remembered reply again, or else one of this state.
- * Returns 0 for a number that is new; it is now the newest. */
-static uint8_t reply_to(tw_memory *memory, const uint8_t *payload, uint8_t state, uint8_t reason,
-                        uint8_t *reply)
-{
-    const uint16_t number = tw_get16(payload + AT_NUMBER);
-    begin_reply(payload, reply);
-    if (reason == TW_REASON_NONE) {
-        const uint8_t place = find(memory, number);
-        if (place < TW_REPLIES) {
-            const tw_reply *kept = &memory->replies[place];
-            reply[TW_AT_CODE] = kept->code;
-            return copy_rest(reply + AT_REST, kept->rest, kept->code);
-        }
-        if (number != 0u && !has_passed(memory, number)) {
-            take(memory, number);
-            return 0;
-        }
-        if (state == TW_STATE_REFUSED) {
-            reason = TW_REASON_NUMBER_PASSED;
-        }
-    }
-    return tw_end_answer(reply, state, reason, 0);
 }
 
 uint8_t tw_memory_judge(tw_memory *memory, const uint8_t *payload, uint8_t owned,
                         uint8_t reply[TW_REPLY_BYTES])
 {
-    return reply_to(memory, payload, TW_STATE_REFUSED, envelope_fault(memory, payload, owned), reply);
+    const uint16_t number = tw_get16(payload + AT_NUMBER);
+    uint8_t reason = envelope_fault(memory, payload, owned);
+    begin_reply(payload, reply);
+    if (reason == TW_REASON_NONE) {
+        const uint8_t place = find(memory, number);
+        if (place < TW_REPLIES) {
+            return again(&memory->replies[place], reply);
+        }
+        if (!has_passed(memory, number)) {
+            take(memory, number);
+            return 0;
+        }
+        reason = TW_REASON_NUMBER_PASSED;
+    }
+    return tw_end_answer(reply, TW_STATE_REFUSED, reason, 0);
 }
 
 uint8_t tw_memory_query(tw_memory *memory, const uint8_t *payload, uint8_t reply[TW_REPLY_BYTES])
 {
-    const uint8_t length =
-        reply_to(memory, payload, TW_STATE_UNKNOWN, name_fault(memory, payload), reply);
-    /* A new number is taken all the same, so that "unknown" is final. */
-    return length > 0u ? length : tw_end_answer(reply, TW_STATE_UNKNOWN, TW_REASON_NONE, 0);
+    const uint16_t number = tw_get16(payload + AT_NUMBER);
+    const uint8_t reason = name_fault(memory, payload);
+    begin_reply(payload, reply);
+    if (reason == TW_REASON_NONE) {
+        const uint8_t place = find(memory, number);
+        if (place < TW_REPLIES) {
+            return again(&memory->replies[place], reply);
+        }
+        if (number != 0u && !has_passed(memory, number)) {
+            take(memory, number); /* so that "unknown" is final */
+        }
+    }
+    return tw_end_answer(reply, TW_STATE_UNKNOWN, reason, 0);
 }
 
 void tw_memory_remember(tw_memory *memory, const uint8_t *reply)
@@ -161,7 +161,8 @@ void tw_memory_remember(tw_memory *memory, const uint8_t *reply)
     tw_reply *kept = &memory->replies[place];
     kept->number = number;
     kept->code = reply[TW_AT_CODE];
-    (void)copy_rest(kept->rest, reply + AT_REST, kept->code);
+    memcpy(kept->rest, reply + AT_REST,
+           (size_t)((kept->code == TW_CODE_FACTS ? TW_LEN_FACTS : TW_LEN_ANSWER) - AT_REST));
 }
 
 uint16_t tw_memory_accepted(const tw_memory *memory)

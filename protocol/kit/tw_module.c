@@ -141,7 +141,6 @@ static void dispatch(tw_module *module, const uint8_t *payload)
     case TW_CODE_PROBE:
         if (names_me(module, payload)) {
             tw_hear_probe(&module->allegiance, payload, module->ms);
-            module->asked = tw_get16(payload + TW_AT_PROBE_SEQUENCE);
             module->says |= TW_SAY_ECHO;
         }
         break;

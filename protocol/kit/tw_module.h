@@ -66,7 +66,7 @@ typedef struct {
     uint16_t battery_low_mV; /* as delivered; a setting */
     uint16_t calibration;
     uint8_t identity[8]; /* as on the wire, low byte first */
-    uint8_t name[TW_TEXT_BYTES]; /* name and kind are sent in one piece */
+    uint8_t name[TW_TEXT_BYTES];
     uint8_t kind[TW_TEXT_BYTES];
 } tw_plate;
 
@@ -106,7 +106,6 @@ typedef struct {
     tw_work work;
     uint16_t part_us;
     uint16_t sequence;
-    uint16_t asked;     /* the last Probe's, which its Echo gives back */
     uint16_t idle_mV;   /* battery without load */
     uint32_t ms;        /* module time, modulo 2^32 */
     uint32_t since_ms;  /* when the activity began, or what it waits for was last not so */

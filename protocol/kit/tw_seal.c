@@ -2,8 +2,6 @@
 
 #include <string.h>
 
-#if TW_WITH_SEAL
-
 #define BLOCK_BYTES 64u
 #define SEALED_BIT 0x80u
 
@@ -52,9 +50,8 @@ static uint32_t scheduled(uint32_t *w, uint8_t i)
     return w[i & 15u];
 }
 
-/* One block (FIPS 180-4 section 6.2.2), added to the hash so far in from. What was in state before
- * stands in the block afterwards: where from is another hash, nothing is lost (tw_tag lives on
- * that). */
+/* One block (FIPS 180-4 section 6.2.2), added to the hash so far in from. What was in state before stands in the block
+ * afterwards: where from is another hash, nothing is lost (tw_tag lives on that). */
 static void take_block(sha256 *sum, const uint32_t *from)
 {
     uint32_t s[8];
@@ -215,5 +212,3 @@ uint8_t tw_seal(const tw_keys *keys, tw_counter *counter, uint8_t *payload, uint
     (void)tw_tag(keys->keys[slot], payload, covered);
     return (uint8_t)(covered + TW_TAG_BYTES);
 }
-
-#endif

@@ -12,18 +12,17 @@
 
 #include "tw_message.h"
 
-/* 0 leaves the seal out: then a module that has keys obeys nothing and says nothing, so that a
- * build without it is never mistaken for one that is sealed. */
-#ifndef TW_WITH_SEAL
-#define TW_WITH_SEAL 1
-#endif
-
 #define TW_KEY_BYTES 32u
 #define TW_SLOTS 8u
 #define TW_TAG_BYTES 8u
 #define TW_SEAL_BYTES 16u
 #define TW_MAX_SEALED (TW_MAX_UNSEALED + 16)
 #define TW_MAX_COVERED (TW_MAX_UNSEALED + 8)
+
+/* The tag over at most TW_MAX_COVERED bytes: the first 8 bytes of HMAC-SHA-256 (RFC 2104, FIPS 180-4), laid by
+ * exclusive or upon the 8 bytes behind them. Zeros become the tag; the right tag becomes zeros.
+ * Returns 0 where it did, and takes the same time wherever it did not. */
+uint8_t tw_tag(const uint8_t key[TW_KEY_BYTES], uint8_t *covered, uint8_t length);
 
 /* Keys by slot; keys[slot] may be NULL. */
 typedef struct {
@@ -61,13 +60,6 @@ typedef struct {
     uint64_t seen;  /* bit n: edge - n was seen */
 } tw_gate;
 
-#if TW_WITH_SEAL
-
-/* The tag over at most TW_MAX_COVERED bytes: the first 8 bytes of HMAC-SHA-256 (RFC 2104, FIPS
- * 180-4), laid by exclusive or upon the 8 bytes behind them. Zeros become the tag; the right tag
- * becomes zeros. Returns 0 where it did, and takes the same time wherever it did not. */
-uint8_t tw_tag(const uint8_t key[TW_KEY_BYTES], uint8_t *covered, uint8_t length);
-
 /* The module follows this epoch from now on; another one than before must prove itself. */
 void tw_gate_follow(tw_gate *gate, uint32_t epoch);
 
@@ -82,28 +74,5 @@ tw_verdict tw_gate_admit(tw_gate *gate, const tw_keys *keys, uint8_t *payload, u
  * behind it. Returns the length, 0 where it cannot be: too long, no key in the sending slot, or
  * the opening's counters are used up. */
 uint8_t tw_seal(const tw_keys *keys, tw_counter *counter, uint8_t *payload, uint8_t length);
-
-#else /* TW_WITH_SEAL */
-
-static inline void tw_gate_follow(tw_gate *gate, uint32_t epoch)
-{
-    gate->epoch = epoch;
-}
-
-static inline tw_verdict tw_gate_admit(tw_gate *gate, const tw_keys *keys, uint8_t *payload,
-                                       uint8_t *length)
-{
-    (void)gate, (void)keys, (void)payload, (void)length;
-    return TW_UNKNOWN_SLOT;
-}
-
-static inline uint8_t tw_seal(const tw_keys *keys, tw_counter *counter, uint8_t *payload,
-                              uint8_t length)
-{
-    (void)keys, (void)counter, (void)payload, (void)length;
-    return 0;
-}
-
-#endif /* TW_WITH_SEAL */
 
 #endif

@@ -4,8 +4,6 @@
 
 #include "tw_message.h"
 
-#if TW_WITH_TRACE
-
 /* Offsets in the head's data and in a sample, WIRE.md, "Traces". */
 enum { AT_PERIOD_US = 0, AT_SAMPLES = 4, AT_BRAKE_SAMPLE = 6, AT_STARTED_MS = 8, SAMPLE_BYTES = 8 };
 
@@ -94,5 +92,3 @@ void tw_trace_chunk(const tw_trace *trace, uint16_t chunk, uint8_t data[TW_CHUNK
         tw_put16(data + at + 6, sample->battery_mV);
     }
 }
-
-#endif

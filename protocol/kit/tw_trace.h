@@ -13,11 +13,6 @@
 
 #define TW_TRACE_PERIOD_MS 4u
 
-/* 0 leaves traces out: then there never is one, and a TraceAsk is told so. */
-#ifndef TW_WITH_TRACE
-#define TW_WITH_TRACE 1
-#endif
-
 /* One sample as in WIRE.md; signs as in Facts and Telemetry. */
 typedef struct {
     int16_t wheel_rpm;
@@ -39,8 +34,6 @@ typedef struct {
     uint8_t whole;   /* 1: the motion is over, and the trace may be asked for */
 } tw_trace;
 
-#if TW_WITH_TRACE
-
 /* Forget what was kept, and what is under way. */
 void tw_trace_clear(tw_trace *trace);
 
@@ -60,51 +53,5 @@ uint16_t tw_trace_chunks(const tw_trace *trace, uint32_t epoch, uint16_t number)
 
 /* Write the data of one of these chunks. */
 void tw_trace_chunk(const tw_trace *trace, uint16_t chunk, uint8_t data[TW_CHUNK_BYTES]);
-
-#else /* TW_WITH_TRACE */
-
-static inline void tw_trace_clear(tw_trace *trace)
-{
-    (void)trace;
-}
-
-static inline void tw_trace_begin(tw_trace *trace, uint32_t epoch, uint16_t number, uint32_t now_ms)
-{
-    (void)trace, (void)epoch, (void)number, (void)now_ms;
-}
-
-static inline uint8_t tw_trace_due(const tw_trace *trace, uint32_t now_ms)
-{
-    (void)trace, (void)now_ms;
-    return 0;
-}
-
-static inline void tw_trace_take(tw_trace *trace, const tw_sample *sample)
-{
-    (void)trace, (void)sample;
-}
-
-static inline void tw_trace_brake(tw_trace *trace)
-{
-    (void)trace;
-}
-
-static inline void tw_trace_end(tw_trace *trace)
-{
-    (void)trace;
-}
-
-static inline uint16_t tw_trace_chunks(const tw_trace *trace, uint32_t epoch, uint16_t number)
-{
-    (void)trace, (void)epoch, (void)number;
-    return 0;
-}
-
-static inline void tw_trace_chunk(const tw_trace *trace, uint16_t chunk, uint8_t *data)
-{
-    (void)trace, (void)chunk, (void)data;
-}
-
-#endif /* TW_WITH_TRACE */
 
 #endif

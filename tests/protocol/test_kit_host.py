@@ -1,8 +1,11 @@
 """Whole modules in C alone, driven over a pseudo-terminal by the Python side's own protocol."""
 
+import json
 import os
 import subprocess
 import time
+from collections.abc import Iterator
+from contextlib import contextmanager
 from pathlib import Path
 from typing import Any
 
@@ -26,6 +29,7 @@ from protocol.message import (
     SettingAsk,
     SettingValue,
     SettingWrite,
+    Spin,
     Stop,
     Stopped,
     Telemetry,
@@ -34,18 +38,54 @@ from protocol.message import (
     encode,
     field_text,
 )
+from protocol.seal import KeyRing
 from protocol.trace import TraceFetch
 from tests.support.kit_build import built
-from tests.support.kit_host import CONSOLE, EPOCH, HostLine, Orders, host, line_to, tally_of
+from tests.support.kit_host import CONSOLE, EPOCH, HostLine, host
 
 ROOT = Path(__file__).parents[2]
 KEY_FILE = f'# for a test\n[[key]]\nslot = 0\nhex = "{bytes(range(32)).hex()}"\n'
+FORWARD = 1
+FLOOR = 1
 
 
 @pytest.fixture(scope="module")
 def program(tmp_path_factory: pytest.TempPathFactory) -> Path:
     """The host program, built aside."""
     return built(tmp_path_factory, "tw_host")
+
+
+@contextmanager
+def line_to(
+    program: Path, *words: str, keys: KeyRing | None = None, epoch: int = EPOCH
+) -> Iterator[HostLine]:
+    with host(program, *words) as path:
+        line = HostLine(path, keys, epoch)
+        try:
+            yield line
+        finally:
+            line.close()
+
+
+class Orders:
+    """Commands to one module, numbered."""
+
+    def __init__(self, line: HostLine, me: Presence) -> None:
+        self.line, self.me, self.number = line, me, 0
+
+    def envelope(self) -> tuple[int, int, int, int]:
+        self.number += 1
+        return self.line.epoch, self.me.boot, self.number, self.me.identity & 0xFFFF
+
+    def pivot(self, speed_rpm: int = 6_000) -> Pivot:
+        return Pivot(*self.envelope(), self.line.latest_ms(), 0, FLOOR, FORWARD, speed_rpm)
+
+    def spin(self, speed_rpm: int, hold_ms: int) -> Spin:
+        return Spin(*self.envelope(), self.line.latest_ms(), speed_rpm, hold_ms)
+
+
+def tally_of(path: Path) -> list[dict[str, Any]]:
+    return [json.loads(text) for text in path.read_text().splitlines()]
 
 
 def test_a_roll_call_is_answered_by_each_of_several(program: Path) -> None:

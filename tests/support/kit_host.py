@@ -4,7 +4,6 @@ Owns the process and the way from messages to bytes and back, by our own protoco
 nothing of what a module should do. While it waits it renews the drive permit, if it was told to.
 """
 
-import json
 import os
 import select
 import subprocess
@@ -22,11 +21,9 @@ from protocol.message import (
     Message,
     Packet,
     Permit,
-    Pivot,
     Presence,
     Probe,
     RollCall,
-    Spin,
     decode,
     encode,
 )
@@ -37,9 +34,6 @@ EPOCH: Final = 1_700_000_000
 CONSOLE: Final = 0x0A11CE01
 PATIENCE_S: Final = 15.0
 """What a test waits at most; a module answers in milliseconds, a motion takes some seconds."""
-
-FORWARD: Final = 1
-FLOOR: Final = 1
 
 _BOUND_MS: Final = 20
 _RENEW_S: Final = 0.125
@@ -183,41 +177,3 @@ def host(program: Path, *words: str) -> Iterator[str]:
         finally:
             process.terminate()
             assert process.wait(PATIENCE_S) == 0
-
-
-@contextmanager
-def line_to(
-    program: Path, *words: str, keys: KeyRing | None = None, epoch: int = EPOCH
-) -> Iterator[HostLine]:
-    """A line to a program of its own, ended with it."""
-    with host(program, *words) as path:
-        line = HostLine(path, keys, epoch)
-        try:
-            yield line
-        finally:
-            line.close()
-
-
-class Orders:
-    """Commands to one module, numbered."""
-
-    def __init__(self, line: HostLine, me: Presence) -> None:
-        self.line, self.me, self.number = line, me, 0
-
-    def envelope(self) -> tuple[int, int, int, int]:
-        """Epoch, boot, the next number, identity bits."""
-        self.number += 1
-        return self.line.epoch, self.me.boot, self.number, self.me.identity & 0xFFFF
-
-    def pivot(self, speed_rpm: int = 6_000) -> Pivot:
-        """Forward on the floor, to start within five seconds."""
-        return Pivot(*self.envelope(), self.line.latest_ms(), 0, FLOOR, FORWARD, speed_rpm)
-
-    def spin(self, speed_rpm: int, hold_ms: int) -> Spin:
-        """To start within five seconds."""
-        return Spin(*self.envelope(), self.line.latest_ms(), speed_rpm, hold_ms)
-
-
-def tally_of(path: Path) -> list[dict[str, Any]]:
-    """What the program's own witness saw carried out, in order."""
-    return [json.loads(text) for text in path.read_text().splitlines()]

@@ -1,12 +1,16 @@
 /* A box: a wheel, a body and a cell made up for one module. Simple, and plausible: not a model of
  * any machine. Every motion draws its luck from the seed. */
 #include <math.h>
+#include <string.h>
 #include <time.h>
 
 #include "host.h"
 
 #define PI 3.14159265358979323846
+#define WHEEL_MAX_RPM 9000.0
+#define SPIN_UP_S 1.2       /* from rest to its limit, with all the motor has */
 #define LAG_S 0.04          /* time constant with which it comes to a speed, first order */
+#define REST_S 2.5          /* from its limit gently back */
 #define BRAKE_S 0.035       /* from its limit, with the brake */
 #define STANDING_RPM 1.0    /* below this the sensor sees no pulses */
 #define TURNS_OVER_RPM 4200.0
@@ -22,6 +26,20 @@ uint64_t now_ns(void)
     struct timespec now;
     (void)clock_gettime(CLOCK_MONOTONIC, &now);
     return (uint64_t)now.tv_sec * UINT64_C(1000000000) + (uint64_t)now.tv_nsec;
+}
+
+/* A boot number from the system's random source, not 0; 0 where there is none. */
+uint32_t draw_boot(void)
+{
+    uint32_t boot = 0;
+    FILE *file = fopen("/dev/urandom", "rb");
+    if (file != NULL) {
+        if (fread(&boot, sizeof boot, 1, file) != 1) {
+            boot = 0;
+        }
+        (void)fclose(file);
+    }
+    return boot & 0x7FFFFFFFu;
 }
 
 /* A sequence of 64-bit words: a counter, stirred. */
@@ -58,8 +76,7 @@ static double tumbled_deg(const host_box *box, double at_s)
     return tumble->peak_deg * sin(PI * part);
 }
 
-/* The brake is applied: enough speed turns the body over its edge, less lifts it and lets it
- * fall. */
+/* The brake is applied: enough speed turns the body over its edge, less lifts it and lets it fall. */
 static void begin_tumble(host_box *box)
 {
     const double sense = box->rpm < 0.0 ? -1.0 : 1.0;
@@ -125,13 +142,13 @@ void step_box(host_box *box, double step_s)
 
 /* -- Hooks ------------------------------------------------------------------------------------ */
 
-uint32_t box_clock_us(void *context)
+static uint32_t clock_us(void *context)
 {
     const host_box *box = context;
     return (uint32_t)((now_ns() - box->world->start_ns) / 1000u);
 }
 
-void box_set_wheel(void *context, tw_wheel what, int16_t speed_rpm)
+static void set_wheel(void *context, tw_wheel what, int16_t speed_rpm)
 {
     host_box *box = context;
     box->wheel = what;
@@ -139,7 +156,6 @@ void box_set_wheel(void *context, tw_wheel what, int16_t speed_rpm)
     if (what == TW_WHEEL_BRAKE) {
         box->brake_rate = WHEEL_MAX_RPM / BRAKE_S * (1.0 + LUCK * normal(&box->random));
         begin_tumble(box);
-        box->braked = 1;
     }
 }
 
@@ -165,8 +181,7 @@ static double measured(host_box *box, tw_quantity what)
     case TW_TURNED_DDEG:
         return 10.0 * (box->turned_deg + angle_deg);
     case TW_RATE_DPS:
-        return 1000.0 *
-               (tumbled_deg(box, box->now_s + 0.0005) - tumbled_deg(box, box->now_s - 0.0005));
+        return (tumbled_deg(box, box->now_s + 0.0005) - tumbled_deg(box, box->now_s - 0.0005)) / 0.001;
     case TW_BATTERY_MV:
         return battery_mV(box) + normal(&box->random);
     default:
@@ -174,7 +189,89 @@ static double measured(host_box *box, tw_quantity what)
     }
 }
 
-int32_t box_measure(void *context, tw_quantity what)
+static int32_t measure(void *context, tw_quantity what)
 {
     return (int32_t)lround(measured(context, what));
+}
+
+static void light(void *context, uint8_t on)
+{
+    (void)context;
+    (void)on; /* nobody sees it */
+}
+
+static void send(void *context, const uint8_t *frame, uint8_t length)
+{
+    host_world *world = ((host_box *)context)->world;
+    if (uniform(&world->random) < world->options.loss) {
+        return;
+    }
+    write_line(&world->line, frame, length, now_ns());
+    if (uniform(&world->random) < world->options.repeat) {
+        write_line(&world->line, frame, length, now_ns());
+    }
+}
+
+static void carried_out(void *context, uint8_t code, uint16_t number)
+{
+    const host_box *box = context;
+    count_command(box->world, box, code, number);
+}
+
+static uint8_t load(void *context, uint8_t copy, uint8_t bytes[TW_KEPT_BYTES])
+{
+    const host_box *box = context;
+    return (uint8_t)load_kept(box->world, box->place, copy, bytes);
+}
+
+static uint8_t save(void *context, uint8_t copy, const uint8_t bytes[TW_KEPT_BYTES])
+{
+    const host_box *box = context;
+    return (uint8_t)save_kept(box->world, box->place, copy, bytes);
+}
+
+static const tw_hooks hooks = {clock_us, set_wheel, measure, light, send, carried_out, {load, save}};
+
+/* The name of each module after the first has its place behind it, within 12 bytes. */
+static void name_box(host_box *box, const host_options *options)
+{
+    char name[2 * TW_TEXT_BYTES] = {0};
+    char suffix[8] = {0};
+    if (box->place > 0) {
+        (void)snprintf(suffix, sizeof suffix, "-%u", box->place + 1u);
+    }
+    (void)snprintf(name, sizeof name, "%.*s%s", (int)(TW_TEXT_BYTES - strlen(suffix)),
+                   options->name, suffix);
+    memcpy(box->plate.name, name, TW_TEXT_BYTES);
+    memset(name, 0, sizeof name);
+    (void)snprintf(name, sizeof name, "%.12s", options->kind);
+    memcpy(box->plate.kind, name, TW_TEXT_BYTES);
+}
+
+void start_box(host_box *box, host_world *world, unsigned place)
+{
+    const host_options *options = &world->options;
+    const uint64_t identity = options->identity + place;
+    const tw_plate plate = {.hooks = &hooks,
+                            .keys = options->keys ? &world->keys : NULL,
+                            .address = (uint16_t)(options->address + place),
+                            .firmware = 0x0100,
+                            .wheel_max_rpm = (uint16_t)WHEEL_MAX_RPM,
+                            .spin_up_ms = (uint16_t)(SPIN_UP_S * 1000.0),
+                            .rest_ms = (uint16_t)(REST_S * 1000.0),
+                            .telemetry_ms = 500,
+                            .battery_low_mV = 3500,
+                            .calibration = 1,
+                            .can = TW_CAN_FLOOR};
+    memset(box, 0, sizeof *box);
+    box->plate = plate;
+    box->world = world;
+    box->place = place;
+    box->random = options->seed + place * UINT64_C(0xD1B54A32D192ED03);
+    box->face_up = 1;
+    for (size_t at = 0; at < sizeof box->plate.identity; at++) {
+        box->plate.identity[at] = (uint8_t)(identity >> (8 * at));
+    }
+    name_box(box, options);
+    tw_module_start(&box->module, &box->plate, box, draw_boot(), box->samples, SAMPLES);
 }

@@ -42,8 +42,7 @@ static int is_slot(const char *text)
 
 static int read_hex(const char *text, uint8_t key[TW_KEY_BYTES])
 {
-    const size_t end = TW_KEY_BYTES * 2 + 1;
-    if (strlen(text) != end + 1 || text[0] != '"' || text[end] != '"') {
+    if (strlen(text) != TW_KEY_BYTES * 2 + 2 || text[0] != '"' || text[TW_KEY_BYTES * 2 + 1] != '"') {
         return 0;
     }
     for (size_t at = 0; at < TW_KEY_BYTES; at++) {
@@ -155,26 +154,19 @@ static off_t place_of(unsigned place, uint8_t copy)
     return (off_t)(place * 2u + copy) * TW_KEPT_BYTES;
 }
 
-int load_kept(const host_box *box, uint8_t copy, uint8_t *bytes)
+int load_kept(host_world *world, unsigned place, uint8_t copy, uint8_t *bytes)
 {
-    const int file = box->world->store;
-    if (file < 0) {
-        memcpy(bytes, box->kept[copy], TW_KEPT_BYTES);
-        return box->has_kept[copy];
-    }
-    return pread(file, bytes, TW_KEPT_BYTES, place_of(box->place, copy)) == TW_KEPT_BYTES;
+    return world->store >= 0 &&
+           pread(world->store, bytes, TW_KEPT_BYTES, place_of(place, copy)) == TW_KEPT_BYTES;
 }
 
-int save_kept(host_box *box, uint8_t copy, const uint8_t *bytes)
+int save_kept(host_world *world, unsigned place, uint8_t copy, const uint8_t *bytes)
 {
-    const int file = box->world->store;
-    if (file < 0) {
-        memcpy(box->kept[copy], bytes, TW_KEPT_BYTES);
-        box->has_kept[copy] = 1;
-        return 1;
+    if (world->store < 0) {
+        return 1; /* kept as long as the program runs */
     }
-    return pwrite(file, bytes, TW_KEPT_BYTES, place_of(box->place, copy)) == TW_KEPT_BYTES &&
-           fsync(file) == 0;
+    return pwrite(world->store, bytes, TW_KEPT_BYTES, place_of(place, copy)) == TW_KEPT_BYTES &&
+           fsync(world->store) == 0;
 }
 
 void count_command(host_world *world, const host_box *box, uint8_t code, uint16_t number)

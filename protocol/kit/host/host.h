@@ -26,21 +26,7 @@ typedef struct {
     const char *tally;
     double loss;
     double repeat;
-    unsigned faults;
 } host_options;
-
-/* What can be wrong with every module of the program, bits of host_options.faults. */
-enum {
-    FAULT_SILENT = 1,           /* hears and obeys; after its first Nameplate nothing gets out */
-    FAULT_RESTART_ON_BRAKE = 2, /* restarts right after the first time its brake is applied */
-    FAULT_LOST_SENSOR = 4,      /* its inertial unit is lost at that time */
-    FAULT_DROP_STORAGE = 8      /* stores its boot number, and nothing after that */
-};
-
-/* What the wheel of a box can do. */
-#define WHEEL_MAX_RPM 9000.0
-#define SPIN_UP_S 1.2 /* from rest to its limit, with all the motor has */
-#define REST_S 2.5    /* from its limit gently back */
 
 /* Bytes to and from whoever is connected; neither ever blocks. */
 typedef struct {
@@ -82,12 +68,6 @@ typedef struct {
     double turned_deg; /* by tumbles that are over */
     host_tumble tumble;
     double used_mV, heat_C;
-    unsigned faults;
-    int braked; /* 1: the brake was applied since the last look */
-    int called; /* 1: it has answered a roll call */
-    unsigned saves;
-    int has_kept[2]; /* where there is no file: what is kept as long as the program runs */
-    uint8_t kept[2][TW_KEPT_BYTES];
     tw_sample samples[SAMPLES];
 } host_box;
 
@@ -97,8 +77,8 @@ int read_options(int count, char **words, host_options *found);
 /* files.c: each returns 1, or 0 where it cannot, which it has then said. */
 int read_keys(host_world *world);
 int open_files(host_world *world);
-int load_kept(const host_box *box, uint8_t copy, uint8_t *bytes);
-int save_kept(host_box *box, uint8_t copy, const uint8_t *bytes);
+int load_kept(host_world *world, unsigned place, uint8_t copy, uint8_t *bytes);
+int save_kept(host_world *world, unsigned place, uint8_t copy, const uint8_t *bytes);
 void count_command(host_world *world, const host_box *box, uint8_t code, uint16_t number);
 
 /* line.c */
@@ -108,19 +88,11 @@ int read_line(host_line *line, uint8_t *bytes, size_t room, int wait_ms);
 void write_line(host_line *line, const uint8_t *bytes, size_t length, uint64_t now_ns);
 void flush_line(host_line *line, uint64_t now_ns);
 
-/* box.c: the wheel and the body, and the hooks that reach them */
+/* box.c */
+uint32_t draw_boot(void);
 uint64_t now_ns(void);
 double uniform(uint64_t *random); /* 0 to 1 */
-void step_box(host_box *box, double step_s);
-uint32_t box_clock_us(void *context);
-void box_set_wheel(void *context, tw_wheel what, int16_t speed_rpm);
-int32_t box_measure(void *context, tw_quantity what);
-
-/* board.c */
-/* The bit of a fault's name, 0 for none. */
-unsigned fault_of(const char *name);
 void start_box(host_box *box, host_world *world, unsigned place);
-/* Let what is wrong with it happen, once its brake was applied; call it outside the kit. */
-void look_at_brake(host_box *box);
+void step_box(host_box *box, double step_s);
 
 #endif

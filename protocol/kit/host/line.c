@@ -24,8 +24,7 @@ static int make_raw(int file)
     if (tcgetattr(file, &settings) != 0) {
         return 0;
     }
-    settings.c_iflag &=
-        ~(tcflag_t)(IGNBRK | BRKINT | PARMRK | ISTRIP | INLCR | IGNCR | ICRNL | IXON);
+    settings.c_iflag &= ~(tcflag_t)(IGNBRK | BRKINT | PARMRK | ISTRIP | INLCR | IGNCR | ICRNL | IXON);
     settings.c_oflag &= ~(tcflag_t)OPOST;
     settings.c_lflag &= ~(tcflag_t)(ECHO | ECHONL | ICANON | ISIG | IEXTEN);
     settings.c_cflag &= ~(tcflag_t)(CSIZE | PARENB);

@@ -56,7 +56,6 @@ static void run(host_world *world, host_box *boxes)
         for (unsigned place = 0; place < world->options.modules; place++) {
             step_box(&boxes[place], (double)(time_ns - before_ns) * 1e-9);
             tw_module_wake(&boxes[place].module);
-            look_at_brake(&boxes[place]);
         }
         before_ns = time_ns;
         hear(world, boxes, bytes, (size_t)count);

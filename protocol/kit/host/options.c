@@ -7,13 +7,11 @@
 static const char usage[] =
     "usage: tw_host (--pty | --stdio) [--modules N] [--name NAME] [--kind KIND]\n"
     "    [--address A] [--identity I] [--seed N] [--keys FILE] [--store FILE] [--tally FILE]\n"
-    "    [--loss P] [--repeat P] [--fault KIND]...\n"
+    "    [--loss P] [--repeat P]\n"
     "--pty: on a pseudo-terminal, whose path is the first line of output. --modules: how many,\n"
     "1 to 500; their addresses and identities are counted on from the first. --identity: bit 63 is\n"
     "set in any case. --store: a file that keeps what is kept over restarts. --tally: a line is\n"
-    "added for each command as it is carried out. --loss, --repeat: of frames, each way;\n"
-    "0 to 1.\n"
-    "--fault: of every module: silent, restart_on_brake, lost_sensor, drop_storage.\n";
+    "added for each command as it is carried out. --loss, --repeat: of its own frames, 0 to 1.\n";
 
 static int wrong(const char *what, const char *value)
 {
@@ -73,9 +71,6 @@ static int take_number(host_options *found, const char *name, const char *value)
         good = part(value, &found->loss);
     } else if (strcmp(name, "--repeat") == 0) {
         good = part(value, &found->repeat);
-    } else if (strcmp(name, "--fault") == 0) {
-        found->faults |= fault_of(value);
-        good = fault_of(value) != 0;
     } else {
         return 0;
     }
@@ -99,7 +94,7 @@ int read_options(int count, char **words, host_options *found)
         const int taken =
             take_text(found, name, words[at]) ? 1 : take_number(found, name, words[at]);
         if (taken <= 0) {
-            return wrong(taken ? "no such value" : "no such option", name);
+            return wrong(taken ? "out of its range" : "no such option", name);
         }
     }
     found->identity |= UINT64_C(1) << 63; /* simulated, wherever it goes */
