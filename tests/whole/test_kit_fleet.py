@@ -65,15 +65,17 @@ def test_a_sheet_over_both_carries_each_trial_out_once(program: Path, tmp_path: 
     assert document["stopped"] is None
     assert document["simulated"] is True
     assert document["ended"]["unseen"] == document["ended"]["refused"] == 0
+    # A computer that stalls for a second lets a permit lapse: then a motion is cut, and not done.
     rows = ask(
         log,
         "SELECT name, number, outcome FROM commands JOIN modules USING (session, module)"
         " JOIN motions USING (session, command) WHERE name LIKE 'oak%' ORDER BY name, number",
     )
     assert len(rows) == 4
-    assert sorted(tally(tmp_path)) == [(name, number) for name, number, _ in rows]
-    assert {outcome for _, _, outcome in rows} <= {"landed", "short", "over"}
-    simulated = ask(log, "SELECT name, simulated FROM modules WHERE name LIKE 'oak%'")
+    done = [(name, number) for name, number, outcome in rows if outcome != "cut"]
+    assert sorted(tally(tmp_path)) == done
+    assert {outcome for _, _, outcome in rows} <= {"landed", "short", "over", "cut"}
+    simulated = ask(log, "SELECT name, simulated FROM modules WHERE name LIKE 'oak%' ORDER BY 1")
     assert simulated == [("oak", 1), ("oak-2", 1)]
 
 
