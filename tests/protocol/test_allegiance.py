@@ -145,6 +145,38 @@ def test_another_console_knows_nothing_of_clock_and_permit() -> None:
     assert module.permit_left_ms(5) == 0
 
 
+@given(
+    theirs_ms=st.integers(0, U32 - 1),
+    offset_ms=st.integers(0, U32 - 1),
+    bound_ms=st.integers(0, BOUND_UNKNOWN - 1),
+    at_ms=st.integers(0, U32 - 1),
+)
+def test_a_permit_never_comes_to_life_under_another_consoles_clock(
+    theirs_ms: int, offset_ms: int, bound_ms: int, at_ms: int
+) -> None:
+    """One console's permit was heard, and never its clock: so it did not own the module, and
+    stood. Whatever the next one tells, that permit is nothing to it."""
+    module = adopted(at_ms)
+    module.hear_permit(Permit(OURS, theirs_ms), at_ms)
+    later_ms = (at_ms + OWNER_GRACE_MS) % U32
+    assert module.roll_call(EPOCH + 1, THEIRS, later_ms)
+    module.hear_probe(probe(offset_ms, bound_ms, THEIRS), later_ms)
+    assert module.permit_left_ms(later_ms) == 0
+    # Nor does it stand in the way of the new one's, which may be earlier in its own time.
+    expiry_ms = (later_ms - offset_ms + bound_ms + 1_001) % U32
+    module.hear_permit(Permit(THEIRS, expiry_ms), later_ms)
+    assert module.permit_left_ms(later_ms) == 1_000
+
+
+def test_that_property_can_fail() -> None:
+    """The same with the same console: there the permit does come to life, as it should."""
+    module = adopted()
+    module.hear_permit(Permit(OURS, 9_000), 0)
+    assert module.roll_call(EPOCH + 1, OURS, OWNER_GRACE_MS)
+    module.hear_probe(probe(0, 5), OWNER_GRACE_MS)
+    assert module.permit_left_ms(OWNER_GRACE_MS) == 9_000 - 5 - 0 - 1 - 3_000
+
+
 def test_a_newer_epoch_of_the_same_console_keeps_clock_and_permit() -> None:
     module = permitted(expiry_ms=10_000)
     left_ms = module.permit_left_ms(50)

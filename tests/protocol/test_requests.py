@@ -157,6 +157,44 @@ def test_the_whole_of_a_probe_by_hand() -> None:
     assert packed.hex(" ") == "04 03 02 01 08 07 06 05 0a 09 0c 0b 10 0f 0e 0d ff ff"
 
 
+ENVELOPE_HEX = "04 03 02 01 08 07 06 05 0a 09 0c 0b"
+BY_HAND = [
+    (Query(0x01020304, 0x05060708, 0x090A), "04 03 02 01 08 07 06 05 0a 09"),
+    (Permit(0x01020304, 0x05060708), "04 03 02 01 08 07 06 05"),
+    (Rest(0x01020304, 0x05060708, 0x090A, 0x0B0C), ENVELOPE_HEX),
+    (Go(0x01020304, 0x05, 0x06070809), "04 03 02 01 05 09 08 07 06"),
+    (
+        TraceAsk(0x01020304, 0x05060708, 0x090A, 0x0B0C, 0x0D0E, 0x0F101112),
+        f"{ENVELOPE_HEX} 0e 0d 12 11 10 0f",
+    ),
+    (
+        Pivot(0x01020304, 0x05060708, 0x090A, 0x0B0C, 0x0D0E0F10, 17, 18, 1, 0x1314),
+        f"{ENVELOPE_HEX} 10 0f 0e 0d 11 12 01 14 13",
+    ),
+    (
+        # -3000 in two's complement of 16 bits is 0x10000 - 0x0bb8 = 0xf448.
+        Spin(0x01020304, 0x05060708, 0x090A, 0x0B0C, 0x0D0E0F10, -3000, 0x1112),
+        f"{ENVELOPE_HEX} 10 0f 0e 0d 48 f4 12 11",
+    ),
+    (
+        SettingWrite(0x01020304, 0x05060708, 0x090A, 0x0B0C, 4, -2),
+        f"{ENVELOPE_HEX} 04 fe ff ff ff",
+    ),
+    (
+        # RFC 3629: e with diaeresis, U+00EB, is c3 ab in UTF-8.
+        LockOut(0x01020304, 0x05060708, 0x090A, 0x0B0C, "Zo\u00eb".encode()),
+        f"{ENVELOPE_HEX} 5a 6f c3 ab 00 00 00 00 00 00 00 00",
+    ),
+]
+
+
+@pytest.mark.parametrize(("message", "body"), BY_HAND, ids=lambda each: type(each).__name__)
+def test_other_bodies_by_hand(message: Any, body: str) -> None:
+    payload = encode(_packet(message))
+    assert payload[HEADER_BYTES:].hex(" ") == body
+    assert encode(decode(payload)) == payload
+
+
 def test_a_bound_that_is_not_known_is_the_greatest_that_fits() -> None:
     assert BOUND_UNKNOWN == 2**16 - 1
     sent = requests.Probe(1, 2, 3, 4, 0, BOUND_UNKNOWN)

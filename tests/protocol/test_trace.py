@@ -153,6 +153,18 @@ def test_a_question_reaches_no_further_than_its_mask() -> None:
     assert fetch.missing() == (40, 0b1111_1111)
 
 
+@pytest.mark.parametrize(("further", "mask"), [(31, 1 | 1 << 31), (32, 1)])
+def test_the_last_bit_of_a_question_is_its_thirty_second(further: int, mask: int) -> None:
+    """WIRE.md gives `wanted` 32 bits: one more would not go into the message."""
+    fetch, sent = TraceFetch(), chunks(some_trace(150))
+    lacking = (2, 2 + further)
+    for at, each in enumerate(sent):
+        if at not in lacking:
+            fetch.take(each)
+    assert fetch.missing() == (2, mask)
+    assert mask < 2**32
+
+
 def test_a_trace_that_is_not_there_is_told_apart_from_one_that_is_late() -> None:
     fetch = TraceFetch()
     fetch.take(chunk(bytes(24), 0, 0))

@@ -32,12 +32,12 @@ FORMAT = {
     " and may turn its wheel for so long; 0: not at all",
     "module": "a whole module of this identity, address and boot, started at 0 ms of its own time,"
     " and its clock exact: face 1 up, settled, battery full, no fault, wheel limit 9,000 rpm as"
-    " delivered, in no group, and what it takes pivots on the floor. Each step: at at_ms, after"
-    " all that was due up to then, it hears the payload in (empty: nothing); since the step before"
-    " it then sent the payloads out, in any order. Presence, Nameplate, Telemetry, FaultNotice"
-    " and SettingValue are not listed: what it sends of these is left out. Echo has received_us ="
-    " 1000 at_ms and held_us 0. Four characters **** at the end of an Answer stand for the two"
-    " bytes of expect_ms, whatever they are",
+    " delivered, in no group, and of motions it can do pivots on the floor alone. Each step: at"
+    " at_ms, after all that was due up to then, it hears the payload in (empty: nothing); since"
+    " the step before it then sent the payloads out, in any order. Presence, Nameplate, Telemetry,"
+    " FaultNotice and SettingValue are not listed: what it sends of these is left out. Echo has"
+    " received_us = 1000 at_ms and held_us 0. Four characters **** at the end of an Answer stand"
+    " for the two bytes of expect_ms, whatever they are",
     "seal": "payload sealed under key, slot 0, with this opening: the first, then the second time",
     "open": "payload opened by a receiver that has key in slot 0 only",
     "gate": "the gate of a sealed module just started with this boot number. Each step: it follows"

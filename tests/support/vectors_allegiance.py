@@ -90,6 +90,38 @@ def owner_scripts() -> list[tuple[str, list[Step]]]:
             ],
         ),
         (
+            "a-permit-without-a-clock-is-forgotten-too",
+            [
+                (0, call(), *ours, 3000, 0),
+                (0, permit(50_000), *ours, 3000, 0),
+                (3000, call(*theirs), *theirs, 3000, 0),
+                (3000, tell(0, 5, BERT), *theirs, 3000, 0),
+                (3001, permit(9000, BERT), *theirs, 5993, 5993),  # ends at 9000 - 5 - 0 - 1
+            ],
+        ),
+        (
+            "a-new-consoles-permit-may-be-earlier-in-its-own-time",
+            [
+                (0, call(), *ours, 3000, 0),
+                (0, tell(0, 0), *ours, 3000, 0),
+                (0, permit(9000), *ours, 8999, 8999),
+                (8998, call(*theirs), *theirs, 3000, 0),
+                (8998, tell(8000, 5, BERT), *theirs, 3000, 0),
+                (9000, permit(2000, BERT), *theirs, 2998, 994),  # 2000 + 8000 - 5 - 0 - 1
+            ],
+        ),
+        (
+            "zero-is-nobodys-number",
+            [
+                (0, call(EPOCH, 0), 0, 0, 0, 0),
+                (0, tell(0, 5, 0), 0, 0, 0, 0),
+                (0, permit(5000, 0), 0, 0, 0, 0),
+                (1, release(0), 0, 0, 0, 0),
+                (2, call(), *ours, 3000, 0),
+                (3002, call(EPOCH + 1, 0), *ours, 0, 0),
+            ],
+        ),
+        (
             "the-same-console-keeps-clock-and-permit",
             [
                 (0, call(), *ours, 3000, 0),

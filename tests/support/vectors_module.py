@@ -119,6 +119,11 @@ def staged_scripts() -> list[tuple[str, list[Step]]]:
              (30_999, b"", []), (31_000, b"", [answer(1, CUT, NO_PERMIT)])],
         ),
         (
+            "a-start-at-the-latest-time-is-in-time",
+            [*READY, (30, pivot(1, 31_000), accepted(1)), (40, go(31_000), []),
+             (30_999, b"", []), (31_000, b"", [answer(1, CUT, NO_PERMIT)]), (31_001, b"", [])],
+        ),
+        (
             "the-last-go-heard-in-time-counts",
             [*READY, (30, pivot(1, 50_000), accepted(1)), (40, go(31_000), []),
              (50, go(32_000), []), (31_001, b"", []),

@@ -21,8 +21,9 @@ AHEAD_MS, BOUND_MS = 1000, 5
 LATER = EPOCH + 9
 STOP_IN_FORCE, OVER_SPEED, STOPPED, RESTED, BAD_FIELD = 6, 7, 12, 13, 14
 BUSY, OTHER_EPOCH, NUMBER_PASSED, OWNED, TOO_LATE = 5, 2, 4, 15, 16
+UNSUPPORTED = 11
 CLOCK_UNKNOWN, NO_PERMIT, LOCKED_OUT, OTHER_PERSON, READ_ONLY = 17, 18, 20, 21, 22
-FLOOR = 1
+FLOOR, WALL = 1, 2
 ANY_TIME = "****"
 """In place of the two bytes of expect_ms, where modules may differ."""
 
@@ -60,6 +61,20 @@ def pivot(number: int, latest_ms: int = 20_000, **other: int) -> bytes:
         ),
         other.get("to"),
     )
+
+
+def _staged(name: str, number: int, speed_rpm: int) -> bytes:
+    return named(name, (EPOCH, BOOT, number, BITS, 20_000, 3, 1, speed_rpm))
+
+
+def hop(number: int, speed: int = 5000) -> bytes:
+    """A Hop, forward, staged."""
+    return _staged("Hop", number, speed)
+
+
+def twist(number: int, speed: int = 5000) -> bytes:
+    """A Twist, forward, staged."""
+    return _staged("Twist", number, speed)
 
 
 def spin(number: int, latest_ms: int = 20_000, speed_rpm: int = 3000, hold_ms: int = 1000) -> bytes:
