@@ -11,8 +11,9 @@ from typing import Final
 from protocol.allegiance import Allegiance
 from protocol.codes import Activity, Fault, Flags, SettingId, identity_bits
 from protocol.command_memory import CommandMemory
-from protocol.message import LockState, Nameplate, text_field
+from protocol.message import FaultNotice, LockState, Nameplate, text_field
 from sim_link.drive import Drive
+from sim_link.faults import Faults
 from sim_link.fleet_file import ModuleSpec
 from sim_link.module_time import ModuleTime
 from sim_link.settings import Settings
@@ -55,7 +56,7 @@ class Box:
     latched: bool = False
     stop_number: int = 0
     person: bytes = b""
-    faults: set[Fault] = field(default_factory=set)
+    faults: Faults = field(default_factory=Faults)
 
     def battery_low(self, t_ns: int) -> bool:
         """Whether the voltage without load is below what the settings ask for."""
@@ -86,6 +87,16 @@ class Box:
         limit_rpm = self.settings.value(SettingId.WHEEL_LIMIT_RPM)
         name, kind = text_field(self.spec.name), text_field(self.spec.kind.name)
         return Nameplate(self.spec.identity, limit_rpm, FIRMWARE, name, kind)
+
+    def notice(self, fault: Fault, t_ns: int, detail: int = 0) -> FaultNotice:
+        """Let a fault stand from now on; return what is said of it."""
+        self.faults.stand(fault, self.boot.time.ms(t_ns), detail)
+        return self.faults.told(fault, self.boot.number, identity_bits(self.spec.identity))
+
+    def fault_notices(self) -> list[FaultNotice]:
+        """What is said of each fault that stands."""
+        bits = identity_bits(self.spec.identity)
+        return [self.faults.told(fault, self.boot.number, bits) for fault in self.faults]
 
     def lock_state(self) -> LockState:
         """Who has locked it out."""

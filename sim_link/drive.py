@@ -29,6 +29,9 @@ STEADY_NS: Final = 60_000_000
 QUIET_NS: Final = 150_000_000
 """The body must have been quiet so long before the firmware calls a motion over."""
 
+STALLED_NS: Final = 250_000_000
+"""The firmware gives up a wheel that has not moved for so long while the motor pulled."""
+
 _EXPECTED_SETTLE_NS: Final = 1_500_000_000
 _MOTOR_EFFICIENCY: Final = 0.6
 _COPPER_W: Final = 0.3
@@ -84,6 +87,8 @@ class Motion:
     wheel_at_brake_rad_s: float = 0.0
     sag_V: float = 0.0
     result: MotionResult | None = None
+    stalled: bool = False
+    """The wheel did not turn as it was driven, and was given up."""
 
     @property
     def direction(self) -> int:
@@ -101,6 +106,8 @@ class Drive:
         """When the present activity ends by itself; None: it does not."""
         self.motion: Motion | None = None
         """The motion under way or the last one; its result is there once the brake held."""
+        self.stuck = FaultKind.STUCK_WHEEL in spec.faults
+        """Whether something keeps the wheel from turning."""
         self.wheel = Wheel()
         self.body = VirtualBody(spec, draws)
         self.supply = Supply(
@@ -156,7 +163,9 @@ class Drive:
         if t_ns is None:
             raise SimStateError("nothing is due: the drive is still")
         if self.activity is Activity.SPINNING_UP and self.motion is not None:
-            self._cue(Cue.BRAKE_DUE if self.motion.brakes else Cue.HOLD_DUE, t_ns)
+            self.motion.stalled = self.stuck
+            at_speed = Cue.BRAKE_DUE if self.motion.brakes else Cue.HOLD_DUE
+            self._cue(Cue.REST if self.stuck else at_speed, t_ns)
         else:
             self._cue(Cue.DUE, t_ns)
         return self.activity
@@ -214,6 +223,9 @@ class Drive:
 
     def _enter_spinning_up(self, t_ns: int) -> None:
         motion = self._in_hand()
+        if self.stuck:
+            self._pull_in_vain(motion, t_ns)
+            return
         top_rad_s = abs(motion.wheel_rad_s)
         affordable_N_m = _MOTOR_EFFICIENCY * self.supply.battery.drive_W / top_rad_s
         torque_N_m = min(self.gentle_torque_N_m(-motion.direction, t_ns), affordable_N_m)
@@ -262,6 +274,12 @@ class Drive:
         end_ns = self.wheel.ramp(target_rad_s, rate_rad_s2, t_ns)
         self.body.push(torque_N_m, sense, t_ns, end_ns)
         return end_ns
+
+    def _pull_in_vain(self, motion: Motion, t_ns: int) -> None:
+        """Motor against a wheel that is jammed in the body: nothing moves, the windings warm."""
+        self.supply.draw(_COPPER_W, _COPPER_W, t_ns, t_ns)
+        motion.sag_V = self.supply.battery.sag_V(_COPPER_W)
+        self.due_ns = t_ns + STALLED_NS
 
     def _in_hand(self) -> Motion:
         if self.motion is None:

@@ -13,8 +13,6 @@ from typing import Any, Final, get_args
 
 from protocol.codes import (
     CONSOLE_ADDRESS,
-    Activity,
-    Fault,
     Reason,
     SettingId,
     concerns,
@@ -36,6 +34,7 @@ from protocol.message import (
     Release,
     RollCall,
     SettingAsk,
+    SettingWrite,
     Stop,
     Stopped,
     TraceAsk,
@@ -44,8 +43,8 @@ from sim_link.box import Boot, Box
 from sim_link.drive import Drive
 from sim_link.fleet_file import ModuleSpec
 from sim_link.measure import Reporter, wheel_rpm
+from sim_link.mishaps import Mishaps, Restart
 from sim_link.module_time import DRIFT_LIMIT_PPM, ModuleTime
-from sim_link.options import FaultKind
 from sim_link.randomness import Draws
 from sim_link.settings import Settings
 from sim_link.tally import TallyEntry
@@ -76,10 +75,10 @@ class VirtualModule:
         first = Boot(number, spec.identity, ModuleTime(0, self._drift_ppm))
         self.spec = spec
         self.box = Box(spec, Drive(spec, draws), Settings(spec), first)
-        self.works = Works(self.box, draws, self._telemetry, self._fault_notice, tally)
+        self._mishaps = Mishaps(self.box)
+        self.works = Works(self.box, draws, self._mishaps, self._telemetry, tally)
         self._reporter = Reporter(spec.identity, draws)
         self._report_ns = int(self._period_ns * draws.uniform(0, "report phase"))
-        self._faults = set(spec.faults)
         self._called = False
 
     @property
@@ -144,39 +143,44 @@ class VirtualModule:
         return self._out(said)
 
     def _step(self, now_ns: int) -> list[Message]:
+        """Let the drive take its next step, if nothing goes wrong before or at it."""
+        restart = self._mishaps.before_step()
+        if restart is not None:
+            return self._restarted(restart, now_ns)
         activity = self.box.drive.step()
         said = self.works.entered(activity, now_ns)
-        if activity is Activity.BRAKING and FaultKind.RESTART_ON_BRAKE in self._faults:
-            self._faults.discard(FaultKind.RESTART_ON_BRAKE)
-            self._reboot(now_ns)
-            said = [self._telemetry(now_ns)]
-        return said
+        restart = self._mishaps.after_step(activity)
+        return said if restart is None else self._restarted(restart, now_ns)
+
+    def _restarted(self, why: Restart, t_ns: int) -> list[Message]:
+        """Restart by itself, unsaid what was about to be said, and tell why."""
+        self._reboot(t_ns)
+        bits = identity_bits(self.spec.identity)
+        notice = FaultNotice(self.boot, bits, why.fault, 0, 0, why.detail)
+        return [self._telemetry(t_ns), notice, *self.box.fault_notices()]
 
     def restart(self, t_ns: int) -> list[Packet]:
-        """Restart the controller: a new boot number, an empty memory, the wheel to rest."""
+        """Switch it off and on: a new boot number, an empty memory, the wheel to rest."""
         sent = self.wake(t_ns)
         self._reboot(t_ns)
-        return sent + self._out([self._telemetry(t_ns)])
+        return sent + self._out([self._telemetry(t_ns), *self.box.fault_notices()])
 
     def _reboot(self, t_ns: int) -> None:
         time = ModuleTime(t_ns, self._drift_ppm)
         self.box.boot = Boot(self.boot + 1, self.spec.identity, time)
+        self.box.faults.restart()
         self.works.restart()
         self._reporter.restart()
         self.box.drive.recover(t_ns)
 
     def _out(self, said: list[Message]) -> list[Packet]:
-        if FaultKind.SILENT in self._faults and self._called:
+        if self._mishaps.silent and self._called:
             return []
         self._called = self._called or any(type(each) is Nameplate for each in said)
         return [Packet(CONSOLE_ADDRESS, self.spec.address, each) for each in said]
 
     def _telemetry(self, t_ns: int) -> Message:
         return self._reporter.telemetry(self.box, self.works.activity, t_ns)
-
-    def _fault_notice(self, fault: Fault, t_ns: int) -> Message:
-        bits, time_ms = identity_bits(self.spec.identity), self.box.boot.time.ms(t_ns)
-        return FaultNotice(self.boot, bits, fault, int(fault in self.box.faults), time_ms, 0)
 
     # Messages that are no commands
 
@@ -189,8 +193,7 @@ class VirtualModule:
         said: list[Message] = [self._presence(t_ns), box.nameplate()]
         if box.person:
             said.append(box.lock_state())
-        said += [self._fault_notice(fault, t_ns) for fault in sorted(box.faults)]
-        return said + changed
+        return [*said, *box.fault_notices(), *changed]
 
     def _presence(self, t_ns: int) -> Presence:
         box, follows = self.box, self.box.boot.allegiance
@@ -263,7 +266,10 @@ class VirtualModule:
         )
 
     def _command(self, command: Command, t_ns: int) -> list[Message]:
-        return self.works.order(command, t_ns)
+        said = self.works.order(command, t_ns)
+        if isinstance(command, SettingWrite):  # a shorter period holds from now on
+            self._report_ns = min(self._report_ns, t_ns + self._period_ns)
+        return said
 
 
 _HANDLERS: Final[Mapping[type[Any], Callable[[VirtualModule, Any, int], list[Message]]]] = {

@@ -32,6 +32,10 @@ class FaultKind(StrEnum):
     """Its controller restarts right after the first time the brake is applied."""
     LOST_GYRO = "lost_gyro"
     """Its inertial unit no longer answers after the first time the brake is applied."""
+    STUCK_WHEEL = "stuck_wheel"
+    """Its wheel does not turn as the motor drives it, which is noticed at the first try."""
+    BROWN_OUT = "brown_out"
+    """Its supply breaks down the first time its wheel has come to speed, and it restarts."""
     SAME_ADDRESS = "same_address"
     """Answers at the address of its neighbour in the fleet file, as after a slip of the hand."""
 

@@ -1,6 +1,6 @@
 """A module's settings: what it lets a console read and change, and what they may be.
 
-Owns the table and the values that differ from it, which outlast a restart. Knows no commands:
+Owns the table and the present values, which outlast a restart. Knows no commands:
 module and works ask it by number.
 """
 
@@ -54,11 +54,11 @@ class Settings:
 
     def __init__(self, spec: ModuleSpec) -> None:
         self._spec = spec
-        self._written: dict[int, int] = {}
+        self._values: dict[int, int] = {each: row.usual(spec) for each, row in _TABLE.items()}
 
     def value(self, setting: SettingId) -> int:
         """The present value, in the setting's unit."""
-        return self._written.get(setting, _TABLE[setting].usual(self._spec))
+        return self._values[setting]
 
     @property
     def groups(self) -> int:
@@ -77,7 +77,7 @@ class Settings:
 
     def write(self, setting: int, value: int) -> None:
         """Take a value that ``refusal`` lets through."""
-        self._written[setting] = value
+        self._values[setting] = value
 
     def told(self, setting: int, boot: int) -> SettingValue:
         """What is said of a setting, or of one that there is not."""

@@ -1,16 +1,17 @@
 """What a module does about numbered commands: from the envelope to the last word on each.
 
-Owns the commands that were accepted and what is staged, the permit's timer, and the table from
-command to deed. What is done with the wheel is drive.py's; that a number is carried out at most
-once is the command memory's; why one is refused stands in refusals.py. Time is an argument.
+Owns the commands that were accepted, the permit's timer, and the table from command to deed. What
+is done with the wheel is drive.py's, what waits for its Go is staging.py's; that a number is
+carried out at most once is the command memory's; why one is refused stands in refusals.py. Time
+is an argument.
 """
 
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 from typing import Any, Final
 
-from protocol.allegiance import DRIFT_SHIFT, ms_until
-from protocol.codes import Activity, AnswerState, Fault, Reason, SettingId
+from protocol.allegiance import DRIFT_SHIFT
+from protocol.codes import Activity, AnswerState, Reason, SettingId
 from protocol.command_memory import Reply
 from protocol.message import (
     Answer,
@@ -30,9 +31,10 @@ from protocol.message import (
 )
 from sim_link.box import DRIVEN, Box
 from sim_link.measure import facts
-from sim_link.options import FaultKind
+from sim_link.mishaps import Mishaps
 from sim_link.randomness import Draws
 from sim_link.refusals import Look, refusal
+from sim_link.staging import Stage
 from sim_link.tally import TallyEntry
 from sim_link.tracing import TraceStore
 
@@ -61,47 +63,38 @@ class _Owed:
     cut: Reason = Reason.NONE
 
 
-@dataclass(slots=True)
-class _Staged:
-    """A motion that waits. ``start_ms``: module time of its start, None before a Go."""
-
-    command: Motion
-    start_ms: int | None = None
-
-
 class Works:
-    """The commands of one module. ``say``: makes its telemetry; ``tally``: told of each command
-    as it is carried out; ``told_faults``: says a fault that now stands."""
+    """The commands of one module. ``telemetry``: makes its reports; ``tally``: told of each
+    command as it is carried out."""
 
     def __init__(
         self,
         box: Box,
         draws: Draws,
+        mishaps: Mishaps,
         telemetry: Callable[[int], Message],
-        fault_notice: Callable[[Fault, int], Message],
         tally: Callable[[TallyEntry], None] | None,
     ) -> None:
         self.traces = TraceStore()
         self._box = box
         self._draws = draws
+        self._mishaps = mishaps
         self._telemetry = telemetry
-        self._fault_notice = fault_notice
         self._tally = tally
         self._owed: list[_Owed] = []
-        self._staged: _Staged | None = None
-        self._stage_ns: int | None = None
+        self._stage = Stage()
         self._permit_ns: int | None = None
 
     @property
     def activity(self) -> Activity:
         """What the module does, a staged motion included."""
         still = self._box.drive.activity is Activity.STILL
-        return Activity.STAGED if still and self._staged else self._box.drive.activity
+        return Activity.STAGED if still and self._stage.waits else self._box.drive.activity
 
     @property
     def due_ns(self) -> int | None:
         """When ``wake`` is next needed: a stage's start or end, or a look at the permit."""
-        times = [each for each in (self._stage_ns, self._permit_ns) if each is not None]
+        times = [each for each in (self._stage.due_ns, self._permit_ns) if each is not None]
         return min(times, default=None)
 
     def wake(self, t_ns: int) -> list[Message]:
@@ -109,22 +102,21 @@ class Works:
         said: list[Message] = []
         if self._permit_ns is not None and self._permit_ns <= t_ns:
             said += self.look_at_permit(t_ns)
-        if self._stage_ns is not None and self._stage_ns <= t_ns:
-            said += self._stage_due(t_ns)
-        return said
+        return said + self._stage_due(t_ns)
 
     def restart(self) -> None:
         """A new boot: nothing is owed, nothing staged, nothing kept."""
         self._owed.clear()
-        self._unstage()
+        self._stage.erase()
         self._permit_ns = None
         self.traces.clear()
 
     def adopted(self, t_ns: int) -> list[Message]:
         """Another epoch is followed: what was staged under the last one is forgotten."""
-        self._unstage()
         self.traces.clear()
-        return self.look_at_permit(t_ns)
+        erased = self._stage.erase()
+        changed = [] if erased is None else [self._telemetry(t_ns)]
+        return changed + self.look_at_permit(t_ns)
 
     # -- permit --------------------------------------------------------------------------
 
@@ -150,12 +142,12 @@ class Works:
         judged = boot.memory.judge(command, boot.owned(t_ns))
         if isinstance(judged, Reply):
             return [judged.message]
-        engaged = bool(self._owed) or self._staged is not None
+        engaged = bool(self._owed) or self._stage.waits
         reason = refusal(Look(command, self._box, engaged, t_ns))
         if reason is not Reason.NONE:
             return [self._answer(command, AnswerState.REFUSED, reason)]
         if isinstance(command, Motion) and command.stage:
-            return self._stage(command, t_ns)
+            return self._put_on_stage(command, t_ns)
         return _DEEDS[type(command)](self, command, t_ns)
 
     def _pivot(self, pivot: Pivot, t_ns: int) -> list[Message]:
@@ -208,47 +200,28 @@ class Works:
 
     # -- staged motions ------------------------------------------------------------------
 
-    def _stage(self, command: Motion, t_ns: int) -> list[Message]:
-        self._staged = _Staged(command)
-        time = self._box.boot.time
-        until_ms = ms_until(command.latest_ms, time.ms(t_ns))
-        self._stage_ns = time.after_ns(t_ns, until_ms + 1)
-        left_ns = (until_ms + _STAGED_MOTION_MS) * 1_000_000
-        return [
-            self._answer(command, AnswerState.ACCEPTED, left_ns=left_ns),
-            self._telemetry(t_ns),
-        ]
+    def _put_on_stage(self, command: Motion, t_ns: int) -> list[Message]:
+        left_ms = self._stage.put(command, self._box.boot, t_ns) + _STAGED_MOTION_MS
+        answer = self._answer(command, AnswerState.ACCEPTED, left_ns=left_ms * 1_000_000)
+        return [answer, self._telemetry(t_ns)]
 
     def go(self, go: Go, t_ns: int) -> list[Message]:
-        """Take the start of a stage, if it is this console's, in time, and not too late."""
-        boot, staged = self._box.boot, self._staged
-        start_ms = boot.allegiance.module_ms(go.start_ms)
-        followed = go.console == boot.allegiance.console
-        if staged is None or start_ms is None or not followed or go.stage != staged.command.stage:
-            return []
-        left_ms = ms_until(start_ms, boot.time.ms(t_ns))
-        if left_ms > 0 and ms_until(staged.command.latest_ms, start_ms) >= 0:
-            staged.start_ms = start_ms
-            self._stage_ns = boot.time.after_ns(t_ns, left_ms)
+        """Hear when a stage starts."""
+        self._stage.hear(go, self._box.boot, t_ns)
         return []
 
     def _stage_due(self, t_ns: int) -> list[Message]:
         """Start what is staged, after a second look at every interlock; or give it up."""
-        staged = self._staged
-        self._unstage()
-        if staged is None:
+        due = self._stage.take(t_ns)
+        if due is None:
             return []
-        command = staged.command
         reason = Reason.TOO_LATE
-        if staged.start_ms is not None:
-            reason = refusal(Look(command, self._box, False, t_ns))
+        if due.called:
+            reason = refusal(Look(due.command, self._box, bool(self._owed), t_ns))
         if reason is not Reason.NONE:
-            return [self._answer(command, AnswerState.CUT, reason), self._telemetry(t_ns)]
-        return [each for each in _DEEDS[type(command)](self, command, t_ns)
-                if not isinstance(each, Answer)]  # fmt: skip
-
-    def _unstage(self) -> None:
-        self._staged = self._stage_ns = None
+            return [self._answer(due.command, AnswerState.CUT, reason), self._telemetry(t_ns)]
+        begun = _DEEDS[type(due.command)](self, due.command, t_ns)
+        return [each for each in begun if not isinstance(each, Answer)]
 
     # -- ends ----------------------------------------------------------------------------
 
@@ -256,14 +229,13 @@ class Works:
         """Erase what is staged, and start a gentle rest where there is anything to rest; note
         what it cuts short."""
         said: list[Message] = []
-        if self._staged is not None:
-            said.append(self._answer(self._staged.command, AnswerState.CUT, reason))
-            self._unstage()
+        erased = self._stage.erase()
+        if erased is not None:
+            said.append(self._answer(erased, AnswerState.CUT, reason))
             said.append(self._telemetry(t_ns))
         if self._box.drive.rest(t_ns):
             self._permit_ns = None
-            for owed in self._owed:
-                owed.cut = reason
+            self._cut(reason)
             said.append(self._telemetry(t_ns))
         return said
 
@@ -272,18 +244,25 @@ class Works:
         said: list[Message] = []
         if activity is Activity.BRAKING:
             self._count_motion(t_ns)
-            said += self._faults_of_braking(t_ns)
         elif activity is Activity.STILL:
             said += [self._ending(owed, t_ns) for owed in self._owed]
             self._owed.clear()
+        said += self._noticed(activity, t_ns)
         return [*said, self._telemetry(t_ns), *self.look_at_permit(t_ns)]
 
-    def _faults_of_braking(self, t_ns: int) -> list[Message]:
-        box = self._box
-        if FaultKind.LOST_GYRO not in box.spec.faults or Fault.SENSOR_LOST in box.faults:
+    def _noticed(self, activity: Activity, t_ns: int) -> list[Message]:
+        """Say what the firmware now notices to be wrong; what is rested for it is cut short."""
+        fault = self._mishaps.noticed(activity)
+        if fault is None:
             return []
-        box.faults.add(Fault.SENSOR_LOST)
-        return [self._fault_notice(Fault.SENSOR_LOST, t_ns)]
+        if activity is Activity.RESTING:
+            self._cut(Reason.FAULT)
+        return [self._box.notice(fault, t_ns)]
+
+    def _cut(self, reason: Reason) -> None:
+        """Note why what is under way ends early."""
+        for owed in self._owed:
+            owed.cut = reason
 
     def _ending(self, owed: _Owed, t_ns: int) -> Message:
         command = owed.command

@@ -29,6 +29,9 @@ _SIGNAL_dBm: Final = -62
 _NOISE_dBm: Final = -97
 """What a receiver in the invented hall would show; this radio's losses do not hang on them."""
 
+_U16: Final = 0xFFFF
+_U32: Final = 0xFFFF_FFFF
+
 _TO_CONSOLE: Final = -1
 """In place of a module's index: what arrives at the bridge."""
 
@@ -89,7 +92,7 @@ class World:
         self._bridge = FrameDecoder()
         self._t_ns = 0
         self._order = 0
-        self._queue_most = 0
+        self._most_on_air = 0
         self._arrivals: list[tuple[int, int, int, bytes]] = []
         self._wakes: list[tuple[int, int]] = []
         for place in range(len(self._stations)):
@@ -171,7 +174,8 @@ class World:
         return self._by_address.get(destination, ())
 
     def _bridge_hears(self, payload: bytes) -> None:
-        """Answer a question about the bridge itself."""
+        """Answer a question about the bridge itself. In a sealed fleet it answers nothing: it holds
+        no key to seal an answer with, and a console with keys would drop any other."""
         if self.options.keys is not None or len(payload) < HEADER.size:
             return
         if HEADER.unpack_from(payload)[2] == BRIDGE_ADDRESS:
@@ -182,17 +186,16 @@ class World:
                 self._to_console.put(frame(encode(answer)), self._t_ns)
 
     def _bridge_status(self, ask: BridgeAsk) -> BridgeStatus:
-        waiting = min(len(self._arrivals), 0xFFFF)
-        self._queue_most = max(self._queue_most, waiting)
+        """What is on its way over the air, either way, stands for what waits for it."""
         counts = self.counts
         return BridgeStatus(
             sequence=ask.sequence,
-            uptime_ms=self._t_ns // 1_000_000 & 0xFFFF_FFFF,
-            frames_from_console=counts.frames_from_console,
-            frames_to_console=counts.frames_to_console,
-            dropped=counts.dropped_at_bridge,
-            queue=waiting,
-            queue_most=self._queue_most,
+            uptime_ms=self._t_ns // 1_000_000 & _U32,
+            frames_from_console=counts.frames_from_console & _U32,
+            frames_to_console=counts.frames_to_console & _U32,
+            dropped=counts.dropped_at_bridge & _U32,
+            queue=min(len(self._arrivals), _U16),
+            queue_most=min(self._most_on_air, _U16),
             signal_dBm=_SIGNAL_dBm,
             noise_dBm=_NOISE_dBm,
         )
@@ -201,6 +204,7 @@ class World:
         for arrival_ns, data in channel.offer(frame_bytes, self._t_ns):
             self._order += 1
             heapq.heappush(self._arrivals, (arrival_ns, self._order, place, data))
+        self._most_on_air = max(self._most_on_air, len(self._arrivals))
 
     def _arrive(self) -> None:
         _, _, place, data = heapq.heappop(self._arrivals)

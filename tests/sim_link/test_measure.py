@@ -158,7 +158,7 @@ def test_a_wheel_that_hardly_turns_reads_zero() -> None:
 def test_every_standing_condition_has_its_flag() -> None:
     reporter, box = Reporter(1, Draws(1, 9)), box_with(Draws(1, 9))
     box.person, box.latched = b"Ada", True
-    box.faults.add(Fault.STORAGE_BAD)
+    box.faults.stand(Fault.STORAGE_BAD, 0)
     box.settings.write(SettingId.BATTERY_LOW_MV, 4200)
     box.drive.body.brake(600.0, 1, 1, 0)
     assert reporter.telemetry(box, Activity.STAGED, MS).flags == sum(Flags)

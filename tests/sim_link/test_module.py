@@ -302,6 +302,38 @@ def test_restart_gives_a_new_boot_an_empty_memory_and_rests_the_wheel() -> None:
     assert (me.boot, me.epoch, me.stop_number) == (bench.me.boot + 1, EPOCH, 9)
 
 
+def test_after_a_restart_it_follows_nobody_and_holds_nothing() -> None:
+    bench = Bench()
+    bench.module.restart(bench.t_ns)
+    me = bench.say(to_all(RollCall(0, 0)))[0]  # nobody's: answered, not followed
+    assert isinstance(me, Presence)
+    assert (me.epoch, me.console, me.owner_left_ms, me.time_ms) == (0, 0, 0, 0)
+    assert not me.flags & (Flags.PERMITTED | Flags.CLOCK_TOLD)
+    early = bench.order(spin(me, 1)._replace(epoch=0))[0]
+    assert isinstance(early, Answer)
+    assert early.reason == Reason.OTHER_EPOCH
+
+
+@pytest.mark.parametrize("moment", [Activity.SPINNING_UP, Activity.BRAKING, Activity.RESTING])
+def test_a_boot_finds_the_wheel_turning_and_no_brake_of_its_own(moment: Activity) -> None:
+    """A wheel that turns is rested with the motor; a brake that holds goes on holding."""
+    bench = Bench()
+    bench.order(pivot(bench.me, 1, 8000))
+    if moment is Activity.RESTING:
+        bench.run(800 * MS)
+        bench.order(rest(bench.me, 2))
+    while bench.module.drive.activity is not moment:
+        bench.run(MS)
+    bench.run(MS)
+    said = [each.message for each in bench.module.restart(bench.t_ns)] + bench.run()
+    seen = {each.activity for each in said if isinstance(each, Telemetry)}
+    braked = moment is Activity.BRAKING
+    assert (Activity.RESTING in seen, Activity.BRAKING in seen) == (not braked, braked)
+    assert bench.module.drive.wheel.rpm(bench.t_ns) == 0.0
+    assert bench.module.drive.body.posture(bench.t_ns).face_up == (2 if braked else 1)
+    assert of(Facts, said) + of(Answer, said) == []
+
+
 def test_a_restart_does_not_lift_an_all_stop() -> None:
     bench = Bench()
     bench.say(to_all(Stop(2)))

@@ -19,6 +19,7 @@ from protocol.message import (
     Unlock,
 )
 from sim_link.box import Boot, Box
+from sim_link.faults import Faults
 from sim_link.mechanics import MotionResult
 from sim_link.module_time import ModuleTime
 from sim_link.refusals import Look, refusal
@@ -107,7 +108,7 @@ def test_a_person_s_lock_blocks_wheels_and_other_persons() -> None:
 
 def test_a_standing_fault_blocks_wheels() -> None:
     box = box_of()
-    box.faults.add(Fault.SENSOR_LOST)
+    box.faults.stand(Fault.SENSOR_LOST, 0)
     assert reasons_of(box) == both(Reason.FAULT)
 
 
@@ -177,7 +178,7 @@ def test_the_first_reason_wins_in_the_document_s_order() -> None:
     box = boxed(spec_of(PAVER, 5, 0.03))
     box.boot = Boot(7, box.spec.identity, ModuleTime(0))
     box.latched, box.person = True, b"Ada"
-    box.faults.add(Fault.WHEEL_STUCK)
+    box.faults.stand(Fault.WHEEL_STUCK, 0)
     box.drive.start_spin(3000, 60 * S, 0)
     fast = PIVOT._replace(speed_rpm=9999, latest_ms=0)
     seen = [
@@ -188,7 +189,7 @@ def test_the_first_reason_wins_in_the_document_s_order() -> None:
         lambda: None,
         lambda: setattr(box, "latched", False),
         lambda: setattr(box, "person", b""),
-        box.faults.clear,
+        lambda: setattr(box, "faults", Faults()),
         lambda: box.boot.allegiance.roll_call(EPOCH, CONSOLE, 0),
     ):
         take_away()

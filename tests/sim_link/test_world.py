@@ -7,7 +7,16 @@ from pathlib import Path
 import pytest
 
 from protocol.clock import ModuleClock
-from protocol.codes import BRIDGE_ADDRESS, CONSOLE_ADDRESS, Activity, AnswerState, Reason
+from protocol.codes import (
+    BRIDGE_ADDRESS,
+    CONSOLE_ADDRESS,
+    FIRST_GROUP_ADDRESS,
+    Activity,
+    AnswerState,
+    Reason,
+    SettingId,
+    identity_bits,
+)
 from protocol.frame import frame
 from protocol.message import (
     Answer,
@@ -18,7 +27,9 @@ from protocol.message import (
     Facts,
     Nameplate,
     Packet,
+    Release,
     RollCall,
+    SettingWrite,
     Stop,
     Stopped,
     Telemetry,
@@ -314,6 +325,67 @@ def test_the_bridge_says_how_it_is_and_passes_the_question_to_nobody() -> None:
     assert status.frames_from_console == counts.frames_from_console
     assert status.queue <= status.queue_most
     assert abs(status.uptime_ms - host.t_ns // MS) < 1_100
+
+
+def test_the_bridge_knows_the_most_that_was_ever_on_its_way() -> None:
+    """Also where nobody asked at that moment: a roll call to 40 boxes at once."""
+    host = VirtualConsole(World(SimOptions(seed=3, modules=40, delay_ms=30.0)))
+    host.call_roll()
+    host.run(2 * S)
+    host.say(Packet(BRIDGE_ADDRESS, CONSOLE_ADDRESS, BridgeAsk(1)))
+    [status] = [p.message for p in host.run(S) if isinstance(p.message, BridgeStatus)]
+    assert status.queue_most >= 40 > status.queue
+
+
+def test_a_frame_to_a_group_is_obeyed_by_its_members_alone() -> None:
+    host = console(seed=3)
+    present = dict(host.call_roll())
+    for address, groups in ((0x11, 0b101), (0x15, 0b100), (0x16, 0b001)):
+        me = present[address]
+        envelope = (EPOCH, me.boot, 1, identity_bits(me.identity))
+        host.say(to_module(SettingWrite(*envelope, SettingId.GROUPS, groups), address))
+    host.run(S)
+    host.say(to_module(Stop(4), FIRST_GROUP_ADDRESS + 2))
+    host.run(S)
+    assert {p.source for p in host.heard if isinstance(p.message, Stopped)} == {0x11, 0x15}
+    latched = {each.spec.address for each in host.world.modules if each.latched}
+    assert latched == {0x11, 0x15}
+
+
+def test_two_consoles_on_one_line_the_second_waits_for_the_first_to_let_go() -> None:
+    host = console(seed=3)
+    host.call_roll()
+    host.say(to_all(RollCall(EPOCH + 1, CONSOLE + 1)))
+    host.run(S)
+    told = host.present.values()
+    assert {(each.epoch, each.console) for each in told} == {(EPOCH, CONSOLE)}
+    assert all(each.owner_left_ms > 3_000 for each in told)
+    other = spin(host.present[0x10], 1)._replace(epoch=EPOCH + 1)
+    host.say(to_module(other, 0x10))
+    host.run(S)
+    [refused] = host.replies(0x10, 1)
+    assert isinstance(refused, Answer)
+    assert refused.reason == Reason.OWNED
+    host.say(to_all(Release(CONSOLE)))
+    host.say(to_all(RollCall(EPOCH + 1, CONSOLE + 1)))
+    host.run(S)
+    told = host.present.values()
+    assert {(each.epoch, each.console) for each in told} == {(EPOCH + 1, CONSOLE + 1)}
+
+
+def test_every_module_s_clock_runs_a_little_differently_and_the_same_each_time() -> None:
+    def drifts_ppm(seed: int) -> list[float]:
+        hour_us = 3_600_000_000
+        found = [
+            each.box.boot.time.us(hour_us * 1_000) for each in console(seed=seed).world.modules
+        ]
+        return [(us - hour_us) / 3_600 for us in found]
+
+    drifts = drifts_ppm(3)
+    assert len({round(each, 2) for each in drifts}) == 8
+    assert all(abs(each) <= 40.0 for each in drifts)
+    assert min(drifts) < -5.0 < 5.0 < max(drifts)
+    assert drifts == drifts_ppm(3) != drifts_ppm(4)
 
 
 def test_a_bridge_without_keys_answers_nothing_in_a_sealed_fleet(tmp_path: Path) -> None:
