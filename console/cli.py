@@ -36,6 +36,20 @@ rate_option = click.option(
     type=click.IntRange(min=300),
     help="Line rate of the serial port, baud.",
 )
+air_rate_option = click.option(
+    "--air-rate",
+    "air_rate_bps",
+    type=click.IntRange(min=300),
+    metavar="BPS",
+    help="What the radio carries, bits a second; telemetry is then shared out in slots.",
+)
+duty_option = click.option(
+    "--duty",
+    "duty_percent",
+    type=click.FloatRange(min=0.0, max=100.0, min_open=True),
+    metavar="PERCENT",
+    help="Most of the air's time that telemetry may take, with --air-rate; 25.",
+)
 keys_option = click.option(
     "--keys",
     metavar="FILE",
@@ -67,6 +81,8 @@ def tumblewire() -> None:
 @log_option
 @operator_option
 @rate_option
+@air_rate_option
+@duty_option
 @pace_option
 @keys_option
 def live(links: tuple[str, ...], log: Path | None, **rest: Any) -> int:
@@ -83,6 +99,8 @@ def live(links: tuple[str, ...], log: Path | None, **rest: Any) -> int:
 @log_option
 @operator_option
 @rate_option
+@air_rate_option
+@duty_option
 @pace_option
 @keys_option
 @json_option
@@ -156,6 +174,38 @@ def ports(as_json: bool) -> int:
     from console.commands.ports import list_ports
 
     return list_ports(as_json)
+
+
+@tumblewire.command(**example("tumblewire predict --kind practice:paver --motion pivot"))
+@click.option("--kind", required=True, metavar="FILE[:NAME]", help="Fleet file, and which kind.")
+@click.option(
+    "--motion",
+    required=True,
+    type=click.Choice(("pivot", "hop", "twist")),
+    help="Over an edge, off the floor, or on the spot.",
+)
+@click.option(
+    "--setting", type=click.Choice(("floor", "wall", "crest", "flat")), help="Of a pivot; floor."
+)
+@click.option(
+    "--speed", "speed_rpm", type=float, metavar="RPM", help="Wheel speed; left out: the least."
+)
+@click.option(
+    "--angle",
+    "angle_deg",
+    type=click.FloatRange(min=1.0, max=3600.0),
+    metavar="DEGREES",
+    help="How far a twist should turn; 90.",
+)
+@json_option
+def predict(as_json: bool, **question: Any) -> int:
+    """What speed a motion needs, what comes of one, and why it may be impossible.
+
+    FILE is a fleet file, or the name of a shipped fleet.
+    """
+    from console.commands.predict import predict as print_prediction
+
+    return print_prediction(as_json=as_json, **question)
 
 
 def _fleet_options(command: Callable[..., int]) -> Callable[..., int]:

@@ -100,7 +100,8 @@ class Battery:
         ramp: over a spin-up the current is nearly proportional to it.
         """
         current_A = self.current_A(0.5 * (start_W + end_W))
-        self.charge = max(0.0, self.charge - current_A * duration_s / self._capacity_C)
+        charge = self.charge - current_A * duration_s / self._capacity_C
+        self.charge = min(max(0.0, charge), 1.0)
         return current_A**2 * self.resistance_ohm * duration_s
 
 
@@ -129,13 +130,23 @@ class Warmth:
 class Supply:
     """The cell with the load that it carries at present: constant, or changing steadily."""
 
-    __slots__ = ("_end_W", "_since_ns", "_start_W", "_start_ns", "_until_ns", "battery", "warmth")
+    __slots__ = (
+        "_charger_W",
+        "_end_W",
+        "_since_ns",
+        "_start_W",
+        "_start_ns",
+        "_until_ns",
+        "battery",
+        "warmth",
+    )
 
     def __init__(self, battery: Battery, warmth: Warmth) -> None:
         self.battery = battery
         self.warmth = warmth
         self._start_ns = self._until_ns = self._since_ns = 0
         self._start_W = self._end_W = IDLE_W
+        self._charger_W = 0.0
 
     def draw(self, start_W: float, end_W: float, t_ns: int, until_ns: int) -> None:
         """From ``t_ns`` on draw so much besides the idle load, constant after ``until_ns``."""
@@ -143,16 +154,25 @@ class Supply:
         self._start_W, self._end_W = IDLE_W + start_W, IDLE_W + end_W
         self._start_ns, self._until_ns = t_ns, until_ns
 
+    def charge(self, power_W: float, t_ns: int) -> None:
+        """From ``t_ns`` on take so much from a charger, until the cell is full; 0: none."""
+        self.account(t_ns)
+        self._charger_W = power_W
+
     def load_W(self, t_ns: int) -> float:
-        """Return what is drawn at ``t_ns``."""
+        """Return what is drawn from the cell at ``t_ns``, negative where it is charged."""
+        given_W = self._charger_W if self.battery.charge < 1.0 else 0.0
         if t_ns >= self._until_ns:
-            return self._end_W
+            return self._end_W - given_W
         part = (t_ns - self._start_ns) / (self._until_ns - self._start_ns)
-        return self._start_W + part * (self._end_W - self._start_W)
+        return self._start_W + part * (self._end_W - self._start_W) - given_W
 
     def account(self, t_ns: int) -> None:
         """Take from the cell what was drawn since the last account."""
-        for end_ns in (min(self._until_ns, t_ns), t_ns):
+        if t_ns <= self._since_ns:
+            return
+        steady = self._since_ns >= self._until_ns
+        for end_ns in (t_ns,) if steady else (min(self._until_ns, t_ns), t_ns):
             duration_s = (end_ns - self._since_ns) * 1e-9
             if duration_s > 0.0:
                 loads = self.load_W(self._since_ns), self.load_W(end_ns)

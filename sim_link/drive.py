@@ -16,6 +16,7 @@ from typing import Final
 from protocol.codes import Activity
 from sim_link import mechanics
 from sim_link.battery import Battery, Supply, Warmth
+from sim_link.deed import Deed
 from sim_link.errors import SimStateError
 from sim_link.fleet_file import ModuleSpec
 from sim_link.mechanics import MotionResult
@@ -39,6 +40,10 @@ _COPPER_W: Final = 0.3
 _WINDAGE_W: Final = 0.5
 """Power that holds the wheel at its highest speed; in proportion to the speed squared."""
 _FLASH_W: Final = 0.4
+_CELL_V: Final = 3.8
+"""Of a cell that is half full, about."""
+_CHARGE_H: Final = 2.0
+"""Half of its capacity an hour, as is usual for small cells (common practice of the trade)."""
 _LOW_CHARGE: Final = 0.02
 _SHORTEST_BRAKE_S: Final = 1e-4
 _FACES: Final = (1, 2, 3, 4, 5, 6)
@@ -74,10 +79,11 @@ engaged stays engaged: BRAKING and SETTLING know no REST."""
 
 @dataclass(slots=True)
 class Motion:
-    """One use of the wheel, as the box notes it. ``brakes``: a pivot; otherwise a spin."""
+    """One use of the wheel, as the box notes it. ``deed``: what the brake will be applied for;
+    None for a spin, which is not braked."""
 
     count: int
-    brakes: bool
+    deed: Deed | None
     wheel_rad_s: float
     hold_ns: int
     face_before: int
@@ -115,6 +121,8 @@ class Drive:
             Warmth(2.0 * draws.uniform(0, "warmth"), 0),
         )
         self._kind = spec.kind
+        if FaultKind.CHARGING in spec.faults:
+            self.start_charging(0)
         self._motions = 0
         self._flash_ns = 0
         self._enter: Mapping[Activity, Callable[[int], None]] = {
@@ -132,14 +140,16 @@ class Drive:
         """Speed limit of the wheel, as its kind states it."""
         return self._kind.wheel_max_rpm
 
-    def start_pivot(self, direction: int, speed_rpm: float, t_ns: int) -> int:
-        """Start spinning up for a pivot; return the nanoseconds until it should be over."""
-        self._begin(True, direction * speed_rpm, 0, t_ns)
+    def start_motion(
+        self, direction: int, speed_rpm: float, t_ns: int, deed: Deed = Deed.FLOOR
+    ) -> int:
+        """Start spinning up for a motion; return the nanoseconds until it should be over."""
+        self._begin(deed, direction * speed_rpm, 0, t_ns)
         return self._left_ns(t_ns) + _EXPECTED_SETTLE_NS + QUIET_NS
 
     def start_spin(self, speed_rpm: float, hold_ns: int, t_ns: int) -> int:
         """Start a spin; return the nanoseconds until the wheel should be at rest again."""
-        self._begin(False, speed_rpm, hold_ns, t_ns)
+        self._begin(None, speed_rpm, hold_ns, t_ns)
         torque_N_m = self.gentle_torque_N_m(1 if speed_rpm > 0 else -1, t_ns)
         rest_s = self._kind.wheel_inertia_kg_m2 * abs(speed_rpm) / RPM_A_RAD_S / torque_N_m
         return self._left_ns(t_ns) + hold_ns + int(rest_s * 1e9)
@@ -154,6 +164,24 @@ class Drive:
         """Bring the wheel gently to a stop, if it turns; return whether that starts now."""
         return self._cue(Cue.REST, t_ns)
 
+    def set_charge(self, charge: float | None, t_ns: int) -> None:
+        """Let the cell be so charged from now on; None: almost empty."""
+        self.supply.account(t_ns)
+        self.supply.battery.charge = _LOW_CHARGE if charge is None else charge
+
+    def swap_cell(self, t_ns: int) -> None:
+        """A fresh, full cell is in it from now on."""
+        self.set_charge(1.0, t_ns)
+
+    def start_charging(self, t_ns: int) -> None:
+        """It is on a charger from now on, which would fill an empty cell in some two hours."""
+        capacity_Wh = self._kind.cell_capacity_mAh * _CELL_V / 1_000.0
+        self.supply.charge(capacity_Wh / _CHARGE_H, t_ns)
+
+    def stop_charging(self, t_ns: int) -> None:
+        """It is off the charger."""
+        self.supply.charge(0.0, t_ns)
+
     def step(self) -> Activity:
         """Make the change that is due at ``due_ns`` and return the activity entered.
 
@@ -164,7 +192,7 @@ class Drive:
             raise SimStateError("nothing is due: the drive is still")
         if self.activity is Activity.SPINNING_UP and self.motion is not None:
             self.motion.stalled = self.stuck
-            at_speed = Cue.BRAKE_DUE if self.motion.brakes else Cue.HOLD_DUE
+            at_speed = Cue.BRAKE_DUE if self.motion.deed else Cue.HOLD_DUE
             self._cue(Cue.REST if self.stuck else at_speed, t_ns)
         else:
             self._cue(Cue.DUE, t_ns)
@@ -201,11 +229,11 @@ class Drive:
         self._enter[after](t_ns)
         return True
 
-    def _begin(self, brakes: bool, speed_rpm: float, hold_ns: int, t_ns: int) -> None:
+    def _begin(self, deed: Deed | None, speed_rpm: float, hold_ns: int, t_ns: int) -> None:
         self._motions += 1
         self.motion = Motion(
             count=self._motions,
-            brakes=brakes,
+            deed=deed,
             wheel_rad_s=speed_rpm / RPM_A_RAD_S,
             hold_ns=hold_ns,
             face_before=self.body.posture(t_ns).face_up,
@@ -254,7 +282,8 @@ class Drive:
         motion.spun_up_ns = t_ns - STEADY_NS
         speed_rad_s = self.wheel.speed_rad_s(t_ns)
         motion.wheel_at_brake_rad_s = speed_rad_s
-        motion.result = self.body.brake(speed_rad_s, motion.direction, motion.count, t_ns)
+        deed = motion.deed or Deed.FLOOR
+        motion.result = self.body.brake(speed_rad_s, motion.direction, motion.count, t_ns, deed)
         brake_s = max(motion.result.brake_s, _SHORTEST_BRAKE_S)
         self.due_ns = self.wheel.ramp(0.0, abs(speed_rad_s) / brake_s, t_ns)
         self.supply.draw(0.0, 0.0, t_ns, t_ns)

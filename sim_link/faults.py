@@ -37,6 +37,10 @@ class Faults:
         """A fault is noticed, and stands from now on."""
         self._standing[fault] = _Noticed(time_ms, detail)
 
+    def fall(self, fault: Fault) -> bool:
+        """A fault is over; return whether it stood."""
+        return self._standing.pop(fault, None) is not None
+
     def restart(self) -> None:
         """Start anew: what is broken still is, and is noticed as the start looks at it."""
         for fault, noticed in self._standing.items():

@@ -20,6 +20,8 @@ class Kind:
     (None: uniform cube). ``com_offset_m`` leads from the cube's centre to the centre of mass,
     (away from the hinge edge, up), for a pivot forward with face 1 up; it turns with the body.
     ``held``: magnets hold the hinge edge; otherwise the module stands on the floor by friction.
+    ``brake_kept``: the part of the brake's torque that lasts while it holds; the rest goes with
+    the time constant ``brake_decay_s``.
     """
 
     name: str
@@ -40,6 +42,8 @@ class Kind:
     restitution: float
     cell_capacity_mAh: float
     cell_resistance_ohm: float
+    brake_kept: float = 1.0
+    brake_decay_s: float = 0.05
 
 
 def centre_inertia_kg_m2(kind: Kind) -> float:
@@ -119,6 +123,8 @@ _NUMBERS: Final[dict[str, _Range]] = {
     "restitution": _Range(0.0, True, 0.9, 0.0),
     "cell_capacity_mAh": _Range(0.0, False, 1e6),
     "cell_resistance_ohm": _Range(0.0, True, 100.0),
+    "brake_kept": _Range(0.0, False, 1.0, 1.0),
+    "brake_decay_s": _Range(0.0, False, 10.0, 0.05),
 }
 _KEYS: Final = (*_NUMBERS, "body_inertia_kg_m2", "com_offset_m", "held")
 

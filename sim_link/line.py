@@ -28,7 +28,8 @@ class Line:
     def put(self, data: bytes, t_ns: int) -> None:
         """Queue bytes at ``t_ns``; they start when what is queued before them is across."""
         self._free_ns = max(t_ns, self._free_ns)
-        for piece in _PIECES.findall(data):
+        whole = data.find(0) == len(data) - 1  # one frame, as nearly always
+        for piece in (data,) if whole and data else _PIECES.findall(data):
             self._queue.append((self._free_ns, piece))
             self._free_ns += self._duration_ns(len(piece))
 
@@ -53,6 +54,11 @@ class Line:
             len(piece) - min(max(self._bytes_in(t_ns - start_ns), 0), len(piece))
             for start_ns, piece in self._queue
         )
+
+    def behind(self, t_ns: int) -> int:
+        """Return about how many bytes are not across at ``t_ns``, from when the line is free
+        again: ``waiting`` to within one, at once however many there are."""
+        return max(0, self._bytes_in(self._free_ns - t_ns))
 
     def discard(self, t_ns: int) -> None:
         """Drop what has not started by ``t_ns``; the byte that is on the wire completes."""

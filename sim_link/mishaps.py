@@ -1,10 +1,12 @@
 """What is made to go wrong with a running module, for practice and for tests.
 
-Owns which fault kind of options.py strikes at which turn, and that those which restart a module do
-so once. What is wrong with the body or the cell from the start is posture.py's and drive.py's.
+Owns which fault kind of fault_kinds.py strikes at which turn, that those which restart a module
+do so once, and how each begins and ends while the module runs. When it does is schedule.py's. What
+is wrong with body and cell from the start is read by posture.py and drive.py themselves.
 Decides no consequences: module and works ask, and act.
 """
 
+from collections.abc import Callable, Mapping
 from typing import Final, NamedTuple
 
 from protocol.codes import Activity, Fault
@@ -13,6 +15,14 @@ from sim_link.options import FaultKind
 
 BROWN_OUT_mV: Final = 2_700
 """Voltage at which the supply's supervisor lets the controller start anew."""
+
+_AT_REST: Final = frozenset({Activity.STILL, Activity.FLASHING})
+_POWER_LOST: Final = frozenset({FaultKind.RESTART, FaultKind.SWAPPED_CELL})
+_NOTICED_AS: Final[Mapping[FaultKind, Fault]] = {
+    FaultKind.LOST_GYRO: Fault.SENSOR_LOST,
+    FaultKind.STUCK_WHEEL: Fault.WHEEL_STUCK,
+}
+"""What the firmware calls a fault that stands once it has noticed it."""
 
 
 class Restart(NamedTuple):
@@ -23,16 +33,74 @@ class Restart(NamedTuple):
 
 
 class Mishaps:
-    """What is still to go wrong with one module."""
+    """What is still to go wrong with one module, and what is wrong with it now."""
 
     def __init__(self, box: Box) -> None:
         self._box = box
         self._to_come = set(box.spec.faults)
+        self._jam: bool | None = None
+        """A wheel that turns gets stuck, or comes free, once it is at rest."""
 
     @property
     def silent(self) -> bool:
         """Whether nothing that it sends gets out, once it has introduced itself."""
         return FaultKind.SILENT in self._to_come
+
+    # -- asked for while it runs -----------------------------------------------------------
+
+    def begin(self, kind: FaultKind, t_ns: int) -> bool:
+        """Let a fault begin; return whether the controller loses its power by it.
+
+        What strikes at a turn (a brake, a wheel at speed) waits for the next one.
+        """
+        self._to_come.add(kind)
+        if kind in _STATES:
+            _STATES[kind](self, True, t_ns)
+        return kind in _POWER_LOST
+
+    def end(self, kind: FaultKind, t_ns: int) -> Fault | None:
+        """Let a fault end, or not come any more; return what then no longer stands."""
+        self._to_come.discard(kind)
+        if kind in _STATES:
+            _STATES[kind](self, False, t_ns)
+        waits = kind is FaultKind.STUCK_WHEEL and self._jam is not None
+        return None if waits else self._over(kind)
+
+    def at_rest(self, activity: Activity) -> Fault | None:
+        """Do what waited for the wheel's rest, if this is it; return what no longer stands."""
+        if activity not in _AT_REST or self._jam is None:
+            return None
+        self._box.drive.stuck, self._jam = self._jam, None
+        return None if self._box.drive.stuck else self._over(FaultKind.STUCK_WHEEL)
+
+    def _over(self, kind: FaultKind) -> Fault | None:
+        fault = _NOTICED_AS.get(kind)
+        return fault if fault is not None and self._box.faults.fall(fault) else None
+
+    def _jammed(self, begins: bool, t_ns: int) -> None:
+        self._jam = begins
+        if self._box.drive.activity in _AT_REST:
+            self._box.drive.stuck, self._jam = begins, None
+
+    def _weakened(self, begins: bool, t_ns: int) -> None:
+        self._box.drive.body.weaken(begins)
+
+    def _lifted(self, begins: bool, t_ns: int) -> None:
+        self._box.drive.body.lift(begins, t_ns)
+
+    def _emptied(self, begins: bool, t_ns: int) -> None:
+        self._box.drive.set_charge(None if begins else self._box.spec.charge, t_ns)
+
+    def _swapped(self, begins: bool, t_ns: int) -> None:
+        self._box.drive.swap_cell(t_ns)
+
+    def _charged(self, begins: bool, t_ns: int) -> None:
+        if begins:
+            self._box.drive.start_charging(t_ns)
+        else:
+            self._box.drive.stop_charging(t_ns)
+
+    # -- at their turns --------------------------------------------------------------------
 
     def before_step(self) -> Restart | None:
         """A bad contact gives way as the wheel comes to speed, where the load is greatest."""
@@ -62,3 +130,14 @@ class Mishaps:
         found = kind in self._to_come
         self._to_come.discard(kind)
         return found
+
+
+_STATES: Final[Mapping[FaultKind, Callable[[Mishaps, bool, int], None]]] = {
+    FaultKind.STUCK_WHEEL: Mishaps._jammed,
+    FaultKind.WEAK_BRAKE: Mishaps._weakened,
+    FaultKind.LIFTED: Mishaps._lifted,
+    FaultKind.LOW_BATTERY: Mishaps._emptied,
+    FaultKind.SWAPPED_CELL: Mishaps._swapped,
+    FaultKind.CHARGING: Mishaps._charged,
+}
+"""What is a state of body, wheel or cell, and switched there: True as it begins."""

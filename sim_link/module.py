@@ -13,6 +13,7 @@ from typing import Any, Final, get_args
 
 from protocol.codes import (
     CONSOLE_ADDRESS,
+    Fault,
     Reason,
     SettingId,
     concerns,
@@ -35,6 +36,7 @@ from protocol.message import (
     RollCall,
     SettingAsk,
     SettingWrite,
+    Slot,
     Stop,
     Stopped,
     TraceAsk,
@@ -45,13 +47,17 @@ from sim_link.fleet_file import ModuleSpec
 from sim_link.measure import Reporter, wheel_rpm
 from sim_link.mishaps import Mishaps, Restart
 from sim_link.module_time import DRIFT_LIMIT_PPM, ModuleTime
+from sim_link.options import FaultKind
 from sim_link.randomness import Draws
+from sim_link.report_times import ReportTimes
 from sim_link.settings import Settings
 from sim_link.tally import TallyEntry
 from sim_link.works import Works
 
 _TO_ANYBODY: Final = (RollCall, Permit, Release, Go, Stop, Clear)
 """What may be sent to a group or to everyone; anything else sent so is dropped."""
+_SHIFTS_SLOT: Final = frozenset({RollCall, Probe, Release, Slot})
+"""What may give a telemetry slot, move it or end it."""
 _NS_PER_MS: Final = 1_000_000
 
 
@@ -78,7 +84,8 @@ class VirtualModule:
         self._mishaps = Mishaps(self.box)
         self.works = Works(self.box, draws, self._mishaps, self._telemetry, tally)
         self._reporter = Reporter(spec.identity, draws)
-        self._report_ns = int(self._period_ns * draws.uniform(0, "report phase"))
+        first_ns = int(self._period_ms * _NS_PER_MS * draws.uniform(0, "report phase"))
+        self._reports = ReportTimes(first_ns, self._period_ms)
         self._called = False
 
     @property
@@ -109,12 +116,16 @@ class VirtualModule:
     @property
     def next_wake_ns(self) -> int:
         """When ``wake`` is next needed, if nothing is received before."""
-        times = (self.box.drive.due_ns, self.works.due_ns, self._report_ns)
-        return min(each for each in times if each is not None)
+        # Asked for several times with each event of a fleet, so: no tuple, no generator.
+        due_ns = self._reports.due_ns
+        drive_ns, works_ns = self.box.drive.due_ns, self.works.due_ns
+        if drive_ns is not None and drive_ns < due_ns:
+            due_ns = drive_ns
+        return works_ns if works_ns is not None and works_ns < due_ns else due_ns
 
     @property
-    def _period_ns(self) -> int:
-        return self.box.settings.value(SettingId.TELEMETRY_PERIOD_MS) * _NS_PER_MS
+    def _period_ms(self) -> int:
+        return self.box.settings.value(SettingId.TELEMETRY_PERIOD_MS)
 
     def receive(self, packet: Packet, t_ns: int) -> list[Packet]:
         """Take one packet at ``t_ns``; return what is sent, after what was due before."""
@@ -126,7 +137,10 @@ class VirtualModule:
         alone = packet.destination == self.spec.address
         if handler is None or not (alone or isinstance(message, _TO_ANYBODY)):
             return sent
-        return sent + self._out(handler(self, message, t_ns))
+        sent += self._out(handler(self, message, t_ns))
+        if type(message) in _SHIFTS_SLOT:
+            self._reports.look(self.box.boot, self._period_ms, t_ns)
+        return sent
 
     def wake(self, t_ns: int) -> list[Packet]:
         """Do all that is due by ``t_ns``, each at its own time; return what is sent."""
@@ -137,8 +151,9 @@ class VirtualModule:
             elif self.works.due_ns == now_ns:
                 said += self.works.wake(now_ns)
             else:
-                self._report_ns += self._period_ns
-                self.box.boot.allegiance.forget_old(self.box.boot.time.ms(now_ns))
+                boot = self.box.boot
+                boot.allegiance.forget_old(boot.time.ms(now_ns))
+                self._reports.reported(boot, self._period_ms)
                 said.append(self._telemetry(now_ns))
         return self._out(said)
 
@@ -150,7 +165,27 @@ class VirtualModule:
         activity = self.box.drive.step()
         said = self.works.entered(activity, now_ns)
         restart = self._mishaps.after_step(activity)
-        return said if restart is None else self._restarted(restart, now_ns)
+        if restart is not None:
+            return self._restarted(restart, now_ns)
+        return said + self._no_more(self._mishaps.at_rest(activity), now_ns)
+
+    def begin(self, kind: FaultKind, t_ns: int) -> list[Packet]:
+        """Let a fault begin at ``t_ns``; return what is sent."""
+        sent = self.wake(t_ns)
+        self._called = self._called or kind is FaultKind.SILENT
+        return sent + self.restart(t_ns) if self._mishaps.begin(kind, t_ns) else sent
+
+    def end(self, kind: FaultKind, t_ns: int) -> list[Packet]:
+        """Let a fault end at ``t_ns``; return what is sent."""
+        sent = self.wake(t_ns)
+        return sent + self._out(self._no_more(self._mishaps.end(kind, t_ns), t_ns))
+
+    def _no_more(self, fault: Fault | None, t_ns: int) -> list[Message]:
+        """Say that a fault no longer stands."""
+        if fault is None:
+            return []
+        bits, now_ms = identity_bits(self.spec.identity), self.box.boot.time.ms(t_ns)
+        return [FaultNotice(self.boot, bits, fault, 0, now_ms, 0), self._telemetry(t_ns)]
 
     def _restarted(self, why: Restart, t_ns: int) -> list[Message]:
         """Restart by itself, unsaid what was about to be said, and tell why."""
@@ -171,13 +206,16 @@ class VirtualModule:
         self.box.faults.restart()
         self.works.restart()
         self._reporter.restart()
+        self._reports.restart()
         self.box.drive.recover(t_ns)
 
     def _out(self, said: list[Message]) -> list[Packet]:
-        if self._mishaps.silent and self._called:
+        if self._called and self._mishaps.silent:
             return []
-        self._called = self._called or any(type(each) is Nameplate for each in said)
-        return [Packet(CONSOLE_ADDRESS, self.spec.address, each) for each in said]
+        address = self.spec.address
+        if not self._called:
+            self._called = any(type(each) is Nameplate for each in said)
+        return [Packet(CONSOLE_ADDRESS, address, each) for each in said]
 
     def _telemetry(self, t_ns: int) -> Message:
         return self._reporter.telemetry(self.box, self.works.activity, t_ns)
@@ -230,6 +268,12 @@ class VirtualModule:
         self.box.boot.allegiance.release(release.console)
         return self.works.look_at_permit(t_ns)
 
+    def _slot(self, slot: Slot, t_ns: int) -> list[Message]:
+        """Take a telemetry slot that is meant for this boot of this box; say nothing."""
+        if (slot.boot, slot.identity_bits) == (self.boot, identity_bits(self.spec.identity)):
+            self.box.boot.allegiance.hear_slot(slot)
+        return []
+
     def _go(self, go: Go, t_ns: int) -> list[Message]:
         return self.works.go(go, t_ns)
 
@@ -268,7 +312,7 @@ class VirtualModule:
     def _command(self, command: Command, t_ns: int) -> list[Message]:
         said = self.works.order(command, t_ns)
         if isinstance(command, SettingWrite):  # a shorter period holds from now on
-            self._report_ns = min(self._report_ns, t_ns + self._period_ns)
+            self._reports.shorten(self._period_ms, t_ns)
         return said
 
 
@@ -280,6 +324,7 @@ _HANDLERS: Final[Mapping[type[Any], Callable[[VirtualModule, Any, int], list[Mes
     Release: VirtualModule._release,
     Go: VirtualModule._go,
     SettingAsk: VirtualModule._setting_ask,
+    Slot: VirtualModule._slot,
     TraceAsk: VirtualModule._trace_ask,
     Stop: VirtualModule._stop,
     Clear: VirtualModule._clear,

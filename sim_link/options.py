@@ -1,7 +1,7 @@
 """The options of a simulated fleet: one table, used by ``sim://`` URLs and the command line.
 
-Owns names, ranges, defaults and help texts, and the faults that can be asked for. Knows
-nothing of what the options do. Texts in, one frozen SimOptions out.
+Owns names, ranges, defaults and help texts. Knows nothing of what the options do; what a fault
+may be is fault_kinds.py's. Texts in, one frozen SimOptions out.
 """
 
 from collections.abc import Callable, Mapping
@@ -12,43 +12,42 @@ from typing import Any, Final, NamedTuple
 from urllib.parse import parse_qsl, urlsplit
 
 from sim_link.errors import SimInputError
+from sim_link.fault_kinds import FORMS, Fault, FaultKind, FaultTextError, fault_from_text
 
-MAX_MODULES: Final = 2000
+__all__ = [
+    "MAX_MODULES",
+    "OPTIONS",
+    "SHIPPED",
+    "Access",
+    "BridgeKind",
+    "Fault",
+    "FaultKind",
+    "Option",
+    "SimOptions",
+]
+
+MAX_MODULES: Final = 5000
+SHIPPED: Final = ("practice", "orangery", "depot")
+"""Fleets that come with the program, by the names under which they are found."""
 
 _MAX_SEED: Final = (1 << 64) - 1
 """As in randomness.py, which takes longer to import than a command line should."""
 
 
-class FaultKind(StrEnum):
-    """What can be wrong with a module, for practice and for tests."""
+class Access(StrEnum):
+    """When a radio that shares the channel sends."""
 
-    SILENT = "silent"
-    """Hears and obeys, but after its first answer to a roll call nothing it sends gets out."""
-    WEAK_BRAKE = "weak_brake"
-    """Its brake has a little over half of the torque that its kind states."""
-    LOW_BATTERY = "low_battery"
-    """Starts almost empty and refuses to drive."""
-    RESTART_ON_BRAKE = "restart_on_brake"
-    """Its controller restarts right after the first time the brake is applied."""
-    LOST_GYRO = "lost_gyro"
-    """Its inertial unit no longer answers after the first time the brake is applied."""
-    STUCK_WHEEL = "stuck_wheel"
-    """Its wheel does not turn as the motor drives it, which is noticed at the first try."""
-    BROWN_OUT = "brown_out"
-    """Its supply breaks down the first time its wheel has come to speed, and it restarts."""
-    SAME_ADDRESS = "same_address"
-    """Answers at the address of its neighbour in the fleet file, as after a slip of the hand."""
+    AT_ONCE = "at_once"
+    LISTEN = "listen"
 
 
-@dataclass(frozen=True, slots=True)
-class Fault:
-    """One fault of one module, by the module's name."""
+class BridgeKind(StrEnum):
+    """What the bridge is."""
 
-    kind: FaultKind
-    module: str
-
-    def __str__(self) -> str:
-        return f"{self.kind}:{self.module}"
+    FILTERING = "filtering"
+    """Passes good frames on, to the module addressed, and answers questions about itself."""
+    TRANSPARENT = "transparent"
+    """A modem: passes on whatever comes, and adds nothing of its own."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -56,8 +55,9 @@ class SimOptions:
     """What a simulated fleet is made of and how its radio behaves.
 
     ``loss``, ``damage``, ``repeat`` and ``reorder`` are probabilities a frame, each way;
-    ``modules`` None: as many as the fleet file has; ``fleet`` None: the practice fleet;
-    ``keys`` None: frames are not sealed.
+    ``burst``: mean length of a run of losses; ``modules`` None: as many as the fleet file has;
+    ``fleet`` None: the practice fleet; ``keys`` None: frames are not sealed; ``range_m`` None: all
+    are in range; ``air_rate`` None: frames take no time on the air and never collide.
     """
 
     modules: int | None = None
@@ -67,6 +67,12 @@ class SimOptions:
     repeat: float = 0.0
     reorder: float = 0.0
     delay_ms: float = 0.0
+    spread_ms: float = 0.0
+    burst: float = 1.0
+    range_m: float | None = None
+    air_rate: int | None = None
+    access: Access = Access.LISTEN
+    bridge: BridgeKind = BridgeKind.FILTERING
     rate: int = 921_600
     pace: float = 1.0
     fleet: Path | None = None
@@ -127,6 +133,8 @@ class Option(NamedTuple):
         """Read the option's value. Raises SimInputError saying what was expected."""
         try:
             return self.parse(text)
+        except FaultTextError as error:
+            raise SimInputError(where, self.name, str(error)) from error
         except ValueError as error:
             raise SimInputError(where, self.name, f"{self.expected}, not {text!r}") from error
 
@@ -162,13 +170,7 @@ def _path(text: str) -> Path:
 
 
 def _faults(text: str) -> tuple[Fault, ...]:
-    faults = []
-    for part in text.split(","):
-        kind, colon, module = part.strip().partition(":")
-        if not (colon and module):
-            raise ValueError(part)
-        faults.append(Fault(FaultKind(kind), module))
-    return tuple(faults)
+    return tuple(fault_from_text(part) for part in text.split(","))
 
 
 _CHANCE: Final = "a probability from 0 to 1 is needed"
@@ -200,6 +202,43 @@ OPTIONS: Final[dict[str, Option]] = {
             "how long a frame is under way, each way",
         ),
         Option(
+            "spread_ms",
+            _number(0, 10_000),
+            "milliseconds from 0 to 10000 are needed",
+            "up to so much longer, each frame by its own luck",
+        ),
+        Option(
+            "burst",
+            _number(1, 1000),
+            "a number from 1 to 1000 is needed",
+            "mean number of frames lost in a row; 1: each has its own luck",
+        ),
+        Option(
+            "range_m",
+            _number(0.1, 100_000),
+            "metres from 0.1 to 100000 are needed",
+            "distance from the bridge at which half of the frames are lost; left out: no limit",
+        ),
+        Option(
+            "air_rate",
+            _integer(300, 100_000_000),
+            "a rate in bits a second of at least 300 is needed",
+            "rate on the air, bits a second: all share one half-duplex channel, and may collide; "
+            "left out: frames take no time there",
+        ),
+        Option(
+            "access",
+            Access,
+            f"one of {', '.join(Access)} is needed",
+            "with air_rate, when a radio sends: at once, or when it hears nobody else",
+        ),
+        Option(
+            "bridge",
+            BridgeKind,
+            f"one of {', '.join(BridgeKind)} is needed",
+            "filtering: passes good frames on and tells of itself; transparent: a mere modem",
+        ),
+        Option(
             "rate",
             _integer(300, 100_000_000),
             "a rate in baud of at least 300 is needed",
@@ -211,12 +250,19 @@ OPTIONS: Final[dict[str, Option]] = {
             "a number from 0.01 to 1000 is needed",
             "how many times faster than real time the fleet lives",
         ),
-        Option("fleet", _path, "the name of a fleet file is needed", "fleet file (TOML)"),
+        Option(
+            "fleet",
+            _path,
+            "the name of a fleet file is needed, or of a shipped fleet",
+            f"fleet file (TOML), or a shipped fleet by its name: {', '.join(SHIPPED)}",
+        ),
         Option(
             "fault",
             _faults,
-            f"KIND:MODULE, separated by commas, is needed, KIND one of {_FAULT_NAMES}",
-            "faults as KIND:MODULE, separated by commas",
+            f"{FORMS} is needed, separated by commas",
+            "what goes wrong, separated by commas: KIND:MODULE from the start on, "
+            "KIND:MODULE@12.5s from a time on (or at it), KIND:MODULE@12.5s-20s from a time to "
+            f"another; MODULE is a module's name, or bridge; KIND is one of {_FAULT_NAMES}",
         ),
         Option("keys", _path, "the name of a key file is needed", "key file of a sealed fleet"),
     )

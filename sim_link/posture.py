@@ -10,10 +10,10 @@ from dataclasses import replace
 from typing import Final, NamedTuple
 
 from sim_link import mechanics
+from sim_link.deed import Deed, setting_of
 from sim_link.fleet_file import ModuleSpec
 from sim_link.kinds import Kind
-from sim_link.mechanics import MotionResult
-from sim_link.motion import Watch
+from sim_link.mechanics import MotionResult, Watch
 from sim_link.options import FaultKind
 from sim_link.randomness import Draws
 
@@ -27,9 +27,13 @@ _SPEED_NOISE: Final = 0.015
 """Standard deviations from one motion to the next; the wheel's speed stands for all that
 changes what of its momentum arrives."""
 _WEAK_BRAKE: Final = 0.55
+_IN_HAND_RAD: Final = 0.4
+"""How far a person who holds a module tilts it, about."""
 _TIP_NS: Final = 300_000_000
 """About how long a tipped module takes to fall on its next face."""
 _TURN_RAD: Final = math.pi / 2
+_LEVEL: Final = (1, 2, 3, 4)
+"""Faces with the wheel axis level. With the axis upright a body lies on 5 or 6 and stays there."""
 
 
 class Posture(NamedTuple):
@@ -61,17 +65,22 @@ class Braking(NamedTuple):
     wheel_rad_s: float
     face_up: int
     direction: int
+    deed: Deed = Deed.FLOOR
 
     def again(self, watch: Watch | None = None) -> MotionResult:
         """Compute what comes of it."""
-        return mechanics.floor_pivot(
-            self.kind, self.wheel_rad_s, self.face_up, self.direction, watch
+        if self.deed is Deed.TWIST:
+            return mechanics.twist(self.kind, self.wheel_rad_s, watch)
+        face_up = self.face_up if self.face_up in _LEVEL else _LEVEL[0]
+        setting = setting_of(self.deed)
+        return mechanics.pivot(
+            self.kind, self.wheel_rad_s, face_up, self.direction, setting=setting, watch=watch
         )
 
 
 def turned_face(face_up: int, faces: int) -> int:
     """Return the face that is up after so many faces forward; with the axis upright it stays."""
-    if face_up > 4:
+    if face_up not in _LEVEL:
         return face_up
     return (face_up - 1 + faces) % 4 + 1
 
@@ -102,14 +111,21 @@ class VirtualBody:
         self.braking: Braking | None = None
         """The last brake that was applied."""
         self._draws = draws
+        weak = FaultKind.WEAK_BRAKE in spec.faults
+        self._sound_brake_N_m = self.kind.brake_torque_N_m / (_WEAK_BRAKE if weak else 1.0)
         self._face_up = spec.face_up
+        self._lifted = False
         self._movement: _Movement | None = None
 
     def posture(self, t_ns: int) -> Posture:
         """Return how the module lies at ``t_ns``."""
         movement = self._movement
+        if self._lifted:
+            return Posture(0, _IN_HAND_RAD, False)
         if movement is None:
             return Posture(self._face_up, 0.0, True)
+        if self._face_up not in _LEVEL:  # it turns on its face, and gravity shows nothing of it
+            return Posture(self._face_up, 0.0, t_ns >= movement.end_ns)
         if t_ns < movement.end_ns:
             return Posture(0, _tilt_on_the_way(movement, t_ns), False)
         after = turned_face(self._face_up, movement.faces)
@@ -117,7 +133,9 @@ class VirtualBody:
             return Posture(after, 0.0, True)
         return Posture(0, movement.turned_rad - movement.faces * _TURN_RAD, False)
 
-    def brake(self, wheel_rad_s: float, direction: int, count: int, t_ns: int) -> MotionResult:
+    def brake(
+        self, wheel_rad_s: float, direction: int, count: int, t_ns: int, deed: Deed = Deed.FLOOR
+    ) -> MotionResult:
         """Apply the brake at this wheel speed; return what comes of it, in the ordered sense.
 
         ``count`` is the module's count of motions: the key of this motion's luck.
@@ -126,7 +144,7 @@ class VirtualBody:
         speed = 1.0 + _SPEED_NOISE * self._draws.normal(count, "speed")
         torque = 1.0 + _BRAKE_NOISE * self._draws.normal(count, "brake")
         kind = replace(self.kind, brake_torque_N_m=self.kind.brake_torque_N_m * torque)
-        self.braking = Braking(kind, abs(wheel_rad_s) * speed, self._face_up, direction)
+        self.braking = Braking(kind, abs(wheel_rad_s) * speed, self._face_up, direction, deed)
         result = self.braking.again()
         self._move(
             _Movement(
@@ -139,6 +157,19 @@ class VirtualBody:
             )
         )
         return result
+
+    def weaken(self, weak: bool) -> None:
+        """Let the brake have a part of its torque only, or all of it again."""
+        torque_N_m = self._sound_brake_N_m * (_WEAK_BRAKE if weak else 1.0)
+        self.kind = replace(self.kind, brake_torque_N_m=torque_N_m)
+
+    def lift(self, lifted: bool, t_ns: int) -> None:
+        """A person takes it in the hand, or sets it down again, on the next face forward."""
+        if self._lifted and not lifted:
+            self._finish(t_ns)
+            self._face_up = turned_face(self._face_up, 1)
+            self.turned_rad += _TURN_RAD
+        self._lifted = lifted
 
     def push(self, torque_N_m: float, sense: int, t_ns: int, until_ns: int) -> None:
         """Let the motor's reaction act on the body from ``t_ns`` to ``until_ns``.

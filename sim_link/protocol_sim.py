@@ -61,6 +61,8 @@ class Serial(serial.SerialBase):
             self._make_world(self.port)
         else:
             self._forget_while_closed()
+        if self._world is not None and self._world.unplugged:
+            raise serial.SerialException("sim://: cannot be opened: the bridge is unplugged")
         self.is_open = True
 
     def close(self) -> None:
@@ -207,6 +209,8 @@ class Serial(serial.SerialBase):
     def _take(self) -> None:
         world, clock = self._opened()
         self._received += world.read(clock.now_ns())
+        if world.unplugged:
+            raise serial.SerialException("sim://: the bridge was unplugged")
 
     def _wait(self, at_most_s: float) -> None:
         world, clock = self._opened()

@@ -24,6 +24,7 @@ from protocol.message import (
     Unlock,
 )
 from sim_link.box import Box
+from sim_link.deed import FREE, HELD, deed_of
 
 
 class Look(NamedTuple):
@@ -76,9 +77,11 @@ def _nobody(look: Look) -> bool:
 
 
 def _unsupported(look: Look) -> bool:
-    """Only floor pivots are known here: the mechanics of the others come later."""
-    command = look.command
-    return not isinstance(command, Pivot) or command.setting != Setting.FLOOR
+    """A wall, a crest or a neighbour's edge takes magnets; a hop or a twist is for a module that
+    nothing holds."""
+    spec = look.box.spec
+    able = spec.able or (HELD if spec.kind.held else FREE)
+    return deed_of(cast(Motion, look.command)) not in able
 
 
 def _stop_in_force(look: Look) -> bool:
@@ -129,12 +132,11 @@ def _battery_low(look: Look) -> bool:
     return look.box.battery_low(look.t_ns)
 
 
-def _axis_upright(look: Look) -> bool:
-    return look.box.drive.body.posture(look.t_ns).face_up > 4
-
-
-def _axis_level(look: Look) -> bool:
-    return 1 <= look.box.drive.body.posture(look.t_ns).face_up <= 4
+def _axis_wrong(look: Look) -> bool:
+    """On no face, the axis stands no way at all, and the last line refuses."""
+    face_up = look.box.drive.body.posture(look.t_ns).face_up
+    upright = deed_of(cast(Motion, look.command)).upright
+    return (1 <= face_up <= 4) if upright else face_up > 4
 
 
 def _not_settled(look: Look) -> bool:
@@ -162,7 +164,6 @@ _REFUSALS: Final = (
     _Refusal(Reason.BUSY, (*_WHEEL, Flash), _busy),
     _Refusal(Reason.OVER_SPEED_LIMIT, _WHEEL, _over_speed),
     _Refusal(Reason.BATTERY_LOW, _WHEEL, _battery_low),
-    _Refusal(Reason.AXIS_UPRIGHT, (Pivot, Hop), _axis_upright),
-    _Refusal(Reason.AXIS_UPRIGHT, (Twist,), _axis_level),
+    _Refusal(Reason.AXIS_UPRIGHT, _BRAKED, _axis_wrong),
     _Refusal(Reason.NOT_SETTLED, _WHEEL, _not_settled),
 )

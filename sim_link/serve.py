@@ -63,6 +63,11 @@ class _Endpoint(ABC):
     def close(self) -> None:
         """Give the device or the port back."""
 
+    def unplug(self) -> None:
+        """The bridge's cable was pulled: what is kept for the reader is lost. A pseudo-terminal
+        stays, and is silent."""
+        self._held.clear()
+
     def send(self, data: bytes) -> None:
         """Send bytes, as far as somebody takes them."""
         if not self._held:
@@ -178,6 +183,11 @@ class _Listener(_Endpoint):
         self._selector.unregister(self._listener)
         self._selector.register(client, selectors.EVENT_READ)
 
+    def unplug(self) -> None:
+        """The client loses its connection, and so does who tries again meanwhile."""
+        super().unplug()
+        self._leave()
+
     def _leave(self) -> None:
         if self._client is not None:
             self._selector.unregister(self._client)
@@ -254,6 +264,10 @@ def _serve(
             received = endpoint.receive(wait_s)
             if received:
                 world.write(received, clock.now_ns())
-            endpoint.send(world.read(clock.now_ns()))
+            data = world.read(clock.now_ns())
+            if world.unplugged:
+                endpoint.unplug()
+            else:
+                endpoint.send(data)
     finally:
         endpoint.close()

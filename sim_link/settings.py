@@ -40,11 +40,16 @@ def _period_ms(spec: ModuleSpec) -> int:
     return max(1, round(1_000 / spec.telemetry_hz))
 
 
+def _groups(spec: ModuleSpec) -> int:
+    """Group 31 is the sign of a signed setting."""
+    return spec.groups - 2 * _I32 if spec.groups >= _I32 else spec.groups
+
+
 _TABLE: Final = {
     SettingId.WHEEL_LIMIT_RPM: _Row(_wheel_max_rpm, _of(100), _wheel_max_rpm),
     SettingId.TELEMETRY_PERIOD_MS: _Row(_period_ms, _of(20), _of(60_000)),
     SettingId.BATTERY_LOW_MV: _Row(_of(round(LOW_V * 1_000)), _of(3_000), _of(4_200)),
-    SettingId.GROUPS: _Row(_of(0), _of(-_I32), _of(_I32 - 1)),
+    SettingId.GROUPS: _Row(_groups, _of(-_I32), _of(_I32 - 1)),
     SettingId.CALIBRATION: _Row(_of(CALIBRATION), _of(CALIBRATION), _of(CALIBRATION)),
 }
 

@@ -18,8 +18,8 @@ from protocol.trace import CHUNK_BYTES, TraceHead, TraceSample, pack_trace
 from sim_link.box import Box
 from sim_link.drive import STEADY_NS
 from sim_link.drive import Motion as Noted
+from sim_link.mechanics import Moment
 from sim_link.module_time import ModuleTime
-from sim_link.motion import Moment
 from sim_link.posture import Braking
 from sim_link.wheel import RPM_A_RAD_S
 
@@ -66,12 +66,20 @@ class _Kept:
             sag_V = self.noted.sag_V * part if part < 1.0 else 0.0
             speed_rpm = self.noted.wheel_rad_s * RPM_A_RAD_S * part
             return TraceSample(_i16(speed_rpm), 0, 0, round((self.rest_V - sag_V) * 1e3))
-        place = bisect_left(at_s, (t_ns - self.brake_ns) * 1e-9)
-        moment = moments[min(place, len(moments) - 1)]
+        since_s = (t_ns - self.brake_ns) * 1e-9
+        place = min(max(bisect_left(at_s, since_s), 1), len(moments) - 1)
+        one, two = moments[place - 1], moments[place]
+        span_s = two.t_s - one.t_s
+        part = min(max((since_s - one.t_s) / span_s, 0.0), 1.0) if span_s > 0.0 else 1.0
+
+        def between(early: float, late: float) -> float:
+            return early + part * (late - early)
+
+        wheel_rad_s = between(one.wheel_rad_s, two.wheel_rad_s)
         return TraceSample(
-            _i16(moment.wheel_rad_s * self.noted.direction * RPM_A_RAD_S),
-            _i16(math.degrees(moment.rate_rad_s)),
-            _i16(math.degrees(moment.angle_rad) * 10.0),
+            _i16(wheel_rad_s * self.noted.direction * RPM_A_RAD_S),
+            _i16(math.degrees(between(one.rate_rad_s, two.rate_rad_s))),
+            _i16(math.degrees(between(one.angle_rad, two.angle_rad)) * 10.0),
             round(self.rest_V * 1e3),
         )
 

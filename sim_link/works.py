@@ -30,6 +30,7 @@ from protocol.message import (
     Unlock,
 )
 from sim_link.box import DRIVEN, Box
+from sim_link.deed import deed_of
 from sim_link.measure import facts
 from sim_link.mishaps import Mishaps
 from sim_link.randomness import Draws
@@ -94,8 +95,10 @@ class Works:
     @property
     def due_ns(self) -> int | None:
         """When ``wake`` is next needed: a stage's start or end, or a look at the permit."""
-        times = [each for each in (self._stage.due_ns, self._permit_ns) if each is not None]
-        return min(times, default=None)
+        stage_ns, permit_ns = self._stage.due_ns, self._permit_ns
+        if stage_ns is None:
+            return permit_ns
+        return stage_ns if permit_ns is None or stage_ns < permit_ns else permit_ns
 
     def wake(self, t_ns: int) -> list[Message]:
         """Do what is due at ``t_ns``."""
@@ -150,9 +153,10 @@ class Works:
             return self._put_on_stage(command, t_ns)
         return _DEEDS[type(command)](self, command, t_ns)
 
-    def _pivot(self, pivot: Pivot, t_ns: int) -> list[Message]:
-        left_ns = self._box.drive.start_pivot(pivot.direction, pivot.speed_rpm, t_ns)
-        return self._accepted(pivot, left_ns, t_ns)
+    def _motion(self, motion: Motion, t_ns: int) -> list[Message]:
+        deed = deed_of(motion)
+        left_ns = self._box.drive.start_motion(motion.direction, motion.speed_rpm, t_ns, deed)
+        return self._accepted(motion, left_ns, t_ns)
 
     def _spin(self, spin: Spin, t_ns: int) -> list[Message]:
         left_ns = self._box.drive.start_spin(spin.speed_rpm, spin.hold_ms * 1_000_000, t_ns)
@@ -304,7 +308,9 @@ class Works:
 
 
 _DEEDS: Final[Mapping[type[Any], Callable[[Works, Any, int], list[Message]]]] = {
-    Pivot: Works._pivot,
+    Pivot: Works._motion,
+    Hop: Works._motion,
+    Twist: Works._motion,
     Spin: Works._spin,
     Rest: Works._rest,
     Flash: Works._flash,

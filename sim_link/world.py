@@ -1,60 +1,42 @@
-"""The whole simulated fleet behind one serial line: modules, radio paths, bridge.
+"""The whole simulated fleet behind one serial line: stations, the air, the bridge.
 
 Owns the order of events. Knows nothing of clocks, threads or ports: bytes and times in, bytes
 out, so that real time and virtual time run the same code. One seed, one history, byte for byte.
 
-The way of a frame: console's line at the line rate, bridge (drops what fails its check), one
-radio path a module, the module's decoder; and back the same way. The bridge passes a frame on as it
-is, and answers questions about itself; with keys set it has none of its own and answers nothing.
+The way of a frame: console's line at the line rate, bridge, the shared channel where an air rate is
+given, one radio path a module, the module; and back the same way.
 """
 
 import heapq
-from collections.abc import Callable
-from dataclasses import dataclass
-from typing import Final
+from collections import deque
+from collections.abc import Callable, Iterable
+from typing import Final, NamedTuple
 
-from protocol.codes import BRIDGE_ADDRESS, CONSOLE_ADDRESS, FIRST_GROUP_ADDRESS
-from protocol.errors import RemoteProtocolError
-from protocol.frame import Dropped, FrameDecoder, frame
-from protocol.message import HEADER, BridgeAsk, BridgeStatus, Packet, decode, encode
+from protocol.codes import FIRST_GROUP_ADDRESS
+from sim_link import schedule
+from sim_link.air import Air
+from sim_link.bridge import Bridge
 from sim_link.fleet_file import load_fleet
 from sim_link.line import Line
 from sim_link.module import VirtualModule
-from sim_link.module_seal import ModuleSeal, load_keys
-from sim_link.options import SimOptions
-from sim_link.radio import Channel, Quality, Way
-from sim_link.tally import TallyEntry
+from sim_link.module_seal import load_keys
+from sim_link.options import Access, BridgeKind, FaultKind, SimOptions
+from sim_link.radio import Channel
+from sim_link.reading import understood
+from sim_link.station import Station, Tally
 
-_SIGNAL_dBm: Final = -62
-_NOISE_dBm: Final = -97
-"""What a receiver in the invented hall would show; this radio's losses do not hang on them."""
-
-_U16: Final = 0xFFFF
-_U32: Final = 0xFFFF_FFFF
-
-_TO_CONSOLE: Final = -1
-"""In place of a module's index: what arrives at the bridge."""
+_BRIDGE: Final = -1
+"""In place of a module's number: the bridge, as a sender and as a receiver."""
 
 
-@dataclass(slots=True)
-class WorldCounts:
+class WorldCounts(NamedTuple):
     """What crossed the world so far; for tests and for a person who wonders."""
 
-    frames_from_console: int = 0
-    frames_to_console: int = 0
-    dropped_at_bridge: int = 0
-    dropped_at_modules: int = 0
-
-
-@dataclass(frozen=True, slots=True)
-class _Station:
-    """One module with its two radio paths and its own decoder."""
-
-    module: VirtualModule
-    hears: Channel
-    speaks: Channel
-    decoder: FrameDecoder
-    seal: ModuleSeal | None
+    frames_from_console: int
+    frames_to_console: int
+    dropped_at_bridge: int
+    dropped_at_modules: int
+    collided: int
 
 
 class World:
@@ -63,40 +45,39 @@ class World:
     Raises SimInputError for a fleet file or a fault that cannot be used.
     """
 
-    def __init__(
-        self, options: SimOptions, tally: Callable[[TallyEntry], None] | None = None
-    ) -> None:
+    def __init__(self, options: SimOptions, tally: Tally = None) -> None:
         fleet = load_fleet(options.fleet).of_size(options.modules).with_faults(options.fault)
-        quality = Quality(
-            options.loss, options.damage, options.repeat, options.reorder, options.delay_ms
-        )
         keys = None if options.keys is None else load_keys(options.keys)
         self.options = options
-        self.counts = WorldCounts()
         self._stations = [
-            _Station(
-                VirtualModule(spec, options.seed, tally),
-                Channel(quality, options.seed, place, Way.TO_MODULE),
-                Channel(quality, options.seed, place, Way.TO_CONSOLE),
-                FrameDecoder(),
-                None if keys is None else ModuleSeal(keys),
-            )
-            for place, spec in enumerate(fleet.modules)
+            Station(place, spec, options, tally, keys) for place, spec in enumerate(fleet.modules)
         ]
         self._by_address: dict[int, tuple[int, ...]] = {}
         for place, station in enumerate(self._stations):
-            address = station.module.spec.address
-            self._by_address[address] = (*self._by_address.get(address, ()), place)
+            sharing = self._by_address.get(station.address, ())
+            self._by_address[station.address] = (*sharing, place)
+        self._places = {spec.name: place for place, spec in enumerate(fleet.modules)}
         self._from_console = Line(options.rate)
         self._to_console = Line(options.rate)
-        self._bridge = FrameDecoder()
+        self._bridge = Bridge(options.bridge, sealed=keys is not None)
+        self._air = _air_of(options)
+        filtering = options.bridge is BridgeKind.FILTERING
+        perfect = all(station.hears.perfect for station in self._stations)
+        self._read_once = filtering and perfect and keys is None
+        """Whether every module hears the same whole frames: then one reading serves all."""
+        self._outgoing: deque[Iterable[int]] = deque()
+        """Whom the frames are for that wait in the bridge's radio."""
         self._t_ns = 0
         self._order = 0
-        self._most_on_air = 0
+        self._sent = self._heard = self._collided = 0
         self._arrivals: list[tuple[int, int, int, bytes]] = []
         self._wakes: list[tuple[int, int]] = []
+        self._noted_ns = [-1] * len(self._stations)
+        """When each module is next woken; a note in the heap that says otherwise is old."""
+        self._actions: list[tuple[int, int, Callable[[], None]]] = []
         for place in range(len(self._stations)):
             self._note_wake(place)
+        schedule.enter(fleet.faults, self)
 
     @property
     def modules(self) -> tuple[VirtualModule, ...]:
@@ -104,12 +85,24 @@ class World:
         return tuple(station.module for station in self._stations)
 
     @property
+    def counts(self) -> WorldCounts:
+        """What crossed so far."""
+        dropped = sum(station.dropped for station in self._stations)
+        return WorldCounts(self._sent, self._heard, self._bridge.dropped, dropped, self._collided)
+
+    @property
+    def unplugged(self) -> bool:
+        """Whether the bridge's cable is pulled."""
+        return self._bridge.unplugged
+
+    @property
     def next_event_ns(self) -> int | None:
         """When something next happens by itself, or a frame is across to the console."""
-        times = [heap[0][0] for heap in (self._arrivals, self._wakes) if heap]
-        lines = (self._from_console.next_ns, self._to_console.next_ns)
-        times += [line_ns for line_ns in lines if line_ns is not None]
+        due, back = self._next_due(), self._to_console.next_ns
+        times = [each for each in (None if due is None else due[0], back) if each is not None]
         return min(times, default=None)
+
+    # -- the console's end ---------------------------------------------------------------
 
     def write(self, data: bytes, t_ns: int) -> None:
         """Hand bytes to the console's end of the line at ``t_ns``."""
@@ -131,6 +124,43 @@ class World:
         self.advance(t_ns)
         self._from_console.discard(self._t_ns)
 
+    # -- what goes wrong -----------------------------------------------------------------
+
+    def at(self, t_ns: int, action: Callable[[], None]) -> None:
+        """Have ``action`` called once the fleet is so old; those of one time in their order."""
+        self._order += 1
+        heapq.heappush(self._actions, (t_ns, self._order, action))
+
+    def strike(self, module: str, kind: FaultKind, begins: bool) -> None:
+        """Let a fault of a module, by its name, begin or end now."""
+        place = self._places[module]
+        station = self._stations[place]
+        change = station.module.begin if begins else station.module.end
+        self._say(place, station.frames(change(kind, self._t_ns)))
+        self._note_wake(place)
+
+    def reset_bridge(self) -> None:
+        """Let the bridge start anew in the middle of everything: what waits in it is lost."""
+        self._bridge.reset(self._t_ns)
+        if self._air is not None:
+            self._air.forget(_BRIDGE)
+            while len(self._outgoing) > self._air.waiting(_BRIDGE):
+                self._outgoing.pop()
+
+    def silence_bridge(self, silent: bool) -> None:
+        """Let the bridge pass nothing on and say nothing, either way, or everything again."""
+        self._bridge.silence(silent)
+
+    def unplug(self, unplugged: bool) -> None:
+        """Pull the bridge's cable, or plug it in again: it has its power from there, and starts
+        anew. What is written meanwhile is lost."""
+        self._bridge.unplugged = unplugged
+        self._to_console = Line(self.options.rate)
+        if not unplugged:
+            self.reset_bridge()
+
+    # -- the order of events -------------------------------------------------------------
+
     def advance(self, t_ns: int) -> None:
         """Let everything happen that is due by ``t_ns``, in order of time."""
         while (due := self._next_due()) is not None and due[0] <= t_ns:
@@ -139,120 +169,128 @@ class World:
         self._t_ns = max(self._t_ns, t_ns)
 
     def _next_due(self) -> tuple[int, Callable[[], None]] | None:
-        """Find what happens next. At one time: the line first, then arrivals, then wakes."""
+        """Find what happens next. At one time: the line, the air, arrivals, wakes, actions."""
         due: tuple[int, Callable[[], None]] | None = None
         line_ns = self._from_console.next_ns
         if line_ns is not None:
             due = line_ns, self._piece_across
+        if self._air is not None:
+            air_ns = self._air.next_ns
+            if air_ns is not None and (due is None or air_ns < due[0]):
+                due = air_ns, self._air_step
         if self._arrivals and (due is None or self._arrivals[0][0] < due[0]):
             due = self._arrivals[0][0], self._arrive
         if self._wakes and (due is None or self._wakes[0][0] < due[0]):
             due = self._wakes[0][0], self._wake
+        if self._actions and (due is None or self._actions[0][0] < due[0]):
+            due = self._actions[0][0], self._act
         return due
 
+    def _act(self) -> None:
+        heapq.heappop(self._actions)[2]()
+
     def _piece_across(self) -> None:
-        """Take what the line brought to the bridge, and put good frames on the air."""
-        for found in self._bridge.feed(self._from_console.take(self._t_ns)):
-            if isinstance(found, Dropped):
-                self.counts.dropped_at_bridge += 1
-                continue
-            self.counts.frames_from_console += 1
-            self._bridge_hears(found)
-            frame_bytes = frame(found)
-            for place in self._addressed(found):
-                self._send(self._stations[place].hears, frame_bytes, place)
-
-    def _addressed(self, payload: bytes) -> range | tuple[int, ...]:
-        """Return the modules to whose radio a frame matters: one, all, or those that share its
-        address by mistake. A bridge reads the header only, sealed or not."""
-        if len(payload) < HEADER.size:
-            self.counts.dropped_at_bridge += 1
-            return ()
-        destination = HEADER.unpack_from(payload)[2]
-        if destination >= FIRST_GROUP_ADDRESS:  # a group or everyone: who is in it, modules know
-            return range(len(self._stations))
-        return self._by_address.get(destination, ())
-
-    def _bridge_hears(self, payload: bytes) -> None:
-        """Answer a question about the bridge itself. In a sealed fleet it answers nothing: it holds
-        no key to seal an answer with, and a console with keys would drop any other."""
-        if self.options.keys is not None or len(payload) < HEADER.size:
+        """Take what the line brought to the bridge, and put it on the air."""
+        data = self._from_console.take(self._t_ns)
+        if self._bridge.deaf(self._t_ns):
             return
-        if HEADER.unpack_from(payload)[2] == BRIDGE_ADDRESS:
-            ask = _understood(payload)
-            if ask is not None and isinstance(ask.message, BridgeAsk):
-                status = self._bridge_status(ask.message)
-                answer = Packet(CONSOLE_ADDRESS, BRIDGE_ADDRESS, status)
-                self._to_console.put(frame(encode(answer)), self._t_ns)
+        for address, frame_bytes in self._bridge.from_line(data):
+            self._sent += 1
+            answer = self._bridge.answer(address, frame_bytes, self._waiting, self._t_ns)
+            if answer is not None:
+                self._to_console.put(answer, self._t_ns)
+            places = self._addressed(address)
+            if self._air is None:
+                self._to_modules(frame_bytes, places)
+            elif self._bridge.takes(self._air.waiting(_BRIDGE)):
+                self._outgoing.append(places)
+                self._air.offer(_BRIDGE, frame_bytes, self._t_ns)
+            self._bridge.note_waiting(self._waiting)
 
-    def _bridge_status(self, ask: BridgeAsk) -> BridgeStatus:
-        """What is on its way over the air, either way, stands for what waits for it."""
-        counts = self.counts
-        return BridgeStatus(
-            sequence=ask.sequence,
-            uptime_ms=self._t_ns // 1_000_000 & _U32,
-            frames_from_console=counts.frames_from_console & _U32,
-            frames_to_console=counts.frames_to_console & _U32,
-            dropped=counts.dropped_at_bridge & _U32,
-            queue=min(len(self._arrivals), _U16),
-            queue_most=min(self._most_on_air, _U16),
-            signal_dBm=_SIGNAL_dBm,
-            noise_dBm=_NOISE_dBm,
-        )
+    @property
+    def _waiting(self) -> int:
+        """What waits in the bridge for the air; without airtime, what is on its way stands for
+        it."""
+        return len(self._arrivals) if self._air is None else self._air.waiting(_BRIDGE)
 
-    def _send(self, channel: Channel, frame_bytes: bytes, place: int) -> None:
-        for arrival_ns, data in channel.offer(frame_bytes, self._t_ns):
+    def _addressed(self, address: int) -> Iterable[int]:
+        """The modules to whose radio a frame matters: one, all, or those that share its address by
+        mistake. A modem sends to all: addresses are nothing to it."""
+        if address >= FIRST_GROUP_ADDRESS:  # a group or everyone: who is in it, modules know
+            return range(len(self._stations))
+        return self._by_address.get(address, ())
+
+    def _air_step(self) -> None:
+        """Let the air go on; what nobody disturbed goes its way."""
+        if self._air is None:
+            return
+        for sender, data, clear in self._air.advance(self._t_ns):
+            places = self._outgoing.popleft() if sender == _BRIDGE else ()
+            if not clear:
+                self._collided += 1
+            elif sender == _BRIDGE:
+                self._to_modules(data, places)
+            else:
+                self._send(self._stations[sender].speaks, data, _BRIDGE)
+
+    def _to_modules(self, data: bytes, places: Iterable[int]) -> None:
+        if self._read_once:
+            packet = understood(data)
+            for place in places:
+                self._say(place, self._stations[place].take(packet, self._t_ns))
+                self._note_wake(place)
+            return
+        for place in places:
+            self._send(self._stations[place].hears, data, place)
+
+    def _send(self, channel: Channel, data: bytes, place: int) -> None:
+        """Let a frame take its path; one without faults takes no time, and is there at once."""
+        if channel.perfect:
+            self._arrived(place, data)
+            return
+        for arrival_ns, copy in channel.offer(data, self._t_ns):
             self._order += 1
-            heapq.heappush(self._arrivals, (arrival_ns, self._order, place, data))
-        self._most_on_air = max(self._most_on_air, len(self._arrivals))
+            heapq.heappush(self._arrivals, (arrival_ns, self._order, place, copy))
 
     def _arrive(self) -> None:
         _, _, place, data = heapq.heappop(self._arrivals)
-        if place == _TO_CONSOLE:
-            self.counts.frames_to_console += 1
-            self._to_console.put(data, self._t_ns)
+        self._arrived(place, data)
+
+    def _arrived(self, place: int, data: bytes) -> None:
+        if place == _BRIDGE:
+            deaf = self._bridge.deaf(self._t_ns)
+            if not deaf and self._bridge.to_line(self._to_console.behind(self._t_ns)):
+                self._heard += 1
+                self._to_console.put(data, self._t_ns)
             return
-        station = self._stations[place]
-        for found in station.decoder.feed(data):
-            packet = None if isinstance(found, Dropped) else _admitted(station, found)
-            if packet is None:
-                self.counts.dropped_at_modules += 1
-            else:
-                self._put_on_air(station, station.module.receive(packet, self._t_ns))
+        self._say(place, self._stations[place].hear(data, self._t_ns))
         self._note_wake(place)
 
     def _wake(self) -> None:
         """Wake the module whose time it is; skip a note that a later one has replaced."""
         wake_ns, place = heapq.heappop(self._wakes)
         station = self._stations[place]
-        if station.module.next_wake_ns == wake_ns:
-            self._put_on_air(station, station.module.wake(self._t_ns))
+        if self._noted_ns[place] == wake_ns:
+            self._say(place, station.frames(station.module.wake(self._t_ns)))
             self._note_wake(place)
 
-    def _put_on_air(self, station: _Station, packets: list[Packet]) -> None:
-        for packet in packets:
-            payload = encode(packet)
-            if station.seal is not None:
-                payload = station.seal.seal(payload, station.module.boot)
-            self._send(station.speaks, frame(payload), _TO_CONSOLE)
+    def _say(self, place: int, frames: list[bytes]) -> None:
+        """Put what a module says on the air."""
+        for data in frames:
+            if self._air is None:
+                self._send(self._stations[place].speaks, data, _BRIDGE)
+            else:
+                self._air.offer(place, data, self._t_ns)
 
     def _note_wake(self, place: int) -> None:
-        heapq.heappush(self._wakes, (self._stations[place].module.next_wake_ns, place))
+        wake_ns = self._stations[place].module.next_wake_ns
+        if wake_ns != self._noted_ns[place]:
+            self._noted_ns[place] = wake_ns
+            heapq.heappush(self._wakes, (wake_ns, place))
 
 
-def _understood(payload: bytes) -> Packet | None:
-    """Decode a payload; None where it is no message of this version."""
-    try:
-        return decode(payload)
-    except RemoteProtocolError:
+def _air_of(options: SimOptions) -> Air | None:
+    if options.air_rate is None:
         return None
-
-
-def _admitted(station: _Station, payload: bytes) -> Packet | None:
-    """Decode what a module received; what it does not understand or obey counts as dropped."""
-    if station.seal is None:
-        return _understood(payload)
-    try:
-        return station.seal.admit(payload, station.module.boot, station.module.epoch)
-    except RemoteProtocolError:
-        return None
+    listens = options.access is Access.LISTEN
+    return Air(options.air_rate, options.seed, listens=listens)

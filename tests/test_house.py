@@ -2,6 +2,7 @@
 
 import ast
 import subprocess
+import sys
 from collections.abc import Iterator
 from pathlib import Path
 
@@ -15,7 +16,10 @@ MAY_IMPORT = {
     "console": {"protocol", "sim_link", "storage"},
 }
 COSTLY = {"scipy", "numpy", "textual", "sqlite_utils", "mujoco", "statsmodels"}
-MAY_IMPORT_COSTLY_AT_ONCE = ("console/screens/", "console/widgets/", "console/app.py")
+MAY_IMPORT_COSTLY_AT_ONCE = (
+    "console/screens/", "console/widgets/", "console/app.py", "sim_link/mechanics/",
+)  # fmt: skip
+"""Rooms that are nothing without them, and that others import only when they are needed."""
 NO_IO = {"threading", "socket", "serial", "sqlite3", "time", "random", "asyncio", "os"}
 TOP = {
     "README.md", "DEVELOPERS.md", "LICENSE", "CHANGELOG.md", "pyproject.toml",
@@ -58,6 +62,18 @@ def test_arrows_point_one_way(path: Path) -> None:
 def test_costly_imports_are_made_where_they_are_needed(path: Path) -> None:
     if not str(path).startswith(MAY_IMPORT_COSTLY_AT_ONCE):
         assert not COSTLY & set(imports_at_once(parsed(path)))
+
+
+@pytest.mark.parametrize(
+    "entry", ["console.cli", "console.orders", "sim_link.options", "sim_link.protocol_sim"]
+)
+def test_what_starts_first_imports_nothing_costly(entry: str) -> None:
+    """Help, refusals and the look for ports answer at once."""
+    code = f"import sys, {entry}; print(*sys.modules)"
+    run = subprocess.run(
+        [sys.executable, "-c", code], cwd=ROOT, capture_output=True, text=True, check=True
+    )
+    assert not COSTLY & set(run.stdout.split())
 
 
 @pytest.mark.parametrize("path", [p for p in MODULES if p.parts[0] == "protocol"], ids=str)

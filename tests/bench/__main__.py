@@ -11,6 +11,7 @@ from collections.abc import Callable
 from typing import NamedTuple
 
 from tests.bench.decoding import decode_vs_floor
+from tests.bench.fleet import sim_1000_peak_MB, sim_1000_times_real, sim_cost_exponent
 from tests.bench.goodput import exchange_goodput_vs_bound
 from tests.bench.ingesting import ingest_vs_floor
 from tests.bench.measure import Figure
@@ -32,6 +33,9 @@ BENCHES = (
     Bench("ingest_vs_floor", ingest_vs_floor, operator.ge, 0.4, "at least"),
     Bench("sealed_decode_vs_floor", sealed_decode_vs_floor, operator.ge, 0.5, "at least"),
     Bench("exchange_goodput_vs_bound", exchange_goodput_vs_bound, operator.ge, 0.85, "at least"),
+    Bench("sim_1000_times_real", sim_1000_times_real, operator.ge, 20.0, "at least"),
+    Bench("sim_cost_exponent", sim_cost_exponent, operator.le, 1.1, "at most"),
+    Bench("sim_1000_peak_MB", sim_1000_peak_MB, operator.le, 200.0, "at most"),
 )
 
 

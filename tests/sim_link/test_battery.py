@@ -144,3 +144,20 @@ def test_a_new_load_accounts_for_the_old_one() -> None:
         source.battery.open_circuit_V, abs=0.12 * IDLE_W / 3.0
     )
     assert source.warmth.temperature_C(2 * S) > AMBIENT_C
+
+
+def test_a_charger_gives_back_what_it_says_until_the_cell_is_full() -> None:
+    source = supply()
+    source.charge(2.0, 0)
+    # Into the cell go 2 W less the idle load, at its voltage and what the resistance adds:
+    # P = I (E + R I) in the other direction.
+    current_A = -source.battery.current_A(IDLE_W - 2.0)
+    assert current_A * (source.battery.open_circuit_V + 0.12 * current_A) == pytest.approx(1.82)
+    assert source.terminal_V(0) > source.battery.open_circuit_V
+    source.account(60 * S)
+    assert source.battery.charge == pytest.approx(0.9 + current_A * 60.0 / 1800.0, rel=1e-3)
+    source.account(10_000 * S)
+    assert source.battery.charge == 1.0
+    source.charge(0.0, 10_000 * S)
+    source.account(10_600 * S)
+    assert source.battery.charge == pytest.approx(1.0 - IDLE_W / 4.2 * 600.0 / 1800.0, abs=0.001)

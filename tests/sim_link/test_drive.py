@@ -71,7 +71,7 @@ def test_every_activity_can_end_at_still() -> None:
 
 def test_a_pivot_goes_through_its_activities() -> None:
     drive = drive_of()
-    drive.start_pivot(1, 6000, 0)
+    drive.start_motion(1, 6000, 0)
     assert drive.activity is Activity.SPINNING_UP
     assert run_out(drive)[0] == [Activity.BRAKING, Activity.SETTLING, Activity.STILL]
 
@@ -79,7 +79,7 @@ def test_a_pivot_goes_through_its_activities() -> None:
 def test_spin_up_time_is_momentum_over_torque() -> None:
     # Iw w / tau at 0.02 N m, the motor's own limit for this kind; 1 % for the module's wheel.
     drive = drive_of()
-    drive.start_pivot(1, 4000, 0)
+    drive.start_motion(1, 4000, 0)
     assert drive.due_ns is not None
     expected_s = 6.0e-5 * 4000 / 9.5493 / 0.02
     assert (drive.due_ns - 60 * MS) / S == pytest.approx(expected_s, rel=0.04)
@@ -88,7 +88,7 @@ def test_spin_up_time_is_momentum_over_torque() -> None:
 def test_a_weak_cell_spins_up_slower_and_is_not_pulled_down() -> None:
     full, weak = drive_of(charge=0.95), drive_of(charge=0.12)
     for drive in (full, weak):
-        drive.start_pivot(1, 8000, 0)
+        drive.start_motion(1, 8000, 0)
         assert drive.due_ns is not None
         assert drive.supply.terminal_V(drive.due_ns - 60 * MS) > 3.05
     assert weak.due_ns > 1.2 * full.due_ns  # type: ignore[operator]
@@ -167,7 +167,7 @@ def test_recover_ends_a_flash_and_rests_a_wheel_but_not_a_brake() -> None:
     spinning.start_spin(4000, 5 * S, 0)
     spinning.recover(S)
     assert spinning.activity is Activity.RESTING
-    braking.start_pivot(1, 6000, 0)
+    braking.start_motion(1, 6000, 0)
     braking.step()
     assert braking.due_ns is not None
     braking.recover(braking.due_ns - 1000)
@@ -178,7 +178,7 @@ def test_energy_of_a_motion_is_a_little_more_than_the_wheels() -> None:
     drive = drive_of()
     drive.supply.account(0)
     before = drive.supply.battery.charge
-    drive.start_pivot(1, 6000, 0)
+    drive.start_motion(1, 6000, 0)
     _, end_ns = run_out(drive)
     drive.supply.account(end_ns)
     used_J = (before - drive.supply.battery.charge) * 0.5 * 3600 * 4.1
@@ -188,12 +188,12 @@ def test_energy_of_a_motion_is_a_little_more_than_the_wheels() -> None:
 
 def test_time_left_covers_a_brake_under_way() -> None:
     drive = drive_of()
-    drive.start_pivot(1, 6000, 0)
+    drive.start_motion(1, 6000, 0)
     t_ns = drive.due_ns or 0
     drive.step()
     _, end_ns = run_out(drive)
     fresh = drive_of()
-    fresh.start_pivot(1, 6000, 0)
+    fresh.start_motion(1, 6000, 0)
     fresh.step()
     assert t_ns + fresh.left_ns(t_ns) >= end_ns
 
@@ -202,7 +202,7 @@ def test_motions_count_on_and_luck_changes_with_them() -> None:
     drive, brakes = drive_of(), []
     t_ns = 0
     for _ in range(3):
-        drive.start_pivot(1, 3000, t_ns)
+        drive.start_motion(1, 3000, t_ns)
         t_ns = run_out(drive)[1]
         assert drive.motion is not None
         assert drive.motion.result is not None
@@ -230,3 +230,21 @@ def test_the_wire_document_s_table_of_activities_is_the_drive_s() -> None:
     told = {(before, after) for before, _, after in rows if "STAGED" not in (before, after)}
     done = {(before.name, after.name) for (before, _), after in NEXT_ACTIVITY.items()}
     assert told == done
+
+
+def test_a_cell_can_be_emptied_swapped_and_charged() -> None:
+    drive = Drive(spec_of(charge=0.5), Draws(1, 1))
+    battery = drive.supply.battery
+    drive.set_charge(None, S)
+    assert battery.low
+    drive.swap_cell(2 * S)
+    assert battery.charge == 1.0
+    drive.set_charge(0.5, 3 * S)
+    drive.start_charging(3 * S)
+    drive.supply.account(3 * S + 1800 * S)
+    # Half of the capacity an hour, less what the idle module takes, for half an hour.
+    assert battery.charge == pytest.approx(0.7, abs=0.04)
+    drive.stop_charging(2000 * S)
+    before = battery.charge
+    drive.supply.account(2100 * S)
+    assert battery.charge < before

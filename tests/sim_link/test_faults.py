@@ -43,3 +43,14 @@ def test_a_restart_finds_it_again_at_once() -> None:
     faults.stand(Fault.SENSOR_LOST, 777, 5)
     faults.restart()
     assert faults.told(Fault.SENSOR_LOST, 10, 1) == FaultNotice(10, 1, 3, 1, 0, 5)
+
+
+def test_what_is_over_no_longer_stands_and_may_come_again() -> None:
+    faults = Faults()
+    faults.stand(Fault.SENSOR_LOST, 777)
+    assert not faults.fall(Fault.OVERHEATED)
+    assert faults.fall(Fault.SENSOR_LOST)
+    assert not faults.fall(Fault.SENSOR_LOST)
+    assert not faults
+    faults.stand(Fault.SENSOR_LOST, 888)
+    assert faults.told(Fault.SENSOR_LOST, 9, 1).time_ms == 888

@@ -9,7 +9,7 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from sim_link.errors import SimInputError
-from sim_link.options import MAX_MODULES, OPTIONS, Fault, FaultKind, SimOptions
+from sim_link.options import MAX_MODULES, OPTIONS, SHIPPED, Fault, FaultKind, SimOptions
 
 CHANCES = st.floats(0.0, 1.0)
 
@@ -29,7 +29,8 @@ def test_the_table_names_each_option_once_and_all_of_them() -> None:
 def test_a_url_with_everything() -> None:
     url = (
         "sim://?modules=12&seed=7&loss=0.05&damage=0.01&repeat=0.2&reorder=0.1&delay_ms=25"
-        "&rate=57600&pace=4&fleet=my%20fleet.toml&fault=silent:birch,weak_brake:cedar"
+        "&rate=57600&pace=4&fleet=my%20fleet.toml&fault=silent:birch,weak_brake:cedar@12.5s,"
+        "silent:bridge@3s-4s"
     )
     assert SimOptions.from_url(url) == SimOptions(
         modules=12,
@@ -42,7 +43,11 @@ def test_a_url_with_everything() -> None:
         rate=57_600,
         pace=4.0,
         fleet=Path("my fleet.toml"),
-        fault=(Fault(FaultKind.SILENT, "birch"), Fault(FaultKind.WEAK_BRAKE, "cedar")),
+        fault=(
+            Fault(FaultKind.SILENT, "birch"),
+            Fault(FaultKind.WEAK_BRAKE, "cedar", 12_500_000_000),
+            Fault(FaultKind.SILENT, "bridge", 3_000_000_000, 4_000_000_000),
+        ),
     )
 
 
@@ -73,10 +78,15 @@ def test_plain_values_of_a_command_line_are_taken_and_none_left_out() -> None:
         ("rate=0", "rate: a rate in baud"),
         ("pace=0", "pace: a number"),
         ("pace=inf", "pace: a number"),
-        ("fleet=", "fleet: the name of a fleet file"),
+        ("fleet=", "fleet: the name of a fleet file is needed, or of a shipped fleet"),
         ("fault=birch", "fault: KIND:MODULE"),
         ("fault=silent:", "fault: KIND:MODULE"),
         ("fault=lazy:birch", "KIND one of silent, weak_brake, low_battery, restart_on_brake"),
+        ("fault=silent:birch@5", "fault: KIND:MODULE, KIND:MODULE@12.5s or KIND:MODULE@12.5s-20s"),
+        ("fault=silent:birch@5s-4s", "fault: an end after the beginning is needed, not 5s-4s"),
+        ("fault=silent:birch@9999999s", "fault: at most 1000000 s is needed, not 9999999"),
+        ("fault=silent:birch,lazy:elm", "is needed, not 'lazy'"),
+        ("fault=silent:birch,", "fault: KIND:MODULE"),
         ("seed=1&seed=2", "seed: is given twice"),
     ],
 )
@@ -100,6 +110,14 @@ def test_errors_name_where_the_option_was_given() -> None:
         SimOptions.from_texts({"loss": "2"}, "simulate")
 
 
+def test_help_names_every_kind_of_fault_its_times_and_the_shipped_fleets() -> None:
+    for kind in FaultKind:
+        assert kind in OPTIONS["fault"].help
+    assert "KIND:MODULE@12.5s-20s" in OPTIONS["fault"].help
+    assert "bridge" in OPTIONS["fault"].help
+    assert ", ".join(SHIPPED) in OPTIONS["fleet"].help
+
+
 @given(
     st.builds(
         SimOptions,
@@ -113,7 +131,13 @@ def test_errors_name_where_the_option_was_given() -> None:
         rate=st.integers(300, 10_000_000),
         pace=st.floats(0.01, 1000),
         fault=st.lists(
-            st.builds(Fault, st.sampled_from(FaultKind), st.sampled_from(["birch", "mod-009"])),
+            st.builds(
+                Fault,
+                st.sampled_from(FaultKind),
+                st.sampled_from(["birch", "mod-009"]),
+                st.integers(0, 10**14),
+                st.none() | st.integers(10**14 + 1, 10**15),
+            ),
             max_size=3,
         ).map(tuple),
     )

@@ -70,7 +70,7 @@ def test_a_module_stays_the_same_and_a_weak_brake_is_weak() -> None:
 
 
 def test_a_brake_moves_the_body_by_way_of_its_tilt(monkeypatch: pytest.MonkeyPatch) -> None:
-    monkeypatch.setattr(mechanics, "floor_pivot", lambda *_: result_of(1, math.pi / 2))
+    monkeypatch.setattr(mechanics, "pivot", lambda *_, **__: result_of(1, math.pi / 2))
     body = body_of(face_up=4)
     body.brake(500.0, 1, 1, S)
     on_the_way = body.posture(S + 200 * MS)
@@ -81,7 +81,7 @@ def test_a_brake_moves_the_body_by_way_of_its_tilt(monkeypatch: pytest.MonkeyPat
 
 
 def test_back_is_the_other_way_round(monkeypatch: pytest.MonkeyPatch) -> None:
-    monkeypatch.setattr(mechanics, "floor_pivot", lambda *_: result_of(2, math.pi))
+    monkeypatch.setattr(mechanics, "pivot", lambda *_, **__: result_of(2, math.pi))
     body = body_of(face_up=1)
     body.brake(-500.0, -1, 1, 0)
     assert body.posture(100 * MS).tilt_rad < 0
@@ -94,11 +94,11 @@ def test_the_brake_gets_posture_sense_and_a_speed_without_sign(
 ) -> None:
     calls: list[tuple[Kind, float, int, int]] = []
 
-    def spy(kind: Kind, speed: float, face_up: int, sense: int, watch: None) -> MotionResult:
+    def spy(kind: Kind, speed: float, face_up: int, sense: int, **_: object) -> MotionResult:
         calls.append((kind, speed, face_up, sense))
         return result_of(1, math.pi / 2)
 
-    monkeypatch.setattr(mechanics, "floor_pivot", spy)
+    monkeypatch.setattr(mechanics, "pivot", spy)
     body = body_of(face_up=3)
     for count in range(1, 200):
         body.brake(-500.0, -1, count, count * S)
@@ -129,7 +129,7 @@ def test_a_box_on_no_face_is_tilted_until_somebody_rights_it(
     monkeypatch: pytest.MonkeyPatch,
 ) -> None:
     leaning = result_of(0, 0.7, settled=False)
-    monkeypatch.setattr(mechanics, "floor_pivot", lambda *_: leaning)
+    monkeypatch.setattr(mechanics, "pivot", lambda *_, **__: leaning)
     body = body_of()
     body.brake(400.0, 1, 1, 0)
     lying = body.posture(10 * S)

@@ -8,7 +8,7 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from protocol.frame import FrameDecoder, frame
-from sim_link.radio import MAX_FLIPPED_BITS, Channel, Quality, Way
+from sim_link.radio import MAX_FLIPPED_BITS, Channel, Quality, Way, faintness
 
 MS = 1_000_000
 FRAME = frame(bytes(range(1, 40)))
@@ -107,3 +107,72 @@ def test_luck_depends_on_the_frame_count_and_not_on_the_time() -> None:
 
 def test_an_empty_damaged_frame_does_not_hang() -> None:
     assert len(channel(damage=1.0).offer(b"\0", 0)[0][1]) == 1
+
+
+# --- bursts, spread and range ------------------------------------------------------------
+
+
+def runs_of_losses(path: Channel, count: int) -> list[int]:
+    """Lengths of the runs of lost frames among so many."""
+    lost = [not path.offer(FRAME, i) for i in range(count)]
+    return [len(list(group)) for gone, group in itertools.groupby(lost) if gone]
+
+
+@pytest.mark.parametrize(("loss", "burst"), [(0.1, 4.0), (0.3, 8.0), (0.5, 2.0), (0.02, 20.0)])
+def test_bursts_have_the_mean_length_and_the_losses_the_mean_part(
+    loss: float, burst: float
+) -> None:
+    """Gilbert (1960): sojourns in the bad state are geometric with mean 1/P(leave), and its
+    stationary part is P(enter) / (P(enter) + P(leave)). Runs are independent, so that the mean of n
+    of them is good to burst/sqrt(n), and the loss to about loss sqrt(2/n)."""
+    count = 40_000
+    runs = runs_of_losses(channel(loss=loss, burst=burst), count)
+    assert sum(runs) / len(runs) == pytest.approx(burst, abs=4 * burst / math.sqrt(len(runs)))
+    assert sum(runs) / count == pytest.approx(loss, rel=4 * math.sqrt(2 / len(runs)))
+
+
+def test_a_burst_of_one_is_independent_luck() -> None:
+    """The mean run of independent losses is 1/(1 - p)."""
+    assert history(channel(loss=0.3, burst=1.0)) == history(channel(loss=0.3))
+    runs = runs_of_losses(channel(loss=0.3), 20_000)
+    assert sum(runs) / len(runs) == pytest.approx(1 / 0.7, rel=0.03)
+
+
+@pytest.mark.parametrize("loss", [0.0, 1.0])
+def test_bursts_of_nothing_and_of_everything(loss: float) -> None:
+    assert all(bool(arrivals) is (loss == 0.0) for arrivals in history(channel(loss=loss, burst=5)))
+
+
+def test_spread_is_within_its_bounds_and_keeps_the_order() -> None:
+    times = [arrivals[0][0] for arrivals in history(channel(spread_ms=25.0, delay_ms=10.0))]
+    assert times == sorted(times)
+    late = [t_ns - i * 10 * MS for i, t_ns in enumerate(times)]
+    assert all(10 * MS <= each <= 37 * MS + MS for each in late)
+    assert max(late) - min(late) > 10 * MS
+
+
+def test_only_a_path_without_faults_is_perfect() -> None:
+    assert channel().perfect
+    assert channel(burst=9.0).perfect  # bursts of no losses
+    for name in ("loss", "damage", "repeat", "reorder", "delay_ms", "spread_ms", "faint"):
+        assert not channel(**{name: 0.1}).perfect
+
+
+def test_range_by_hand() -> None:
+    """30 dB a decade: half way out the margin is 9.03 dB, so 1/(1 + 10^(9.03/4)) is lost."""
+    assert faintness(100.0, None) == faintness(0.0, 50.0) == 0.0
+    assert faintness(50.0, 50.0) == 0.5
+    assert faintness(25.0, 50.0) == pytest.approx(1 / (1 + 10 ** (30 * math.log10(2) / 4)))
+    assert faintness(25.0, 50.0) == pytest.approx(0.0055, abs=1e-4)
+    assert faintness(100.0, 50.0) == 1.0
+
+
+@given(st.floats(0.1, 500.0), st.floats(1.0, 3.0), st.floats(1.0, 100.0))
+def test_further_out_more_is_lost(distance_m: float, further: float, range_m: float) -> None:
+    assert faintness(distance_m, range_m) <= faintness(further * distance_m, range_m) <= 1.0
+
+
+def test_what_is_faint_is_lost_as_often_as_told_whatever_else_is() -> None:
+    n = 4000
+    lost = sum(not arrivals for arrivals in history(channel(faint=0.4, loss=0.5, burst=4.0), n))
+    assert lost / n == pytest.approx(1 - 0.6 * 0.5, abs=0.04)

@@ -3,12 +3,13 @@
 import hashlib
 import itertools
 import math
+import struct
 
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from sim_link.randomness import MAX_SEED, Draws, normal, uniform, word
+from sim_link.randomness import MAX_SEED, Draws, four_normals, normal, uniform, word
 
 SEEDS = st.integers(0, MAX_SEED)
 COUNTS = st.integers(0, MAX_SEED)
@@ -97,6 +98,34 @@ def test_normal_draws_have_the_right_moments() -> None:
     assert abs(variance - 1) < 4 * math.sqrt(2 / n)
     assert abs(skew) < 4 * math.sqrt(15 / n)
     assert abs(kurtosis - 3) < 4 * math.sqrt(96 / n)
+
+
+@given(SEEDS, COUNTS, COUNTS)
+def test_four_normals_are_the_quantiles_of_one_digest(seed: int, who: int, count: int) -> None:
+    key = b"".join(number.to_bytes(8, "little") for number in (seed, who, count)) + b"x"
+    words = struct.unpack("<4Q", hashlib.blake2b(key, digest_size=32).digest())
+    drawn = four_normals(seed, who, count, "x")
+    for value, bits in zip(drawn, words, strict=True):
+        # The distribution function brings the quantile back: an independent formula for it.
+        assert 0.5 * math.erfc(-value / math.sqrt(2)) == pytest.approx(bits / 2**64, abs=1e-9)
+
+
+def test_each_part_of_the_key_matters_to_the_four_and_none_is_the_single_one() -> None:
+    keys = [(1, 2, 3, "a"), (2, 2, 3, "a"), (1, 3, 3, "a"), (1, 2, 4, "a"), (1, 2, 3, "b")]
+    drawn = [each for key in keys for each in (*four_normals(*key), normal(*key))]
+    assert len(set(drawn)) == 5 * len(keys)
+    assert Draws(1, 2).four_normals(3, "a") == four_normals(1, 2, 3, "a")
+
+
+def test_the_four_have_the_right_moments_and_do_not_go_together() -> None:
+    n = 4000
+    columns = list(zip(*(four_normals(9, 4, count, "m") for count in range(n)), strict=True))
+    for column in columns:
+        mean = sum(column) / n
+        assert abs(mean) < 4 / math.sqrt(n)
+        assert abs(sum((v - mean) ** 2 for v in column) / n - 1) < 4 * math.sqrt(2 / n)
+    for one, other in itertools.combinations(columns, 2):
+        assert abs(sum(a * b for a, b in zip(one, other, strict=True)) / n) < 4 / math.sqrt(n)
 
 
 def test_happens_as_often_as_told() -> None:

@@ -4,7 +4,7 @@ from dataclasses import replace
 
 import pytest
 
-from protocol.codes import Fault, Reason, SettingId
+from protocol.codes import Fault, Reason, Setting, SettingId
 from protocol.message import (
     Command,
     Flash,
@@ -19,6 +19,7 @@ from protocol.message import (
     Unlock,
 )
 from sim_link.box import Boot, Box
+from sim_link.deed import Deed
 from sim_link.faults import Faults
 from sim_link.mechanics import MotionResult
 from sim_link.module_time import ModuleTime
@@ -74,8 +75,6 @@ def test_nothing_stands_in_the_way_of_a_good_command() -> None:
         (GROUPS._replace(setting=99), Reason.BAD_FIELD),
         (GROUPS._replace(setting=SettingId.BATTERY_LOW_MV, value=2999), Reason.BAD_FIELD),
         (GROUPS._replace(setting=SettingId.CALIBRATION), Reason.READ_ONLY),
-        (PIVOT._replace(setting=2), Reason.UNSUPPORTED),
-        (PIVOT._replace(setting=4), Reason.UNSUPPORTED),
         (HOP, Reason.UNSUPPORTED),
         (TWIST, Reason.UNSUPPORTED),
         (PIVOT._replace(speed_rpm=9001), Reason.OVER_SPEED_LIMIT),
@@ -160,6 +159,33 @@ def test_the_battery_is_looked_at_as_it_is_now() -> None:
     assert why(PIVOT, box, 200 * S) is Reason.BATTERY_LOW
 
 
+def test_what_takes_magnets_is_not_for_a_module_that_nothing_holds() -> None:
+    held, free = box_of(), boxed(spec_of(replace(PAVER, held=False)))
+    for setting in (Setting.WALL, Setting.CREST, Setting.FLAT):
+        assert why(PIVOT._replace(setting=setting), free) is Reason.UNSUPPORTED
+    for motion in (HOP, TWIST):
+        assert why(motion, held) is Reason.UNSUPPORTED
+    assert why(HOP, free) is Reason.NONE
+    assert why(PIVOT._replace(setting=Setting.WALL), held) is Reason.NONE
+
+
+def test_a_module_made_for_less_does_less() -> None:
+    box = boxed(replace(spec_of(), able=frozenset({Deed.FLOOR})))
+    assert why(PIVOT, box) is Reason.NONE
+    assert why(PIVOT._replace(setting=Setting.WALL), box) is Reason.UNSUPPORTED
+
+
+def test_flat_and_twist_need_the_axis_upright() -> None:
+    """As spinning about a level axis lifts, and about an upright one only turns."""
+    flat = PIVOT._replace(setting=Setting.FLAT)
+    free = replace(PAVER, held=False)
+    assert why(flat, box_of()) is Reason.AXIS_UPRIGHT
+    assert why(flat, box_of(5)) is Reason.NONE
+    assert why(TWIST, boxed(spec_of(free))) is Reason.AXIS_UPRIGHT
+    assert why(TWIST, boxed(spec_of(free, 6))) is Reason.NONE
+    assert why(HOP, boxed(spec_of(free, 6))) is Reason.AXIS_UPRIGHT
+
+
 @pytest.mark.parametrize("face_up", [5, 6])
 def test_an_upright_axis_blocks_a_pivot_but_no_spin(face_up: int) -> None:
     assert reasons_of(box_of(face_up)) == {"Pivot": Reason.AXIS_UPRIGHT}
@@ -167,7 +193,7 @@ def test_an_upright_axis_blocks_a_pivot_but_no_spin(face_up: int) -> None:
 
 def test_a_module_that_lies_on_no_face_takes_no_drive(monkeypatch: pytest.MonkeyPatch) -> None:
     leaning = MotionResult(0, 0.7, 0.8, 5.0, 0.01, 0.4, False)
-    monkeypatch.setattr("sim_link.mechanics.floor_pivot", lambda *_: leaning)
+    monkeypatch.setattr("sim_link.mechanics.pivot", lambda *_, **__: leaning)
     box = box_of()
     box.drive.body.brake(300.0, 1, 1, 0)
     assert reasons_of(box, 5 * S) == both(Reason.NOT_SETTLED)
@@ -182,8 +208,8 @@ def test_the_first_reason_wins_in_the_document_s_order() -> None:
     box.drive.start_spin(3000, 60 * S, 0)
     fast = PIVOT._replace(speed_rpm=9999, latest_ms=0)
     seen = [
-        why(fast._replace(speed_rpm=0, setting=3), box, S),
-        why(fast._replace(setting=3), box, S),
+        why(HOP._replace(speed_rpm=0), box, S),
+        why(HOP, box, S),
     ]
     for take_away in (
         lambda: None,

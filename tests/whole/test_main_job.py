@@ -96,7 +96,7 @@ def test_success_rises_with_speed_around_the_predicted_threshold(over_terminal: 
     from math import pi
 
     from sim_link.fleet_file import load_fleet
-    from sim_link.mechanics import floor_threshold
+    from sim_link.mechanics import pivot_threshold
 
     rates = dict(
         ask(
@@ -108,7 +108,7 @@ def test_success_rises_with_speed_around_the_predicted_threshold(over_terminal: 
     assert rates[4000] < rates[4350] < rates[4700]
     assert rates[4700] >= 0.8
     for kind in {module.kind for module in load_fleet(None).modules}:
-        threshold_rpm = floor_threshold(kind).w_min_rad_s * 60 / (2 * pi)
+        threshold_rpm = pivot_threshold(kind).w_min_rad_s * 60 / (2 * pi)
         assert 4000 < threshold_rpm < 4700
 
 

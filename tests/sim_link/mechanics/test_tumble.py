@@ -12,20 +12,35 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
-from sim_link import contact
-from sim_link.contact import Footing, body_of, push
-from sim_link.hold import GRAVITY_M_S2, floor_hold
 from sim_link.kinds import Kind, centre_inertia_kg_m2, edge_inertia_kg_m2, offset_m
-from sim_link.mechanics import floor_pivot, floor_threshold
-from sim_link.motion import Moment, Phase
-from sim_link.tumble import tumble
+from sim_link.mechanics import Attempt, Moment, Phase, pivot, pivot_threshold
+from sim_link.mechanics.arrays import PLAIN as OPS
+from sim_link.mechanics.bodies import Bodies, bodies_of, lowest_corner, standing_arm_m, turned
+from sim_link.mechanics.forces import Footing, footing, stick
+from sim_link.mechanics.hold import GRAVITY_M_S2, hold_of
 from tests.support.kinds import PLAIN, kind_with
 
 
 def followed(kind: Kind, speed: float, sense: int = 1) -> list[Moment]:
     moments: list[Moment] = []
-    tumble(body_of(kind, 1, sense), kind.brake_onset_s, speed, moments.append)
+    pivot(kind, speed, 1, sense, watch=moments.append)
     return moments
+
+
+def body(kind: Kind, face_up: int = 1, sense: int = 1) -> Bodies:
+    return bodies_of([Attempt(kind, 0.0, face_up, sense)])
+
+
+def standing(kind: Kind, *, slipping: bool) -> Footing:
+    """A free body flat on the floor, about its first corner."""
+    wheel = kind.wheel_inertia_kg_m2 if slipping else 0.0
+    alone = body(kind)
+    inertia = alone.inertia_kg_m2 - wheel
+    return footing(alone, standing_arm_m(alone, 0), (0, True), inertia, (0, 0))
+
+
+def arm_m(kind: Kind, corner: int, angle: float, face_up: int = 1, sense: int = 1) -> Any:
+    return turned(OPS, standing_arm_m(body(kind, face_up, sense), corner % 4), angle)
 
 
 def body_energy(kind: Kind, moment: Moment) -> float:
@@ -37,10 +52,10 @@ def body_energy(kind: Kind, moment: Moment) -> float:
 
 def least_speed(kind: Kind, faces: int, low: float, high: float) -> float:
     """Halving between a speed that turns fewer faces and one that turns enough."""
-    assert floor_pivot(kind, low).faces < faces <= floor_pivot(kind, high).faces
+    assert pivot(kind, low).faces < faces <= pivot(kind, high).faces
     while high - low > 1e-7 * high:
         middle = (low + high) / 2
-        low, high = (low, middle) if floor_pivot(kind, middle).faces >= faces else (middle, high)
+        low, high = (low, middle) if pivot(kind, middle).faces >= faces else (middle, high)
     return high
 
 
@@ -64,8 +79,8 @@ HELD = [
 @pytest.mark.parametrize(("kind", "computed"), HELD)
 def test_held_module_lands_from_the_computed_threshold_on(kind: Kind, computed: float) -> None:
     short, landed = (
-        floor_pivot(kind, computed * (1 - 1e-5)),
-        floor_pivot(kind, computed * (1 + 1e-5)),
+        pivot(kind, computed * (1 - 1e-5)),
+        pivot(kind, computed * (1 + 1e-5)),
     )
     assert (short.faces, short.turned_rad) == (0, 0.0)
     assert (landed.faces, landed.turned_rad) == (1, pytest.approx(math.pi / 2))
@@ -82,10 +97,10 @@ def test_held_module_lands_from_the_computed_threshold_on(kind: Kind, computed: 
 def test_second_face_of_a_held_module(kind: Kind, computed: float) -> None:
     """Computed by solve_ivp: locked before landing 4.00 and 3.98 times the least speed; still
     slipping at landing, 2.76 times."""
-    over = floor_threshold(kind).w_over_rad_s
+    over = pivot_threshold(kind).w_over_rad_s
     assert over == pytest.approx(computed, rel=5e-4)
-    assert floor_pivot(kind, computed * 0.999).faces == 1
-    assert floor_pivot(kind, computed * 1.001).faces == 2
+    assert pivot(kind, computed * 0.999).faces == 1
+    assert pivot(kind, computed * 1.001).faces == 2
 
 
 def test_plastic_landing_keeps_a_quarter_of_the_rate() -> None:
@@ -101,9 +116,9 @@ def test_plastic_landing_keeps_a_quarter_of_the_rate() -> None:
 
 
 def test_restitution_throws_back_and_settles_later() -> None:
-    w_min = floor_threshold(PLAIN).w_min_rad_s
-    plastic = floor_pivot(PLAIN, 1.3 * w_min)
-    springy = floor_pivot(kind_with(restitution=0.4), 1.3 * w_min)
+    w_min = pivot_threshold(PLAIN).w_min_rad_s
+    plastic = pivot(PLAIN, 1.3 * w_min)
+    springy = pivot(kind_with(restitution=0.4), 1.3 * w_min)
     assert plastic.faces == springy.faces == 1
     assert springy.settle_s > plastic.settle_s
     assert springy.settled
@@ -114,7 +129,7 @@ def test_bounce_can_carry_a_held_module_back() -> None:
     e^2 E > lift: with E = 1.5^2 lift that is e > 2/3."""
     for restitution, faces in ((0.60, 1), (0.72, 0)):
         kind = kind_with(restitution=restitution, brake_torque_N_m=500.0)
-        result = floor_pivot(kind, 1.5 * floor_threshold(kind).w_ideal_rad_s)
+        result = pivot(kind, 1.5 * pivot_threshold(kind).w_ideal_rad_s)
         assert result.faces == faces, restitution
         assert result.peak_tilt_rad == pytest.approx(math.pi / 2, abs=1e-6)
 
@@ -124,13 +139,13 @@ def test_magnets_far_stronger_than_the_weight_give_no_energy(part: float) -> Non
     """Fallen back onto its face at a high rate, the module must open that face again to go on
     backwards: magnets that let go freely would roll it for ever."""
     kind = _hinged(0.031, 0.06, 5e-6, 1.0, magnet_torque_N_m=0.5, magnet_angle_rad=0.12)
-    result = floor_pivot(kind, part * floor_threshold(kind).w_min_rad_s)
+    result = pivot(kind, part * pivot_threshold(kind).w_min_rad_s)
     assert (result.faces, result.settled) == (0, True)
     assert result.settle_s < 0.5
 
 
 def test_a_wheel_at_rest_moves_nothing() -> None:
-    result = floor_pivot(kind_with(brake_onset_s=0.002), 0.0)
+    result = pivot(kind_with(brake_onset_s=0.002), 0.0)
     assert result.faces == 0
     assert result.peak_tilt_rad == result.peak_rate_rad_s == 0.0
     assert result.settled
@@ -140,24 +155,24 @@ def test_a_wheel_at_rest_moves_nothing() -> None:
 def test_peak_rate_of_an_instant_brake() -> None:
     """Iw w / Ie, angular momentum about the edge, where the body then slows uphill."""
     kind = kind_with(brake_torque_N_m=5000.0)
-    speed = 0.5 * floor_threshold(kind).w_ideal_rad_s
+    speed = 0.5 * pivot_threshold(kind).w_ideal_rad_s
     expected = kind.wheel_inertia_kg_m2 * speed / edge_inertia_kg_m2(kind)
-    assert floor_pivot(kind, speed).peak_rate_rad_s == pytest.approx(expected, rel=1e-3)
+    assert pivot(kind, speed).peak_rate_rad_s == pytest.approx(expected, rel=1e-3)
 
 
 def test_peak_tilt_of_a_short_motion_by_energy() -> None:
     """An instant brake leaves Ie (Iw w/Ie)^2 / 2, all of it height at the turning point."""
     kind = kind_with(brake_torque_N_m=5000.0)
-    speed = 0.8 * floor_threshold(kind).w_ideal_rad_s
-    hold, edge = floor_hold(kind), edge_inertia_kg_m2(kind)
+    speed = 0.8 * pivot_threshold(kind).w_ideal_rad_s
+    hold, edge = hold_of(kind), edge_inertia_kg_m2(kind)
     energy = (kind.wheel_inertia_kg_m2 * speed) ** 2 / (2 * edge)
-    assert hold.energy_J(floor_pivot(kind, speed).peak_tilt_rad) == pytest.approx(energy, rel=1e-3)
+    assert hold.energy_J(pivot(kind, speed).peak_tilt_rad) == pytest.approx(energy, rel=1e-3)
 
 
 def test_short_swing_lasts_as_long_as_the_linear_pendulum_says() -> None:
     """A nudge of 0.01 rad against a nearly constant torque: 2 rate Ie / T up and down again."""
     kind = kind_with(brake_torque_N_m=5000.0)
-    edge, torque = edge_inertia_kg_m2(kind), floor_hold(kind).torque_N_m(0.0)
+    edge, torque = edge_inertia_kg_m2(kind), hold_of(kind).torque_N_m(0.0)
     rate = math.sqrt(2 * 0.01 * torque / edge)
     moments = followed(kind, rate * edge / kind.wheel_inertia_kg_m2)
     back = next(m for m in moments[5:] if m.angle_rad == 0.0)
@@ -171,7 +186,7 @@ def test_free_module_that_sticks_needs_what_a_hinge_needs() -> None:
     """k = 3, mu = 0.9: MuJoCo with contacts found 445.95 to 445.98 rad/s, the hinge 445.98."""
     kind = _hinged(0.05, 0.16, 8e-6, 0.11772, held=False, floor_friction=0.9)
     assert least_speed(kind, 1, 440.0, 450.0) == pytest.approx(445.9807, rel=1e-4)
-    assert floor_threshold(kind).w_min_rad_s == pytest.approx(445.9847, rel=1e-6)
+    assert pivot_threshold(kind).w_min_rad_s == pytest.approx(445.9847, rel=1e-6)
 
 
 def test_hop_of_a_free_module() -> None:
@@ -207,7 +222,8 @@ def test_friction_needed_to_stick_at_the_start(ratio: float, slides: bool) -> No
     kind = kind_with(brake_torque_N_m=ratio * weight, held=False, floor_friction=0.55)
     inertia = edge_inertia_kg_m2(kind) - kind.wheel_inertia_kg_m2
     x = kind.side_m * (ratio - 1) * weight / inertia / (2 * GRAVITY_M_S2)
-    pull = contact.stick(body_of(kind), Footing(0, 0, push(body_of(kind), slipping=True)), 0.0, 0.0)
+    torque = kind.brake_torque_N_m
+    pull = stick(body(kind), standing(kind, slipping=True), torque, 0.0, 0.0)
     assert pull.friction_N / pull.normal_N == pytest.approx(x / (1 + x))
     early = followed(kind, 400.0)[1]
     corner_speed = early.vx_m_s - early.rate_rad_s * early.height_m
@@ -217,10 +233,10 @@ def test_friction_needed_to_stick_at_the_start(ratio: float, slides: bool) -> No
 def test_normal_force_vanishes_at_the_textbook_rate() -> None:
     """Locked and flat on the floor: theta'^2 = 1.25 g/a for a uniform cube."""
     kind = kind_with(held=False)
-    footing = Footing(0, 0, push(body_of(kind), slipping=False))
+    foot = standing(kind, slipping=False)
     rate = math.sqrt(1.25 * GRAVITY_M_S2 / kind.side_m)
-    assert contact.stick(body_of(kind), footing, 0.0, rate * 0.9999).normal_N > 0
-    assert contact.stick(body_of(kind), footing, 0.0, rate * 1.0001).normal_N < 0
+    assert stick(body(kind), foot, 0.0, 0.0, rate * 0.9999).normal_N > 0
+    assert stick(body(kind), foot, 0.0, 0.0, rate * 1.0001).normal_N < 0
 
 
 def test_over_of_a_free_module_comes_early_and_depends_on_friction() -> None:
@@ -229,7 +245,7 @@ def test_over_of_a_free_module_comes_early_and_depends_on_friction() -> None:
     over = {}
     for friction in (0.5, 0.9):
         kind = _hinged(0.05, 0.16, 8e-6, 5.886, held=False, floor_friction=friction)
-        found = floor_threshold(kind)
+        found = pivot_threshold(kind)
         assert found.w_over_rad_s is not None
         over[friction] = found.w_over_rad_s / found.w_ideal_rad_s
     assert 1.5 < over[0.5] < over[0.9] < 1.75
@@ -237,20 +253,20 @@ def test_over_of_a_free_module_comes_early_and_depends_on_friction() -> None:
 
 def test_sliding_threshold_is_where_the_motion_lands() -> None:
     kind = _hinged(0.05, 0.16, 8e-6, 0.6, held=False, floor_friction=0.3)
-    found = floor_threshold(kind)
+    found = pivot_threshold(kind)
     assert found.feasible
-    assert floor_pivot(kind, found.w_min_rad_s * 0.9999).faces == 0
-    assert floor_pivot(kind, found.w_min_rad_s * 1.0001).faces == 1
+    assert pivot(kind, found.w_min_rad_s * 0.9999).faces == 0
+    assert pivot(kind, found.w_min_rad_s * 1.0001).faces == 1
     assert (
         found.w_min_rad_s
-        < floor_threshold(kind_with(**{**_fields(kind), "held": True})).w_min_rad_s
+        < pivot_threshold(kind_with(**{**_fields(kind), "held": True})).w_min_rad_s
     )
 
 
 def test_bouncing_free_module_comes_to_rest() -> None:
     for restitution in (0.1, 0.3, 0.6):
         kind = kind_with(held=False, restitution=restitution)
-        result = floor_pivot(kind, 900.0)
+        result = pivot(kind, 900.0)
         assert result.settled, restitution
         assert result.turned_rad == pytest.approx(result.faces * math.pi / 2)
 
@@ -263,7 +279,7 @@ def _fields(kind: Kind) -> dict[str, object]:
 def test_next_corner_stands_as_that_face_would(sense: int, next_face: int) -> None:
     """Rolling one face on and being set down on that face are one posture."""
     kind = kind_with(com_offset_m=(0.011, -0.007))
-    rolled = contact.arm_m(body_of(kind, 1, sense), 1, math.pi / 2)
+    rolled = arm_m(kind, 1, math.pi / 2, 1, sense)
     away, up = offset_m(kind, next_face, sense)
     half = kind.side_m / 2
     assert rolled == pytest.approx((-(half + away), half + up))
@@ -301,8 +317,8 @@ def test_locked_body_never_gains_energy_and_always_comes_to_rest(kind: Kind, spe
     for one, two in pairwise(moments):
         if not one.slipping:
             assert body_energy(kind, two) <= body_energy(kind, one) + 1e-6 * start
-        corner = contact.lowest_corner(two.angle_rad)
-        _, clear = contact.arm_m(body_of(kind), corner, two.angle_rad)
+        corner = lowest_corner(OPS, two.angle_rad)
+        _, clear = arm_m(kind, corner, two.angle_rad)
         assert two.height_m >= clear - 1e-8 * kind.side_m
 
 
@@ -318,7 +334,7 @@ def test_held_body_conserves_energy_between_landings(
     """Locked: Ie rate^2/2 + V is constant until the face comes down, to 1e-6 of the lift.
     Slipping: the brake's work tau theta is all there is, Ib rate^2/2 + V = tau theta."""
     kind = kind_with(brake_torque_N_m=brake, magnet_torque_N_m=magnet)
-    hold, edge = floor_hold(kind), edge_inertia_kg_m2(kind)
+    hold, edge = hold_of(kind), edge_inertia_kg_m2(kind)
     lift = hold.energy_J(hold.end_rad)
     locked: list[float] = []
     for moment in followed(kind, speed):
@@ -338,8 +354,8 @@ def test_held_body_conserves_energy_between_landings(
 @settings(max_examples=30, deadline=None)
 def test_result_is_whole_and_the_same_each_time(kind: Kind, speed: float, held: bool) -> None:
     kind = kind_with(**{**_fields(kind), "held": held})
-    result = floor_pivot(kind, speed)
-    assert result == floor_pivot(kind, speed)
+    result = pivot(kind, speed)
+    assert result == pivot(kind, speed)
     assert result.settled
     assert result.turned_rad == pytest.approx(result.faces * math.pi / 2)
     assert result.peak_tilt_rad >= abs(result.turned_rad) - 1e-9
@@ -359,6 +375,4 @@ def test_back_is_forward_in_a_mirror(
     kind = kind_with(com_offset_m=offset, held=False)
     mirrored = kind_with(com_offset_m=(-offset[0], offset[1]), held=False)
     other = {1: 1, 2: 4, 3: 3, 4: 2}[face_up]
-    assert (
-        floor_pivot(kind, speed, face_up, 1).faces == floor_pivot(mirrored, speed, other, -1).faces
-    )
+    assert pivot(kind, speed, face_up, 1).faces == pivot(mirrored, speed, other, -1).faces

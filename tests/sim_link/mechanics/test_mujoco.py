@@ -11,7 +11,7 @@ from typing import Any
 import pytest
 
 from sim_link.kinds import Kind
-from sim_link.mechanics import floor_pivot, floor_threshold
+from sim_link.mechanics import pivot, pivot_threshold
 from tests.support.kinds import kind_with
 
 mujoco = pytest.importorskip("mujoco", reason="needs the extra 'reference'")
@@ -93,7 +93,7 @@ def test_held_threshold(name: str) -> None:
     """Three parts in a thousand below the threshold MuJoCo's body falls back, above it passes
     top dead centre."""
     kind = HINGED[name]
-    w_min = floor_threshold(kind).w_min_rad_s
+    w_min = pivot_threshold(kind).w_min_rad_s
     below, above = (
         _angle_after(kind, w_min * part, 2e-5, math.pi / 4 + 0.2, 1.5) for part in (0.997, 1.003)
     )
@@ -114,16 +114,16 @@ def _free(friction: float) -> Kind:
 def test_free_outcome(part: float) -> None:
     """On contacts that can stick, slide and lift, the same face comes up."""
     kind = _free(0.9)
-    speed = part * floor_threshold(kind).w_min_rad_s
+    speed = part * pivot_threshold(kind).w_min_rad_s
     turned = _angle_after(kind, speed, 5e-5, 9.0, 0.7)
-    assert round(turned / (math.pi / 2)) == floor_pivot(kind, speed).faces
+    assert round(turned / (math.pi / 2)) == pivot(kind, speed).faces
 
 
 @pytest.mark.parametrize("friction", [0.5, 0.9])
 def test_second_face_of_a_free_module(friction: float) -> None:
     """It slides, leaves the floor, lands on a corner and goes on: to 1 % of MuJoCo's speed."""
     kind = _free(friction)
-    over = floor_threshold(kind).w_over_rad_s
+    over = pivot_threshold(kind).w_over_rad_s
     assert over is not None
     second = 3 * math.pi / 4
     below, above = (
