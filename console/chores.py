@@ -9,6 +9,7 @@ from collections.abc import Callable, Sequence
 from console.fetching import Fetcher
 from console.fleet import FleetReducer
 from console.limits import Limits
+from console.slots import NewPlan, SlotKeeper
 from console.staging import StageKeeper, StageNews, Standing
 from console.upkeep import BridgeAsker, PermitKeeper, ProbeKeeper, Saying
 from console.view import ModuleView
@@ -16,14 +17,22 @@ from console.view import ModuleView
 
 class Chores:
     """The schedules of one session. ``busy(module)``: whether it owes an answer to a command;
-    ``answer_ns``: how long the answer to a question takes on the slowest line (fetching.py)."""
+    ``answer_ns``: how long the answer to a question takes on the slowest line (fetching.py);
+    ``slots`` None: what the channel carries is not known, and modules report as they like."""
 
-    def __init__(self, limits: Limits, busy: Callable[[ModuleView], bool], answer_ns: int) -> None:
+    def __init__(
+        self,
+        limits: Limits,
+        busy: Callable[[ModuleView], bool],
+        answer_ns: int,
+        slots: SlotKeeper | None = None,
+    ) -> None:
         self.permits = PermitKeeper(limits)
         self.stages = StageKeeper(limits)
-        self._probes = ProbeKeeper(limits)
+        self._probes = ProbeKeeper(limits, 0 if slots is None else slots.probe_gap_ns)
         self._bridges = BridgeAsker()
         self._fetcher = Fetcher(busy, answer_ns)
+        self._slots = slots
 
     def news(self, fleet: FleetReducer, t_ns: int) -> list[StageNews]:
         """Stages whose start was agreed now, or that were given up."""
@@ -40,12 +49,19 @@ class Chores:
             known = {each.module: each for each in modules}
             wanted = fleet.settings_wanted(), fleet.trace_wanted()
             sayings += self._fetcher.due(known, *wanted, t_ns)
+        if self._slots is not None:
+            sayings += self._slots.due(console, modules, fleet.clock, fleet.report_ms, t_ns)
         return sayings
+
+    def plans(self) -> list[NewPlan]:
+        """Links whose channel was shared out since the last call."""
+        return [] if self._slots is None else self._slots.plans()
 
     def wakes_ns(self) -> list[int | None]:
         """When each schedule is due next; None where one waits for something else."""
         keepers = (self.permits, self.stages, self._probes, self._bridges, self._fetcher)
-        return [keeper.next_ns for keeper in keepers]
+        slots_ns = None if self._slots is None else self._slots.next_ns
+        return [*(keeper.next_ns for keeper in keepers), slots_ns]
 
 
 def _standing(fleet: FleetReducer, command: int) -> Standing:

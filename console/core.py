@@ -12,6 +12,7 @@ from collections.abc import Callable, Sequence
 from functools import partial
 from typing import Final
 
+from console.airtime import Channel
 from console.chores import Chores
 from console.errors import InputError
 from console.fetching import ANSWER_BYTES
@@ -24,6 +25,7 @@ from console.planning import Plan, build_commands, resolve, to_message
 from console.recorder import Recorder
 from console.sealing import ConsoleSeal
 from console.sender import Sender
+from console.slots import NewPlan, SlotKeeper
 from console.standing import RollCaller, StopKeeper, unexplained
 from console.upkeep import fleet_ms
 from console.view import CommandView, FleetView, ModuleView
@@ -45,6 +47,7 @@ from storage.records import (
     OrderGiven,
     OrderVoided,
     Record,
+    SlotsPlanned,
     StageStarted,
     StopLifted,
     StopPressed,
@@ -65,7 +68,8 @@ class SessionCore:
 
     ``answer(given, why_not)`` is called on the log's thread once the log has answered on an
     order; whoever runs the core brings it over to its own thread and calls ``committed``.
-    ``seal`` None: frames are not sealed. ``limits`` are those of the session's pace.
+    ``seal`` None: frames are not sealed. ``limits`` are those of the session's pace. ``channel``
+    None: what the radio carries is not known, and no telemetry slots are handed out.
     """
 
     def __init__(
@@ -75,6 +79,8 @@ class SessionCore:
         answer: Callable[[OrderGiven, str], None],
         seal: ConsoleSeal | None = None,
         limits: Limits = _DEFAULT_LIMITS,
+        *,
+        channel: Channel | None = None,
     ) -> None:
         self._seal = seal
         self._limits = limits
@@ -86,7 +92,9 @@ class SessionCore:
         self._roll = RollCaller()
         self._stops = StopKeeper()
         answer_ns = max((each.line_ns(ANSWER_BYTES) for each in outboxes), default=0)
-        self._chores = Chores(limits, self._owes_answer, answer_ns)
+        slots = None if channel is None else SlotKeeper(channel, seal is not None)
+        self._channel = channel
+        self._chores = Chores(limits, self._owes_answer, answer_ns, slots)
         self._record_number = 0
         self._order_number = 0
         self._command_number = 0
@@ -255,6 +263,15 @@ class SessionCore:
             start_ms = None if news.start_ns is None else fleet_ms(news.start_ns)
             self.note(StageStarted(t_ns, news.order, start_ms))
         self._sender.say(self._chores.due(self.fleet, sorted(self.open_links), t_ns))
+        for planned in self._chores.plans():
+            self._note_plan(planned, t_ns)
+
+    def _note_plan(self, planned: NewPlan, t_ns: int) -> None:
+        link, modules, plan = planned
+        if self._channel is not None:
+            rate_bps, duty_percent = self._channel.air_rate_bps, self._channel.duty_percent
+            figures = plan.seldom, plan.asked_ms, plan.period_ms, round(plan.load * 100, 2)
+            self.note(SlotsPlanned(t_ns, link, rate_bps, duty_percent, modules, *figures))
 
     def _owes_answer(self, module: ModuleView) -> bool:
         return self._exchange.awaits_answer(_destination(module))

@@ -15,6 +15,7 @@ from contextlib import suppress
 from dataclasses import dataclass, replace
 from typing import Any, Final
 
+from console.airtime import Channel
 from console.clock import SessionClock, utc_now
 from console.core import OnEnd, SessionCore
 from console.errors import EngineError, InputError
@@ -69,6 +70,8 @@ class Engine:
         clock: SessionClock,
         opened: SessionOpened,
         seal: ConsoleSeal | None = None,
+        *,
+        channel: Channel | None = None,
     ) -> None:
         self._clock = clock
         self._log = log
@@ -77,7 +80,7 @@ class Engine:
         self._inbox: queue.SimpleQueue[_Request] = queue.SimpleQueue()
         outboxes = [Outbox(LinePacer(port.rate_baud)) for port in self._ports]
         limits = Limits().at_pace(opened.pace)
-        self._core = SessionCore(outboxes, log, self._log_answered, seal, limits)
+        self._core = SessionCore(outboxes, log, self._log_answered, seal, limits, channel=channel)
         self._beat_ns: int | None = None
         self._seal = seal
         self._readers = [

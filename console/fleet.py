@@ -21,7 +21,13 @@ from console.fleet_clock import known_clock
 from console.fleet_commands import expire, plan_order, start_stage, void_order
 from console.fleet_endings import close_commands
 from console.fleet_kept import SettingWanted, TraceWanted, settings_wanted, traces_wanted
-from console.fleet_links import change_link, refuse_frames, take_bytes_in, take_bytes_out
+from console.fleet_links import (
+    change_link,
+    refuse_frames,
+    share_out,
+    take_bytes_in,
+    take_bytes_out,
+)
 from console.fleet_rows import write_correction, write_remark, write_sheet
 from console.fleet_state import FleetState, Moment, Step
 from console.fleet_stop import lift_stop, press_stop, stop_view
@@ -44,6 +50,7 @@ from storage.records import (
     SessionOpened,
     SheetClosed,
     SheetOpened,
+    SlotsPlanned,
     StageStarted,
     StopLifted,
     StopPressed,
@@ -105,6 +112,7 @@ RULES: Final[dict[type[Any], Callable[[FleetState, Moment, Any], None]]] = {
     OrderVoided: void_order,
     CommandExpired: expire,
     StageStarted: start_stage,
+    SlotsPlanned: share_out,
     StopPressed: press_stop,
     StopLifted: lift_stop,
     SheetOpened: _open_sheet,
@@ -201,6 +209,12 @@ class FleetReducer:
         exchange. Its times are those of the records. To be read, not changed."""
         state = self._state.modules.get(module)
         return None if state is None else known_clock(state)
+
+    def report_ms(self, module: int) -> int | None:
+        """Module time of the newest telemetry that the module of this count sent in this boot;
+        None before the first."""
+        state = self._state.modules.get(module)
+        return None if state is None else state.report_ms
 
     def settings_wanted(self) -> tuple[SettingWanted, ...]:
         """Module and setting to ask for next, one a module: of a setting just written, whether it

@@ -38,7 +38,7 @@ from protocol.message import (
     decode,
 )
 from protocol.seal import unsealed_form
-from storage.records import BytesIn, BytesOut, FramesRefused, LinkChanged
+from storage.records import BytesIn, BytesOut, FramesRefused, LinkChanged, SlotsPlanned
 
 BAD_DROPS: Final = 16
 BAD_WITHIN_FRAMES: Final = 64
@@ -152,6 +152,19 @@ def _drop(state: FleetState, at: Moment, link: LinkState, reason: str, frame_cou
         write_alarm(at, None, "damage", f"{text} (in all: {counts})")
         state.notice(at, text)
     link.bad = bad
+
+
+def share_out(state: FleetState, at: Moment, record: SlotsPlanned) -> None:
+    """Tell a person where a link's channel carries less telemetry than was asked for."""
+    if record.period_ms > record.asked_ms:
+        state.notice(
+            at,
+            f"link {record.link}: {record.air_rate_bps} bits a second carry the telemetry of "
+            f"{record.modules} modules every {record.period_ms / 1000:g} s, not every "
+            f"{record.asked_ms / 1000:g} s, in {record.duty_percent:g} % of the time",
+        )
+    if record.left_out:
+        state.notice(at, f"link {record.link}: no telemetry slot for {record.left_out} modules")
 
 
 def change_link(state: FleetState, at: Moment, record: LinkChanged) -> None:

@@ -134,6 +134,7 @@ def notice_boot(state: FleetState, at: Moment, module: ModuleState, boot: int) -
     module.clock.void()
     forget_faults(module)
     module.sequence, module.arrived, module.span = -1, 0, 0
+    module.report_ms = None
     state.touch(module)
     write_alarm(at, module, "restart", f"{module.name} restarted: boot {boot}")
     state.notice(at, f"{module.name} restarted")
@@ -200,6 +201,7 @@ def take_telemetry(state: FleetState, at: Moment, address: int, message: Telemet
     )  # fmt: skip
     if current:
         module.heard_t_ns = at.t_ns
+        module.report_ms = time_ms
         module.activity = activity
         module.flags = flags
         module.face_up = face_up

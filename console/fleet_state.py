@@ -114,6 +114,7 @@ class ModuleState:
     temperature_cC: int = 0
     heard_t_ns: int = 0
     sequence: int = -1
+    report_ms: int | None = None
     arrived: int = 0
     span: int = 0
     in_hand: "dict[int, CommandState]" = field(default_factory=dict)

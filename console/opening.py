@@ -11,6 +11,7 @@ from importlib.metadata import PackageNotFoundError, version
 from pathlib import Path
 from typing import Final
 
+from console.airtime import EVERYDAY_DUTY_PERCENT, Channel
 from console.clock import SessionClock, next_utc_second, utc_now, utc_seconds
 from console.engine import Engine
 from console.errors import InputError, LogError
@@ -29,7 +30,8 @@ PRACTICE_LINK: Final = "sim://?modules=8"
 class SessionOptions:
     """What a person chose for a session. ``log`` None: the default place; ``pace`` None: the
     port's own (a simulated one says it), else 1; ``keys``: the key file of a sealed fleet, or
-    ``keyring:NAME``."""
+    ``keyring:NAME``; ``air_rate_bps`` None: not known, so modules report as they like; else
+    telemetry is on the air for at most ``duty_percent`` of the time, None for the everyday part."""
 
     links: tuple[str, ...]
     log: Path | None = None
@@ -37,6 +39,21 @@ class SessionOptions:
     rate_baud: int = 921_600
     pace: float | None = None
     keys: str | None = None
+    air_rate_bps: int | None = None
+    duty_percent: float | None = None
+
+    @property
+    def channel(self) -> Channel | None:
+        """The radio channel of each link, None where its rate is not known. Raises InputError for
+        what no channel has, and for a duty without a rate."""
+        duty_percent = self.duty_percent
+        if self.air_rate_bps is None:
+            if duty_percent is not None:
+                raise InputError("--duty needs --air-rate: a part of what is not known is nothing")
+            return None
+        return Channel(
+            self.air_rate_bps, EVERYDAY_DUTY_PERCENT if duty_percent is None else duty_percent
+        )
 
 
 def program_name() -> str:
@@ -63,18 +80,21 @@ def open_session(options: SessionOptions) -> Engine:
     Raises InputError, LinkError or LogError; then nothing is left open and no session is in
     the log.
     """
+    channel = options.channel
     keys = None if options.keys is None else load_keys_from(options.keys)
     ports: list[Port] = []
     try:
         ports += [open_port(url, options.rate_baud) for url in options.links]
-        return _start(ports, options, keys)
+        return _start(ports, options, keys, channel)
     except BaseException:
         for port in ports:
             port.close()
         raise
 
 
-def _start(ports: Sequence[Port], options: SessionOptions, keys: KeyRing | None) -> Engine:
+def _start(
+    ports: Sequence[Port], options: SessionOptions, keys: KeyRing | None, channel: Channel | None
+) -> Engine:
     from storage.writer import LogWriter
 
     openings = OpeningStore(default_opening_path())
@@ -96,7 +116,7 @@ def _start(ports: Sequence[Port], options: SessionOptions, keys: KeyRing | None)
         log = LogWriter.open(options.log or default_log_path(), opened)
     except StorageError as error:
         raise LogError(str(error)) from error
-    engine = Engine(ports, log, clock, opened, seal)
+    engine = Engine(ports, log, clock, opened, seal, channel=channel)
     engine.start()
     return engine
 

@@ -73,13 +73,17 @@ class PermitKeeper:
 
 
 class ProbeKeeper:
-    """Asks modules for their clocks, and tells each what is made of its clock."""
+    """Asks modules for their clocks, and tells each what is made of its clock. ``gap_ns``: from one
+    Probe to the next at least, where the channel is known and carries no more; who waited longest
+    is asked first."""
 
-    def __init__(self, limits: Limits) -> None:
+    def __init__(self, limits: Limits, gap_ns: int = 0) -> None:
         self._limits = limits
+        self._gap_ns = gap_ns
         self._due_ns: dict[int, int] = {}
         self._boots: dict[int, int] = {}
         self._sequence = 0
+        self._free_ns = 0
         self.next_ns: int | None = None
 
     def due(
@@ -90,19 +94,30 @@ class ProbeKeeper:
         if known and self.next_ns is not None and t_ns < self.next_ns:
             return []
         sayings = []
+        for module in self._waiting(modules, t_ns):
+            clock = clock_of(module.module)
+            sayings.append(self._probe(console, module, clock, t_ns))
+            calm = clock is not None and self._settled(clock, module, t_ns)
+            period_ns = PROBE_CALM_NS if calm else PROBE_HASTE_NS
+            self._due_ns[module.module] = t_ns + period_ns
+        if sayings:
+            self._free_ns = t_ns + self._gap_ns
+        soonest_ns = min(self._due_ns.values(), default=t_ns + PROBE_HASTE_NS)
+        self.next_ns = min(max(soonest_ns, self._free_ns), t_ns + PROBE_HASTE_NS)  # for restarts
+        return sayings
+
+    def _waiting(self, modules: Sequence[ModuleView], t_ns: int) -> Sequence[ModuleView]:
+        """Whose time has come: all of them, or where there is a gap to keep, who waited longest."""
         for module in modules:
             if self._boots.get(module.module) != module.boot:
                 self._boots[module.module] = module.boot
                 self._due_ns[module.module] = t_ns
-            if self._due_ns[module.module] <= t_ns:
-                clock = clock_of(module.module)
-                sayings.append(self._probe(console, module, clock, t_ns))
-                calm = clock is not None and self._settled(clock, module, t_ns)
-                period_ns = PROBE_CALM_NS if calm else PROBE_HASTE_NS
-                self._due_ns[module.module] = t_ns + period_ns
-        soonest_ns = min(self._due_ns.values(), default=t_ns + PROBE_HASTE_NS)
-        self.next_ns = min(soonest_ns, t_ns + PROBE_HASTE_NS)  # to look for restarts
-        return sayings
+        due = [each for each in modules if self._due_ns[each.module] <= t_ns]
+        if not self._gap_ns or not due:
+            return due
+        if t_ns < self._free_ns:
+            return []
+        return [min(due, key=lambda each: self._due_ns[each.module])]
 
     def _settled(self, clock: ModuleClock, module: ModuleView, t_ns: int) -> bool:
         known = clock.known(t_ns, self._limits.clock_bound_ns)

@@ -14,12 +14,13 @@ Rules, as in WIRE.md, "Owner" and "Drive permit":
     a permit's end in module time is its expiry plus the offset that was told, less the bound that
     was told, less what the clocks may have drifted apart since, less a millisecond of rounding
     a permit that would last longer than LONGEST_PERMIT_MS is none: a clock was told wrong
+    a telemetry slot is the followed console's: it ends with its Release, and with another console
 """
 
 from dataclasses import dataclass
 from typing import Final
 
-from protocol.message import BOUND_UNKNOWN, Permit, Probe
+from protocol.message import BOUND_UNKNOWN, Permit, Probe, Slot
 
 OWNER_GRACE_MS: Final = 3_000
 """Time for a console to learn the clock and give its first permit before another may call."""
@@ -63,6 +64,7 @@ class Allegiance:
         self._told: _Told | None = None
         self._expiry_ms: int | None = None
         """Newest expiry heard, in fleet time."""
+        self._slot: Slot | None = None
 
     def roll_call(self, epoch: int, console: int, now_ms: int) -> bool:
         """Hear a roll call; follow its console where the rules allow. True where the epoch was
@@ -72,7 +74,7 @@ class Allegiance:
             return False
         self.epoch, self.console, self._adopted_ms = epoch, console, now_ms
         if other:
-            self._told = self._expiry_ms = None
+            self._told = self._expiry_ms = self._slot = None
         return True
 
     def hear_probe(self, probe: Probe, now_ms: int) -> None:
@@ -88,9 +90,18 @@ class Allegiance:
             self._expiry_ms = permit.expiry_ms
 
     def release(self, console: int) -> None:
-        """The followed console lets go: permit and ownership end; its epoch is still followed."""
+        """The followed console lets go: permit, ownership and slot end; its epoch is still
+        followed."""
         if self._follows(console):
-            self._expiry_ms = self._adopted_ms = None
+            self._expiry_ms = self._adopted_ms = self._slot = None
+
+    def hear_slot(self, slot: Slot) -> bool:
+        """Take a telemetry slot of the followed console; period 0 takes it away, and a phase that
+        is not within its period is no slot. True where the slot is another than before."""
+        if not self._follows(slot.console) or 0 < slot.period_ms <= slot.phase_ms:
+            return False
+        before, self._slot = self._slot, slot if slot.period_ms else None
+        return self._slot != before
 
     @property
     def clock_told(self) -> bool:
@@ -100,6 +111,27 @@ class Allegiance:
     def module_ms(self, fleet_ms: int) -> int | None:
         """A fleet time in module time, give or take the bound; None while no clock was told."""
         return None if self._told is None else (fleet_ms + self._told.offset_ms) % _WRAP
+
+    @property
+    def slot_period_ms(self) -> int:
+        """Time from one slot to the next; 0 while none is kept: there is no slot, or no clock to
+        keep it by."""
+        return 0 if self._slot is None or self._told is None else self._slot.period_ms
+
+    def slot_after(self, from_ms: int) -> int | None:
+        """The first module time, at ``from_ms`` or later, that is this module's slot; None while
+        none is kept."""
+        if self._slot is None or self._told is None:
+            return None
+        period_ms = self._slot.period_ms
+        passed_ms = (from_ms - self._told.offset_ms) % _WRAP % period_ms
+        return (from_ms + (self._slot.phase_ms - passed_ms) % period_ms) % _WRAP
+
+    def report_due_ms(self, last_ms: int, setting_ms: int) -> int:
+        """When telemetry is due next: at the first slot that is not sooner than half its period
+        after ``last_ms``, when it was last due; without a slot, the setting after that."""
+        slot_ms = self.slot_after(last_ms + self.slot_period_ms // 2)
+        return (last_ms + setting_ms) % _WRAP if slot_ms is None else slot_ms
 
     def permit_left_ms(self, now_ms: int) -> int:
         """How long the wheel may still turn; 0 without a permit."""

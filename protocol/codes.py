@@ -55,6 +55,7 @@ class Code(IntEnum):
     SETTING_ASK = 0x07
     TRACE_ASK = 0x08
     BRIDGE_ASK = 0x09
+    SLOT = 0x0A
     PIVOT = 0x10
     SPIN = 0x11
     REST = 0x12

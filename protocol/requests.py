@@ -103,6 +103,19 @@ class BridgeAsk(NamedTuple):
     sequence: U16
 
 
+@declare(Code.SLOT)
+class Slot(NamedTuple):
+    """Gives the module its telemetry slot: it reports where fleet time modulo ``period_ms`` is
+    ``phase_ms``, for as long as it follows ``console``. ``period_ms`` 0: no slot any more. Not
+    answered; where the module's telemetry falls shows whether it was heard."""
+
+    console: U32
+    boot: U32
+    period_ms: U16
+    identity_bits: U16
+    phase_ms: U16
+
+
 @declare(Code.PIVOT)
 class Pivot(NamedTuple):
     """Command: spin up to ``speed_rpm`` so that braking turns the body in ``direction``.
@@ -250,6 +263,7 @@ Request = (
     | SettingAsk
     | TraceAsk
     | BridgeAsk
+    | Slot
     | Stop
     | Clear
 )

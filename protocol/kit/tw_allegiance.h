@@ -19,12 +19,13 @@ typedef struct {
     uint32_t console;    /* the one followed, 0 for none since the start */
     uint32_t adopted_ms; /* meaningful where adopted is 1 */
     uint32_t expiry_ms;  /* newest expiry heard, in fleet time, where permit is 1 */
-    uint32_t offset_ms;  /* module time less fleet time, where told is 1 */
+    uint32_t offset_ms;  /* module time less fleet time, where told */
     uint32_t told_ms;
-    uint16_t bound_ms;
+    uint16_t told; /* 0: no clock was told; else its bound in ms, and 1 */
+    uint16_t slot_period_ms; /* 0: no telemetry slot */
+    uint16_t slot_phase_ms;
     uint8_t adopted;
     uint8_t permit;
-    uint8_t told;
 } tw_allegiance;
 
 /* Hear a RollCall; follow its console where the rules allow. Returns 1 where the epoch was
@@ -39,6 +40,13 @@ void tw_hear_permit(tw_allegiance *allegiance, const uint8_t *payload);
 
 /* Hear a Release: where it is the followed console's, permit and ownership end. */
 void tw_hear_release(tw_allegiance *allegiance, const uint8_t *payload);
+
+/* Hear a Slot: take the followed console's telemetry slot. */
+void tw_hear_slot(tw_allegiance *allegiance, const uint8_t *payload);
+
+/* When telemetry is due that was last due at last_ms: by its slot, where there is one and a clock
+ * to keep it by, else setting_ms later. */
+uint32_t tw_report_due_ms(const tw_allegiance *allegiance, uint32_t last_ms, uint32_t setting_ms);
 
 /* How long the wheel may still turn; 0 without a permit. */
 uint32_t tw_permit_left_ms(const tw_allegiance *allegiance, uint32_t now_ms);

@@ -59,11 +59,15 @@ static uint8_t is_busy(const tw_module *module)
 }
 
 /* How the body lies, for what is to be done. */
-static uint8_t posture_fault(const tw_module *module, uint8_t code)
+static uint8_t posture_fault(const tw_module *module, const uint8_t *payload)
 {
+    const uint8_t code = payload[TW_AT_CODE];
+    const uint8_t upright =
+        code == TW_CODE_TWIST ||
+        (code == TW_CODE_PIVOT && payload[TW_AT_PIVOT_SETTING] == TW_STANDS_ON_FLAT);
     const int32_t face_up = tw_measure(module, TW_FACE_UP);
     const uint8_t level = face_up >= 1 && face_up <= 4;
-    if (code == TW_CODE_TWIST ? level : code != TW_CODE_SPIN && face_up > 4) {
+    if (upright ? level : code != TW_CODE_SPIN && face_up > 4) {
         return TW_REASON_AXIS_UPRIGHT;
     }
     return tw_measure(module, TW_SETTLED) ? TW_REASON_NONE : TW_REASON_NOT_SETTLED;
@@ -118,7 +122,7 @@ static uint8_t drive_fault(const tw_module *module, const uint8_t *payload)
     if (goal_rpm > limit_rpm || goal_rpm < -limit_rpm) {
         return TW_REASON_OVER_SPEED_LIMIT;
     }
-    return flags & TW_FLAG_BATTERY_LOW ? TW_REASON_BATTERY_LOW : posture_fault(module, code);
+    return flags & TW_FLAG_BATTERY_LOW ? TW_REASON_BATTERY_LOW : posture_fault(module, payload);
 }
 
 /* A lock, and who may put it on or take it off. */

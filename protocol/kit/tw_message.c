@@ -24,7 +24,8 @@ void tw_put32(uint8_t *at, uint32_t value)
 
 /* Lengths by code, in three runs without gaps. */
 static const uint8_t asks[] = {TW_LEN_ROLL_CALL, TW_LEN_QUERY, TW_LEN_PROBE,       TW_LEN_PERMIT,
-                               TW_LEN_RELEASE,   TW_LEN_GO,    TW_LEN_SETTING_ASK, TW_LEN_TRACE_ASK};
+                               TW_LEN_RELEASE,   TW_LEN_GO,    TW_LEN_SETTING_ASK, TW_LEN_TRACE_ASK,
+                               0, /* BridgeAsk */ TW_LEN_SLOT};
 static const uint8_t commands[] = {TW_LEN_PIVOT, TW_LEN_SPIN,  TW_LEN_REST,
                                    TW_LEN_FLASH, TW_LEN_HOP,   TW_LEN_TWIST,
                                    TW_LEN_LOCK_OUT, TW_LEN_UNLOCK, TW_LEN_SETTING_WRITE};

@@ -90,19 +90,20 @@ static void roll_call(tw_module *module, const uint8_t *payload)
         tw_trace_clear(&module->trace);
         module->staged = 0;
     }
-    module->says |= TW_SAY_PRESENCE | TW_SAY_NAMEPLATE;
+    module->says |= TW_SAY_PRESENCE | TW_SAY_NAMEPLATE | TW_SAY_FAULTS;
     if (tw_is_locked(module)) {
         module->says |= TW_SAY_LOCK;
     }
     module->tell = module->faults;
-    module->says |= TW_SAY_FAULTS;
 }
 
-/* Whether a Probe or TraceAsk names this boot of this box. */
-static uint8_t names_me(const tw_module *module, const uint8_t *payload)
+/* Whether this is a Probe, TraceAsk or Slot of another boot or box: all have both at one place. */
+static uint8_t is_anothers(const tw_module *module, const uint8_t *payload)
 {
-    return tw_get32(payload + TW_AT_PROBE_BOOT) == module->memory.boot &&
-           tw_get16(payload + TW_AT_PROBE_IDENTITY_BITS) == module->memory.identity_bits;
+    const uint8_t code = payload[TW_AT_CODE];
+    return (code == TW_CODE_PROBE || code == TW_CODE_TRACE_ASK || code == TW_CODE_SLOT) &&
+           (tw_get32(payload + TW_AT_PROBE_BOOT) != module->memory.boot ||
+            tw_get16(payload + TW_AT_PROBE_IDENTITY_BITS) != module->memory.identity_bits);
 }
 
 /* Latch and rest. An older number than the newest known is obeyed, and not kept. */
@@ -130,6 +131,9 @@ static void clear(tw_module *module, const uint8_t *payload)
 
 static void dispatch(tw_module *module, const uint8_t *payload)
 {
+    if (is_anothers(module, payload)) {
+        return;
+    }
     switch (payload[TW_AT_CODE]) {
     case TW_CODE_ROLL_CALL:
         roll_call(module, payload);
@@ -139,10 +143,8 @@ static void dispatch(tw_module *module, const uint8_t *payload)
         module->says |= TW_SAY_REPLY;
         break;
     case TW_CODE_PROBE:
-        if (names_me(module, payload)) {
-            tw_hear_probe(&module->allegiance, payload, module->ms);
-            module->says |= TW_SAY_ECHO;
-        }
+        tw_hear_probe(&module->allegiance, payload, module->ms);
+        module->says |= TW_SAY_ECHO;
         break;
     case TW_CODE_PERMIT:
         tw_hear_permit(&module->allegiance, payload);
@@ -157,9 +159,10 @@ static void dispatch(tw_module *module, const uint8_t *payload)
         module->says |= TW_SAY_SETTING;
         break;
     case TW_CODE_TRACE_ASK:
-        if (names_me(module, payload)) {
-            module->says |= TW_SAY_TRACE;
-        }
+        module->says |= TW_SAY_TRACE;
+        break;
+    case TW_CODE_SLOT:
+        tw_hear_slot(&module->allegiance, payload);
         break;
     case TW_CODE_STOP:
         stop(module, payload);
@@ -183,10 +186,13 @@ static void do_due(tw_module *module)
     tw_look_at_permit(module);
     tw_step(module);
     tw_stage_look(module);
-    const uint32_t period_ms = (uint32_t)tw_setting(module, TW_SETTING_TELEMETRY_PERIOD_MS);
-    if (module->ms - module->report_ms >= period_ms) {
-        const uint32_t late_ms = module->ms - module->report_ms - period_ms;
-        module->report_ms = late_ms < period_ms ? module->report_ms + period_ms : module->ms;
+    const uint32_t due_ms =
+        tw_report_due_ms(&module->allegiance, module->report_ms,
+                         (uint32_t)tw_setting(module, TW_SETTING_TELEMETRY_PERIOD_MS));
+    const uint32_t wait_ms = due_ms - module->report_ms;
+    const uint32_t passed_ms = module->ms - module->report_ms;
+    if (passed_ms >= wait_ms) {
+        module->report_ms += passed_ms < 2u * wait_ms ? wait_ms : passed_ms;
         module->says |= TW_SAY_TELEMETRY;
     }
 }

@@ -138,7 +138,8 @@ void tw_module_hear(tw_module *module, uint8_t byte);
 /* Take one checked payload, sealed or not. It is changed where it stands. */
 void tw_module_payload(tw_module *module, uint8_t *payload, uint8_t length);
 
-/* Let time pass. Call it every millisecond or two while a wheel turns or something is staged,
+/* Let time pass. Call it every millisecond or two while a wheel turns or something is staged, and
+ * always where the console hands out telemetry slots, which are kept as well as this is called;
  * else whenever convenient, at least every 20 ms. */
 void tw_module_wake(tw_module *module);
 

@@ -46,6 +46,7 @@ enum {
     TW_CODE_SETTING_ASK = 0x07,
     TW_CODE_TRACE_ASK = 0x08,
     TW_CODE_BRIDGE_ASK = 0x09,
+    TW_CODE_SLOT = 0x0a,
     TW_CODE_PIVOT = 0x10,
     TW_CODE_SPIN = 0x11,
     TW_CODE_REST = 0x12,
@@ -227,6 +228,16 @@ enum {
 enum {
     TW_AT_BRIDGE_ASK_SEQUENCE = 6,
     TW_LEN_BRIDGE_ASK = 8,
+};
+
+/* Slot. */
+enum {
+    TW_AT_SLOT_CONSOLE = 6,
+    TW_AT_SLOT_BOOT = 10,
+    TW_AT_SLOT_PERIOD_MS = 14,
+    TW_AT_SLOT_IDENTITY_BITS = 16,
+    TW_AT_SLOT_PHASE_MS = 18,
+    TW_LEN_SLOT = 20,
 };
 
 /* Pivot. */

@@ -9,6 +9,7 @@ from pathlib import Path
 
 import pytest
 
+from console.airtime import Channel
 from console.core import SessionCore
 from console.engine import Engine
 from console.errors import EngineError, InputError, LinkError, LogError
@@ -197,6 +198,19 @@ def test_a_log_that_is_no_log_is_refused(tmp_path: Path) -> None:
 def test_different_paces_are_refused(log: Path) -> None:
     with pytest.raises(InputError, match="pace"):
         open_session(SessionOptions(("sim://?pace=2", "sim://?pace=3"), log))
+
+
+def test_a_duty_without_an_air_rate_is_refused(log: Path) -> None:
+    with pytest.raises(InputError, match="--air-rate"):
+        open_session(SessionOptions((LINK,), log, duty_percent=10.0))
+    assert not log.exists()
+
+
+def test_the_channel_is_as_given_and_takes_a_quarter_where_nobody_says() -> None:
+    assert SessionOptions((LINK,)).channel is None
+    assert SessionOptions((LINK,), air_rate_bps=9_600).channel == Channel(9_600, 25.0)
+    said = SessionOptions((LINK,), air_rate_bps=9_600, duty_percent=1.0)
+    assert said.channel == Channel(9_600, 1.0)
 
 
 def test_the_operator_is_as_given_or_who_is_logged_in(monkeypatch: pytest.MonkeyPatch) -> None:

@@ -10,7 +10,7 @@ from console.fleet_links import BAD_DROPS, BAD_WITHIN_FRAMES
 from protocol.codes import CONSOLE_ADDRESS
 from protocol.frame import frame
 from protocol.message import HEADER, Packet, RollCall
-from storage.records import BytesIn, BytesOut, LinkChanged
+from storage.records import BytesIn, BytesOut, LinkChanged, SlotsPlanned
 from storage.rows import LinkEventRow
 from tests.support.wire_script import (
     ADDRESS,
@@ -219,3 +219,19 @@ def test_noise_for_ever_is_one_alarm_and_bounded_memory() -> None:
     fold.on()
     assert fold.alarms == ["damage"]
     assert fold.view.links[0].dropped == 501
+
+
+def shared_out(asked_ms: int, period_ms: int, left_out: int) -> list[str]:
+    """What a person is told of a channel of 9,600 bit/s."""
+    script = Script().open()
+    script.add(SlotsPlanned, 0, 9_600, 25.0, 12, left_out, asked_ms, period_ms, 24.9)
+    return [text for _, text in Fold(script).view.notices]
+
+
+def test_telemetry_that_a_channel_slows_is_told_of() -> None:
+    assert shared_out(500, 500, 0) == []
+    assert shared_out(500, 1_720, 0) == [
+        "link 0: 9600 bits a second carry the telemetry of 12 modules every 1.72 s, not every "
+        "0.5 s, in 25 % of the time"
+    ]
+    assert shared_out(500, 500, 2) == ["link 0: no telemetry slot for 2 modules"]

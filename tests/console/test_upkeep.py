@@ -40,6 +40,26 @@ def clock_with(offset_ns: int, delay_ns: int = 4 * NS_PER_MS, exchanges: int = 1
     return clock
 
 
+# -- probes on a channel that carries only so many --------------------------------------------
+
+
+def test_probes_keep_a_gap_and_everybody_gets_a_turn() -> None:
+    """Eight who are all to be asked four times a second, and room for ten a second."""
+    keeper = ProbeKeeper(LIMITS, gap_ns=100 * NS_PER_MS)
+    asked: list[tuple[int, int]] = []
+    t_ns = 0
+    while t_ns < 16 * SECOND_NS:
+        said = keeper.due(CONSOLE, eight(), lambda at: None, t_ns)
+        asked += [(t_ns, each.address) for each in said]
+        assert keeper.next_ns is not None
+        t_ns = max(keeper.next_ns, t_ns + NS_PER_MS)
+    times = [at_ns for at_ns, _ in asked]
+    assert {behind - before for before, behind in itertools.pairwise(times)} == {100 * NS_PER_MS}
+    addresses = [address for _, address in asked]
+    assert sorted(addresses[:8]) == sorted(each.address for each in eight())
+    assert addresses[8:] == addresses[:-8]
+
+
 # -- permits ---------------------------------------------------------------------------------
 
 

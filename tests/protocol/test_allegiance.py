@@ -15,7 +15,7 @@ from protocol.allegiance import (
     ms_until,
 )
 from protocol.clock import DRIFT_LIMIT_PPM
-from protocol.message import BOUND_UNKNOWN, Permit, Probe
+from protocol.message import BOUND_UNKNOWN, Permit, Probe, Slot
 
 OURS, THEIRS = 0xA11CE, 0xB0B
 EPOCH = 1_700_000_000
@@ -539,3 +539,101 @@ def test_nothing_that_still_holds_is_forgotten() -> None:
     early.forget_old(100)
     early.hear_probe(Probe(9, 1, 1, 1, 0, 5), 200)
     assert early.permit_left_ms(200) > 4_000
+
+
+# Telemetry slots; vectors.json has whole histories of them.
+
+
+def slot(period_ms: int, phase_ms: int, console: int = OURS) -> Slot:
+    return Slot(console, 7, period_ms, 0x2211, phase_ms)
+
+
+def slotted(period_ms: int, phase_ms: int, offset_ms: int = 0) -> Allegiance:
+    module = adopted()
+    module.hear_probe(probe(offset_ms, 5), 0)
+    assert module.hear_slot(slot(period_ms, phase_ms))
+    return module
+
+
+def test_a_slot_by_hand() -> None:
+    module = slotted(400, 150, offset_ms=1000)
+    assert module.slot_period_ms == 400
+    assert [module.slot_after(at) for at in (1150, 1151, 1549, 1550)] == [1150, 1550, 1550, 1550]
+    assert module.report_due_ms(1150, 500) == 1550
+    assert module.report_due_ms(1349, 500) == 1550  # 1,549 is before it
+    assert module.report_due_ms(1351, 500) == 1950  # 1,551 is past it
+
+
+def test_no_slot_before_there_is_a_clock_and_none_of_nobodys() -> None:
+    module = Allegiance()
+    assert not module.hear_slot(slot(400, 150, console=0))
+    module = adopted()
+    assert module.hear_slot(slot(400, 150))
+    assert (module.slot_period_ms, module.slot_after(0)) == (0, None)
+    assert module.report_due_ms(7, 500) == 507
+    module.hear_probe(probe(0, 5), 0)
+    assert module.slot_after(0) == 150
+
+
+@pytest.mark.parametrize(
+    ("heard", "kept"),
+    [
+        (slot(400, 150), 400),
+        (slot(400, 400), 400),
+        (slot(400, 401), 400),
+        (slot(1, 0, THEIRS), 400),
+        (slot(0, 0, THEIRS), 400),
+        (slot(0, 0), 0),
+        (slot(0, 9), 0),
+        (slot(1, 0), 1),
+        (slot(65_535, 65_534), 65_535),
+    ],
+)
+def test_what_changes_a_slot(heard: Slot, kept: int) -> None:
+    module = slotted(400, 150)
+    assert module.hear_slot(heard) == (kept != 400)
+    assert module.slot_period_ms == kept
+
+
+def test_a_slot_ends_with_its_console_and_not_with_its_epoch() -> None:
+    module = slotted(400, 150)
+    assert module.roll_call(EPOCH + 1, OURS, 5)
+    assert module.slot_period_ms == 400
+    module.release(THEIRS)
+    assert module.slot_period_ms == 400
+    module.release(OURS)
+    assert module.slot_period_ms == 0
+    module = slotted(400, 150)
+    assert module.roll_call(EPOCH + 1, THEIRS, OWNER_GRACE_MS)
+    assert module.slot_period_ms == 0
+    module.hear_probe(probe(0, 5, THEIRS), OWNER_GRACE_MS)
+    assert module.slot_period_ms == 0
+
+
+def test_a_slot_is_not_kept_by_a_clock_told_twelve_days_ago() -> None:
+    module = slotted(400, 150)
+    module.forget_old((1 << 30) - 1)
+    assert module.slot_period_ms == 400
+    module.forget_old(1 << 30)
+    assert module.slot_period_ms == 0
+
+
+@given(
+    st.integers(1, 65_535),
+    st.integers(0, 65_534),
+    st.integers(0, U32 - 1),
+    st.integers(0, U32 - 1),
+)
+def test_the_next_slot_is_one_and_none_is_left_out(
+    period_ms: int, phase_ms: int, offset_ms: int, last_ms: int
+) -> None:
+    """Against the definition: fleet time modulo the period is the phase. Where fleet time wraps
+    on the way, the count begins anew, and a slot may come half a period early or late."""
+    phase_ms %= period_ms
+    module = slotted(period_ms, phase_ms, offset_ms)
+    due_ms = module.report_due_ms(last_ms, 500)
+    waits_ms = (due_ms - last_ms) % U32
+    from_ms = (last_ms + period_ms // 2 - offset_ms) % U32
+    assert period_ms // 2 <= waits_ms < period_ms // 2 + period_ms
+    if from_ms + period_ms < U32:
+        assert (due_ms - offset_ms) % U32 % period_ms == phase_ms

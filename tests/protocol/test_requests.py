@@ -29,6 +29,7 @@ from protocol.requests import (
     Rest,
     RollCall,
     SettingWrite,
+    Slot,
     Spin,
     TraceAsk,
     Twist,
@@ -48,6 +49,7 @@ FIELDS: dict[str, tuple[str, str]] = {
     "SettingAsk": ("setting", "B"),
     "TraceAsk": ("epoch boot number identity_bits first wanted", "IIHHHI"),
     "BridgeAsk": ("sequence", "H"),
+    "Slot": ("console boot period_ms identity_bits phase_ms", "IIHHH"),
     "Pivot": (
         "epoch boot number identity_bits latest_ms stage setting direction speed_rpm",
         "IIHHIBBbH",
@@ -125,8 +127,8 @@ def test_nothing_else_can_be_staged() -> None:
     assert set(get_args(Motion)) < set(get_args(Drive)) < set(COMMANDS)
 
 
-@pytest.mark.parametrize("message_type", [*COMMANDS, Query, Probe, TraceAsk])
-def test_the_boot_stands_at_offset_10_of_all_that_prove_freshness(message_type: type[Any]) -> None:
+@pytest.mark.parametrize("message_type", [*COMMANDS, Query, Probe, TraceAsk, Slot])
+def test_the_boot_stands_at_offset_10_of_all_that_have_one(message_type: type[Any]) -> None:
     """A small module compares four bytes at one place, whatever the message."""
     before = forms(message_type)[: message_type._fields.index("boot")]
     assert HEADER_BYTES + struct.calcsize("<" + before) == 10
@@ -134,10 +136,16 @@ def test_the_boot_stands_at_offset_10_of_all_that_prove_freshness(message_type: 
 
 def test_nothing_else_of_a_console_carries_a_boot() -> None:
     with_boot = {each for each in REQUESTS if "boot" in each._fields}
-    assert with_boot == {*COMMANDS, Query, Probe, TraceAsk}
+    assert with_boot == {*COMMANDS, Query, Probe, TraceAsk, Slot}
 
 
-@pytest.mark.parametrize("message_type", [Probe, Permit, Release, Go])
+@pytest.mark.parametrize("message_type", [*COMMANDS, Probe, TraceAsk, Slot])
+def test_the_box_stands_at_offset_16_of_all_that_name_one(message_type: type[Any]) -> None:
+    before = forms(message_type)[: message_type._fields.index("identity_bits")]
+    assert HEADER_BYTES + struct.calcsize("<" + before) == 16
+
+
+@pytest.mark.parametrize("message_type", [Probe, Permit, Release, Go, Slot])
 def test_what_only_the_followed_console_may_say_begins_with_its_number(
     message_type: type[Any],
 ) -> None:

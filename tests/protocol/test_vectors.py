@@ -35,6 +35,7 @@ from protocol.message import (
 )
 from protocol.seal import KeyRing, Opened, Refused, Sealer, open_seal
 from protocol.seal_gate import ModuleGate
+from sim_link.deed import Deed
 from sim_link.fleet_file import load_fleet
 from sim_link.module import VirtualModule
 from tests.support.independent import crc32c, stuff
@@ -165,6 +166,7 @@ def run_module(vector: dict[str, Any]) -> None:
         address=vector["address"],
         identity=vector["identity"],
         charge=1.0,
+        able=frozenset({Deed.FLOOR}),
     )
     module = VirtualModule(spec, 1, boot=vector["boot"], drift_ppm=0.0)
     for step in vector["steps"]:
@@ -186,6 +188,24 @@ def same(found: str, expected: str) -> bool:
     if expected.endswith("****"):
         return found[:-4] == expected[:-4]
     return found == expected
+
+
+def run_telemetry(vector: dict[str, Any]) -> None:
+    """When the simulated module reports, its clock running true."""
+    spec = replace(
+        load_fleet(None).modules[0],
+        address=vector["address"],
+        identity=vector["identity"],
+        telemetry_hz=2.0,
+    )
+    module = VirtualModule(spec, 1, boot=vector["boot"], drift_ppm=0.0)
+    for step in vector["steps"]:
+        t_ns = step["at_ms"] * 1_000_000 + 999
+        sent = module.wake(t_ns)
+        if step["in"]:
+            sent += module.receive(decode(bytes.fromhex(step["in"])), t_ns)
+        times = [each.message.time_ms for each in sent if isinstance(each.message, Telemetry)]
+        assert step["times"] in (None, times), (step, times)
 
 
 def run_seal(vector: dict[str, Any]) -> None:
@@ -218,6 +238,7 @@ RUNNERS: dict[str, Callable[[dict[str, Any]], None]] = {
     "stop": run_stop,
     "allegiance": run_allegiance,
     "module": run_module,
+    "telemetry": run_telemetry,
     "seal": run_seal,
     "open": run_open,
     "gate": run_gate,
@@ -275,7 +296,8 @@ def test_every_rule_named_is_a_heading_of_the_document() -> None:
 
 
 @pytest.mark.parametrize(
-    "kind", ["frame", "message", "seal", "check", "module", "allegiance", "memory", "gate"]
+    "kind",
+    ["frame", "message", "seal", "check", "module", "allegiance", "memory", "gate", "telemetry"],
 )
 def test_a_wrong_vector_fails(kind: str) -> None:
     """The runners can fail: one digit of what is expected is changed."""
@@ -291,6 +313,7 @@ def test_a_wrong_vector_fails(kind: str) -> None:
         "memory": next((step["out"] for step in steps if step.get("out")), None),
         "allegiance": '"epoch": 0',
         "gate": "obeyed",
+        "telemetry": '"times": [3150',
     }[kind]
     assert expected
     wrong = expected[:-1] + ("0" if expected[-1] != "0" else "1")

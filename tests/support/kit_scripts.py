@@ -40,6 +40,7 @@ from protocol.message import (
     Unlock,
     encode,
 )
+from sim_link.deed import Deed
 from sim_link.fleet_file import load_fleet
 from sim_link.module import VirtualModule
 
@@ -141,7 +142,8 @@ class Script:
 
 def _module() -> VirtualModule:
     first = load_fleet(None).modules[0]
-    spec = replace(first, address=ADDRESS, identity=IDENTITY, charge=1.0)
+    able = frozenset({Deed.FLOOR})
+    spec = replace(first, address=ADDRESS, identity=IDENTITY, charge=1.0, able=able)
     return VirtualModule(spec, 1, boot=BOOT, drift_ppm=0.0)
 
 

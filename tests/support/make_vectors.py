@@ -13,6 +13,7 @@ from tests.support.vectors_frames import frame_vectors, message_vectors, payload
 from tests.support.vectors_memory import memory_vectors, stop_vectors
 from tests.support.vectors_module import module_vectors
 from tests.support.vectors_seal import gate_vectors, seal_vectors
+from tests.support.vectors_slots import slot_vectors
 from tests.support.wire_by_hand import KEY
 
 FORMAT = {
@@ -38,6 +39,10 @@ FORMAT = {
     " FaultNotice and SettingValue are not listed: what it sends of these is left out. Echo has"
     " received_us = 1000 at_ms and held_us 0. Four characters **** at the end of an Answer stand"
     " for the two bytes of expect_ms, whatever they are",
+    "telemetry": "a whole module as of the kind module, woken each millisecond, at rest, its"
+    " setting TELEMETRY_PERIOD_MS 500. Each step: at at_ms, after all that was due up to then, it"
+    " hears the payload in (empty: nothing); times are those of the Telemetry, by its own time_ms,"
+    " that it sent by then since the step before (null: not looked at)",
     "seal": "payload sealed under key, slot 0, with this opening: the first, then the second time",
     "open": "payload opened by a receiver that has key in slot 0 only",
     "gate": "the gate of a sealed module just started with this boot number. Each step: it follows"
@@ -56,6 +61,7 @@ def main() -> None:
         *stop_vectors(),
         *allegiance_vectors(),
         *module_vectors(),
+        *slot_vectors(),
         *seal_vectors(),
         *gate_vectors(),
     ]

@@ -83,6 +83,13 @@ def _module(vector: dict[str, Any]) -> Iterator[str]:
         yield " ".join(("hears", str(step["at_ms"]), step["in"] or "-", *step["out"]))
 
 
+def _telemetry(vector: dict[str, Any]) -> Iterator[str]:
+    yield f"module {vector['identity']:016x} {vector['boot']} {vector['address']}"
+    for step in vector["steps"]:
+        times = ["any"] if step["times"] is None else map(str, step["times"])
+        yield " ".join(("reports", str(step["at_ms"]), step["in"] or "-", *times))
+
+
 def _seal(vector: dict[str, Any]) -> Iterator[str]:
     yield " ".join(("seal", str(vector["opening"]), vector["payload"], *vector["sealed"]))
 
@@ -102,6 +109,7 @@ WRITERS: Final = {
     "stop": _stop,
     "allegiance": _allegiance,
     "module": _module,
+    "telemetry": _telemetry,
     "seal": _seal,
     "open": lambda vector: iter([f"open {vector['payload']} {VERDICTS[vector['verdict']]}"]),
     "gate": _gate,

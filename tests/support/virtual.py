@@ -6,6 +6,7 @@ seed gives one history.
 
 from collections.abc import Callable, Sequence
 
+from console.airtime import Channel
 from console.core import SessionCore
 from console.link import Outbox
 from console.orders import parse_order
@@ -62,8 +63,10 @@ class VirtualSession:
         options: SimOptions | None = None,
         epoch: int = 1_000_000,
         keys: KeyRing | None = None,
+        channel: Channel | None = None,
     ) -> None:
         self.keys = keys
+        self.channel = channel
         self.tally: list[TallyEntry] = []
         self.world = World(options or SimOptions(seed=11), self.tally.append)
         self.log = MemoryLog()
@@ -79,7 +82,8 @@ class VirtualSession:
         self.consoles += 1
         self.log = MemoryLog()
         seal = None if self.keys is None else ConsoleSeal(self.keys, epoch, lambda opening: None)
-        self.core = SessionCore([Outbox(LinePacer(921_600))], self.log, self._answer, seal)
+        outboxes = [Outbox(LinePacer(921_600))]
+        self.core = SessionCore(outboxes, self.log, self._answer, seal, channel=self.channel)
         sealed = seal is not None
         opened = SessionOpened(
             t_ns=self.now_ns,

@@ -42,6 +42,14 @@ LAYOUTS: list[tuple[str, int, str, str, tuple[Any, ...], tuple[Any, ...]]] = [
     ),
     ("BridgeAsk", 0x09, "H", "sequence", (258,), (65535,)),
     (
+        "Slot",
+        0x0A,
+        "IIHHH",
+        "console boot period_ms identity_bits phase_ms",
+        (ANNA, BOOT, 1000, BITS, 385),
+        (0xFFFFFFFF, 0, 65535, 65535, 65535),
+    ),
+    (
         "Pivot",
         0x10,
         "IIHHIBBbH",

@@ -210,7 +210,7 @@ static const struct {
                {"hears", run_hears, 3},     {"stops", run_stops, 4},
                {"store", run_store, 1},     {"tears", run_tears, 5},
                {"trace", run_trace, 6},     {"notices", run_notices, 3},
-               {"sticks", run_sticks, 1}};
+               {"sticks", run_sticks, 1},   {"reports", run_reports, 3}};
 
 static int run_line(char *line)
 {

@@ -23,7 +23,7 @@ int run_hears(char **words);
 int run_stops(char **words);
 int run_notices(char **words);
 int run_sticks(char **words);
-
+int run_reports(char **words);
 
 /* check_store.c: lines about what is kept, and traces. */
 int run_store(char **words);

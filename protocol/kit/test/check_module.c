@@ -17,6 +17,8 @@ static struct {
     uint8_t sent[MOST_SENT][TW_MAX_STUFFED];
     uint8_t lengths[MOST_SENT];
     int count;
+    uint32_t reports_ms[MOST_SENT]; /* time_ms of the telemetry sent */
+    int reports;
 } box;
 
 static uint32_t clock_us(void *context)
@@ -55,6 +57,9 @@ static void keep_sent(void *context, const uint8_t *frame, uint8_t length)
             continue;
         }
         const uint8_t code = reader.held[TW_AT_CODE];
+        if (code == TW_CODE_TELEMETRY && box.reports < MOST_SENT) {
+            box.reports_ms[box.reports++] = tw_get32(reader.held + TW_AT_TELEMETRY_TIME_MS);
+        }
         if (code != TW_CODE_PRESENCE && code != TW_CODE_NAMEPLATE && code != TW_CODE_TELEMETRY &&
             code != TW_CODE_FAULT_NOTICE && code != TW_CODE_SETTING_VALUE &&
             box.count < MOST_SENT) {
@@ -172,13 +177,14 @@ static int all_sent(char **expected)
     return left == 0;
 }
 
-/* hears AT_MS PAYLOAD SENT... */
-int run_hears(char **w)
+/* Let time pass until then, and hear a payload. */
+static int live(char **w)
 {
     uint8_t payload[MOST];
     size_t n = 0;
     const uint64_t then_us = (uint64_t)number_of(w[1]) * 1000u;
     box.count = 0;
+    box.reports = 0;
     if (module.plate == NULL) {
         return 0; /* no module was started */
     }
@@ -192,7 +198,28 @@ int run_hears(char **w)
     if (n) {
         tw_module_payload(&module, payload, (uint8_t)n);
     }
-    return all_sent(w + 3);
+    return 1;
+}
+
+/* hears AT_MS PAYLOAD SENT... */
+int run_hears(char **w)
+{
+    return live(w) && all_sent(w + 3);
+}
+
+/* reports AT_MS PAYLOAD TIME_MS...: of telemetry, or any */
+int run_reports(char **w)
+{
+    int met = 0;
+    if (!live(w) || (w[3] && strcmp(w[3], "any") == 0)) {
+        return module.plate != NULL;
+    }
+    for (char **time = w + 3; *time; time++, met++) {
+        if (met == box.reports || box.reports_ms[met] != number_of(*time)) {
+            return 0;
+        }
+    }
+    return met == box.reports;
 }
 
 /* stops PAYLOAD STOP_NUMBER LATCHED */
