@@ -159,6 +159,23 @@ class StageStarted:
 
 
 @dataclass(frozen=True, slots=True)
+class SlotsPlanned:
+    """A link's radio channel was shared out among its modules: how often the keenest of them was
+    to report, and the common period that the channel has room for. ``left_out``: modules for
+    which there is no room at all; ``load_percent``: time on the air that telemetry takes."""
+
+    t_ns: int
+    link: int
+    air_rate_bps: int
+    duty_percent: float
+    modules: int
+    left_out: int
+    asked_ms: int
+    period_ms: int
+    load_percent: float
+
+
+@dataclass(frozen=True, slots=True)
 class StopPressed:
     """All-stop, numbered. ``source``: who or what asked for it."""
 
@@ -232,6 +249,7 @@ NoteRecord = (
     | OrderVoided
     | CommandExpired
     | StageStarted
+    | SlotsPlanned
     | StopPressed
     | StopLifted
     | SheetOpened
@@ -253,6 +271,7 @@ _NOTE_TYPES: Final[dict[str, type[Any]]] = {
         OrderVoided,
         CommandExpired,
         StageStarted,
+        SlotsPlanned,
         StopPressed,
         StopLifted,
         SheetOpened,

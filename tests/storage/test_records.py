@@ -18,6 +18,7 @@ from storage.records import (
     OrderGiven,
     Remark,
     SessionOpened,
+    SlotsPlanned,
     StageStarted,
     note_body,
     note_sort,
@@ -92,6 +93,16 @@ def test_a_stage_s_start_is_a_time_or_none(start_ms: int | None, stored: str) ->
     body = f'{{"order":7,"start_ms":{stored}}}'
     assert note_body(StageStarted(1, 7, start_ms)) == body
     assert read_note("StageStarted", 1, body) == StageStarted(1, 7, start_ms)
+
+
+def test_the_stored_form_of_a_plan_is_what_old_logs_hold() -> None:
+    body = (
+        '{"link":0,"air_rate_bps":9600,"duty_percent":25.0,"modules":12,"left_out":0,'
+        '"asked_ms":500,"period_ms":1720,"load_percent":24.99}'
+    )
+    plan = SlotsPlanned(9, 0, 9_600, 25.0, 12, 0, 500, 1_720, 24.99)
+    assert note_body(plan) == body
+    assert read_note("SlotsPlanned", 9, body) == plan
 
 
 def test_the_stored_form_of_a_correction_is_what_old_logs_hold() -> None:
