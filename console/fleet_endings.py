@@ -120,7 +120,7 @@ def _judge_motion(command: CommandState, first: bool) -> None:
     if first:
         command.module.ribbon.append(command)
     if command.facts is not None:
-        command.outcome = verdict(command.facts, command.planned.motion)
+        command.outcome = verdict(command.facts, command.planned.motion, command.planned.setting)
     else:
         command.outcome = _OUTCOMES_WITHOUT_FACTS[command.ending or OPEN_ENDED]
 

@@ -18,7 +18,7 @@ from console.limits import Limits
 from console.orders import Order
 from console.standing import follows, owned_by_another
 from console.view import FleetView, LinkView, ModuleView
-from protocol.codes import Activity, Flags
+from protocol.codes import Activity, Flags, Setting
 
 BATTERY_LOW_V: Final = 3.5
 """Cell voltage at rest below which no wheel is driven. Common practice of the trade for one
@@ -188,10 +188,12 @@ def _battery_low(case: Case) -> str:
 def _axis_wrong(case: Case) -> str:
     face_up, motion = case.module.face_up, case.order.motion
     upright = face_up in END_FACES
-    if face_up == 0 or upright == (motion == "twist"):
+    flat = case.order.setting is Setting.FLAT
+    if face_up == 0 or upright == (motion == "twist" or flat):
         return ""
     stands, needs = ("upright", "level") if upright else ("level", "upright")
-    return f"its wheel axis is {stands} (face {face_up} up); a {motion} needs it {needs}"
+    what = f"flat {motion}" if flat else motion
+    return f"its wheel axis is {stands} (face {face_up} up); a {what} needs it {needs}"
 
 
 def _not_settled(case: Case) -> str:

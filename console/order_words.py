@@ -12,8 +12,8 @@ from typing import Final, NoReturn
 from console.errors import InputError
 from console.near_miss import did_you_mean
 
-LATER_WORDS: Final = frozenset({"wall", "crest", "flat", "group"})
-"""Words of motions, settings and subjects that this version does not carry out."""
+LATER_WORDS: Final = frozenset({"group"})
+"""Words of subjects that this version does not carry out."""
 
 MAX_SHOWN: Final = 40
 

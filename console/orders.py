@@ -16,7 +16,7 @@ wire layout; the reading of words is order_words.py's.
               | "unlock" "by" person
               | "set" item "to" number
     direction = "forward" | "back"
-    setting   = "floor"
+    setting   = "floor" | "wall" | "crest" | "flat"
     item      = "wheel-limit" | "telemetry-period" | "battery-low" | "groups"
 
 A person is a word, or several in quotation marks. Limits are in rpm, periods in ms, voltages in
@@ -53,7 +53,12 @@ BRAKING: Final = frozenset({"pivot", "hop", "twist"})
 DRIVES: Final = BRAKING | {"spin"}
 """What turns the wheel."""
 DIRECTIONS: Final = {"forward": Direction.FORWARD, "back": Direction.BACK}
-SETTINGS: Final = {"floor": Setting.FLOOR}
+SETTINGS: Final = {
+    "floor": Setting.FLOOR,
+    "wall": Setting.WALL,
+    "crest": Setting.CREST,
+    "flat": Setting.FLAT,
+}
 ITEMS: Final = {
     "wheel-limit": SettingId.WHEEL_LIMIT_RPM,
     "telemetry-period": SettingId.TELEMETRY_PERIOD_MS,
@@ -249,7 +254,7 @@ def _speed(words: Words, order: Order) -> Order:
 def _setting(words: Words, order: Order) -> Order:
     if not words.take("on"):
         return order
-    word = words.need("a setting (floor)", *SETTINGS, example="on floor")
+    word = words.need(f"a setting ({', '.join(SETTINGS)})", *SETTINGS, example="on floor")
     return replace(order, setting=SETTINGS[word])
 
 

@@ -4,16 +4,17 @@ Owns the thresholds and their order, a table for each motion. Must not know reco
 ordered what: facts stay as they were measured, and a verdict can be drawn from them again at any
 time.
 
-A pivot lands one face on. A hop lands if the body left its place and settled on a face, whichever:
-facts do not say where on the floor it came down, so it has neither short nor over. A twist lands
-if it turned by an eighth of a turn or more, either way: no order says yet how far it should.
+A pivot lands one face on, over a crest two. A hop lands if the body left its place and settled on a
+face, whichever: facts do not say where on the floor it came down, so it has neither short nor over.
+A twist lands if it turned by an eighth of a turn or more, either way: no order says yet how far it
+should.
 """
 
 from collections.abc import Callable
 from typing import Final
 
 from console.view import Outcome
-from protocol.codes import Reason
+from protocol.codes import Reason, Setting
 from protocol.message import Facts
 
 STEP_DDEG: Final = 900
@@ -69,13 +70,21 @@ def _never_moved(facts: Facts) -> bool:
 
 
 _Table = tuple[tuple[Outcome, Callable[[Facts], bool]], ...]
-_PIVOT: Final[_Table] = (
-    (Outcome.CUT, _cut_before_brake),
-    (Outcome.ADRIFT, _adrift),
-    (Outcome.STUCK, _never_moved),
-    (Outcome.OVER, lambda facts: faces_turned(facts) >= 2),
-    (Outcome.LANDED, lambda facts: faces_turned(facts) == 1),
-)
+
+
+def _pivot(faces: int) -> _Table:
+    """The table of a pivot that is to turn so many faces."""
+    return (
+        (Outcome.CUT, _cut_before_brake),
+        (Outcome.ADRIFT, _adrift),
+        (Outcome.STUCK, _never_moved),
+        (Outcome.OVER, lambda facts: faces_turned(facts) > faces),
+        (Outcome.LANDED, lambda facts: faces_turned(facts) == faces),
+    )
+
+
+_PIVOT: Final = _pivot(1)
+_OVER_A_CREST: Final = _pivot(2)
 _HOP: Final[_Table] = (
     (Outcome.CUT, _cut_before_brake),
     (Outcome.ADRIFT, _on_no_face),
@@ -92,7 +101,12 @@ _VERDICTS: Final[dict[str, _Table]] = {"pivot": _PIVOT, "hop": _HOP, "twist": _T
 """The first that holds is the verdict; where none does, the body moved and did not get there."""
 
 
-def verdict(facts: Facts, motion: str = "pivot") -> Outcome:
-    """Draw the outcome of a motion from its facts. Pure; never UNSEEN or REFUSED."""
+def verdict(facts: Facts, motion: str = "pivot", setting: int = Setting.FLOOR) -> Outcome:
+    """Draw the outcome of a motion from its facts. Pure; never UNSEEN or REFUSED.
+
+    ``setting`` says for a pivot how far it should turn.
+    """
     table = _VERDICTS.get(motion, _PIVOT)
+    if table is _PIVOT and setting == Setting.CREST:
+        table = _OVER_A_CREST
     return next((outcome for outcome, holds in table if holds(facts)), Outcome.SHORT)

@@ -8,7 +8,7 @@ from console.interlocks import BATTERY_LOW_V, INTERLOCKS, Block, Case, Enforcer,
 from console.limits import Limits
 from console.orders import Order, parse_order
 from console.view import FleetView, LinkView, ModuleView, StopView
-from protocol.codes import Activity, Flags
+from protocol.codes import Activity, Flags, Setting
 
 SECOND_NS = 1_000_000_000
 NOW_NS = 100 * SECOND_NS
@@ -206,6 +206,14 @@ def test_no_wheel_turns_for_a_screen_that_does_not_move() -> None:
         [block] = blocks_of(MODULE, wanted, FLEET, alive=False)
         assert (block.name, "sign of life" in block.text) == ("permit refused", True)
     assert blocks_of(MODULE, FLASH, FLEET, alive=False) == []
+
+
+def test_a_flat_pivot_needs_the_axis_upright() -> None:
+    upright, level = module(face_up=5), module(face_up=2)
+    flat = replace(PIVOT, setting=Setting.FLAT)
+    assert blocks_of(upright, flat, FLEET) == []
+    (block,) = blocks_of(level, flat, FLEET)
+    assert block.text == "its wheel axis is level (face 2 up); a flat pivot needs it upright"
 
 
 def test_each_motion_needs_its_axis() -> None:

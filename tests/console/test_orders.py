@@ -117,7 +117,10 @@ BAD = [
     ("birch pivot forward at 65536", ["from 1 to 65535 rpm"]),
     ("birch pivot forward at " + "9" * 6000, ["from 1 to 65535 rpm"]),
     ("birch spin at 32768", ["from 1 to 32767 rpm"]),
-    ("birch pivot forward at 4400 on", ["expected a setting (floor)", "after 'on'"]),
+    (
+        "birch pivot forward at 4400 on",
+        ["expected a setting (floor, wall, crest, flat)", "after 'on'"],
+    ),
     ("birch pivot forward at 4400 on flor", ["expected a setting", "did you mean 'floor'"]),
     (
         "birch pivot forward at 4400 onn floor",
@@ -159,10 +162,15 @@ def test_bad_orders_say_what_was_expected_and_where(text: str, words: list[str])
     assert len(message) < 160
 
 
+@pytest.mark.parametrize("setting", list(Setting))
+def test_a_pivot_in_each_setting(setting: Setting) -> None:
+    text = f"birch pivot back at 4400 on {setting.name.title()}"
+    order = parse_order(text, NAMES)
+    assert order.setting is setting
+    assert render(order) == text.lower()
+
+
 LATER = [
-    ("birch pivot forward at 4400 on wall", "wall"),
-    ("birch pivot forward at 4400 on crest", "crest"),
-    ("birch pivot forward at 4400 on Flat", "Flat"),
     ("group north pivot back at 4000", "group"),
     ("birch, group north rest", "group"),
 ]

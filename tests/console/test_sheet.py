@@ -91,7 +91,6 @@ BAD = [
     ("motion", 'motion = "hop"', "expected pivot; hop is not in this version"),
     ("motion", 'motion = "spin"', 'expected "pivot", not "spin"'),
     ("motion", "motion = 1", 'expected "pivot", not 1'),
-    ("setting", 'setting = "wall"', "expected floor; wall is not in this version"),
     ("setting", 'setting = "flor"', "did you mean 'floor'"),
     ("speeds_rpm", "speeds_rpm = 4400", "a list of whole speeds in rpm, .* not 4400"),
     ("speeds_rpm", "speeds_rpm = [4400, 4800.5]", "whole speeds in rpm, .* not 4800.5"),

@@ -6,7 +6,7 @@ from hypothesis import strategies as st
 
 from console.verdict import COUNTED, LIFT_DDEG, faces_turned, verdict
 from console.view import Outcome
-from protocol.codes import Reason
+from protocol.codes import Reason, Setting
 from protocol.message import Facts
 from tests.support.wire_script import facts
 
@@ -186,3 +186,12 @@ def test_the_thresholds_are_what_they_are_said_to_be() -> None:
     """Two degrees, in tenths; and what counts leaves out what says nothing of the module."""
     assert LIFT_DDEG == 20
     assert {*Outcome} - COUNTED == {Outcome.REFUSED, Outcome.CUT, Outcome.UNSEEN}
+
+
+@pytest.mark.parametrize(
+    ("turned_ddeg", "outcome"),
+    [(0, Outcome.SHORT), (900, Outcome.SHORT), (1800, Outcome.LANDED), (2700, Outcome.OVER)],
+)
+def test_over_a_crest_two_faces_are_asked_for(turned_ddeg: int, outcome: Outcome) -> None:
+    turned = facts(turned_ddeg=turned_ddeg, peak_tilt_ddeg=max(turned_ddeg, 400))
+    assert verdict(turned, "pivot", Setting.CREST) is outcome
