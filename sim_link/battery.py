@@ -1,130 +1,32 @@
-"""A module's cell and its warmth: charge, voltage under load, temperature.
+"""A module's supply: the cell under its load, and the warmth that comes of it.
 
-Owns the electrical and thermal model of one module. Knows nothing of wheels or messages: it is
-told a power in watts and for how long. SI units, except the capacity, which the trade gives
-in milliampere hours.
-
-The open-circuit curve is the usual shape of a lithium-ion cell, rounded from memory; it stands
-for no make and is no data sheet.
+Owns the load that is drawn, constant or changing steadily, and its account; and how many motions a
+cell has in it. The circuit is cell.py's, the temperatures heat.py's. Knows no messages.
+Event-driven: between two looks nothing is computed.
 """
 
-from bisect import bisect_right
-from math import exp, inf, sqrt
 from typing import Final
 
-AMBIENT_C: Final = 21.0
-"""Temperature of the invented hall."""
+from sim_link.cell import LOW_V, Cell, charge_at, cold_factor
+from sim_link.heat import Part, Warmth
+from sim_link.kinds import Kind
 
 IDLE_W: Final = 0.18
 """What controller, sensors and radio take all the time."""
+MOTOR_EFFICIENCY: Final = 0.6
+COPPER_W: Final = 0.3
+"""Loss in the windings while the motor pulls."""
+MARGIN: Final = 0.1
+"""Part of a cell's charge that is not counted on: cells differ, age, and are colder than here."""
 
-LOW_V: Final = 3.55
-"""Open-circuit voltage below which a module calls its battery low and refuses to drive."""
-
-DRIVE_V: Final = 3.15
-"""The motor driver lowers its torque rather than pull the terminals below this."""
-
-_CHARGES: Final = (0.00, 0.03, 0.10, 0.20, 0.40, 0.60, 0.80, 0.90, 1.00)
-_VOLTAGES: Final = (3.00, 3.40, 3.64, 3.72, 3.80, 3.88, 4.00, 4.09, 4.20)
-
-_HEAT_CAPACITY_J_K: Final = 420.0
-"""About 0.6 kg of mostly metal and plastic."""
-_COOLING_S: Final = 900.0
-"""Time constant with which a sealed box of this size loses its warmth to still air."""
-
-
-def open_circuit_V(charge: float) -> float:
-    """Return the voltage without load at a charge of 0 to 1; clamped outside."""
-    if charge <= 0.0:
-        return _VOLTAGES[0]
-    if charge >= 1.0:
-        return _VOLTAGES[-1]
-    upper = bisect_right(_CHARGES, charge)
-    low, high = _CHARGES[upper - 1], _CHARGES[upper]
-    part = (charge - low) / (high - low)
-    return _VOLTAGES[upper - 1] + part * (_VOLTAGES[upper] - _VOLTAGES[upper - 1])
-
-
-class Battery:
-    """One cell: a voltage source that falls with its charge, behind a resistance."""
-
-    __slots__ = ("_capacity_C", "charge", "resistance_ohm")
-
-    def __init__(self, capacity_mAh: float, resistance_ohm: float, charge: float) -> None:
-        self._capacity_C = capacity_mAh * 3.6
-        self.resistance_ohm = resistance_ohm
-        self.charge = charge
-
-    @property
-    def open_circuit_V(self) -> float:
-        """Voltage without load."""
-        return open_circuit_V(self.charge)
-
-    @property
-    def low(self) -> bool:
-        """Whether the charge has fallen to where the module calls itself low."""
-        return self.open_circuit_V < LOW_V
-
-    @property
-    def drive_W(self) -> float:
-        """The most that a motor may draw at this charge, so that the terminals keep DRIVE_V."""
-        spare_V = max(0.0, self.open_circuit_V - DRIVE_V)
-        return DRIVE_V * spare_V / self.resistance_ohm if self.resistance_ohm else inf
-
-    def current_A(self, power_W: float) -> float:
-        """Return the current at which the terminals give ``power_W``.
-
-        From P = I (E - R I), the smaller root. A demand beyond the peak, E^2 / 4R, gets the
-        current of the peak: the cell gives what it can.
-        """
-        source_V = self.open_circuit_V
-        if not self.resistance_ohm:
-            return power_W / source_V
-        under_root = source_V**2 - 4.0 * self.resistance_ohm * power_W
-        if under_root <= 0.0:
-            return source_V / (2.0 * self.resistance_ohm)
-        return (source_V - sqrt(under_root)) / (2.0 * self.resistance_ohm)
-
-    def terminal_V(self, power_W: float) -> float:
-        """Return the voltage at the terminals under a load of ``power_W``."""
-        return self.open_circuit_V - self.resistance_ohm * self.current_A(power_W)
-
-    def sag_V(self, power_W: float) -> float:
-        """Return by how much a load of ``power_W`` pulls the voltage down."""
-        return self.resistance_ohm * self.current_A(power_W)
-
-    def drain(self, start_W: float, end_W: float, duration_s: float) -> float:
-        """Take the charge of a load that changes steadily from ``start_W`` to ``end_W``.
-
-        Returns the heat in joules that the resistance made. The mean power stands for the
-        ramp: over a spin-up the current is nearly proportional to it.
-        """
-        current_A = self.current_A(0.5 * (start_W + end_W))
-        charge = self.charge - current_A * duration_s / self._capacity_C
-        self.charge = min(max(0.0, charge), 1.0)
-        return current_A**2 * self.resistance_ohm * duration_s
-
-
-class Warmth:
-    """The temperature of the box: one lump that loses its heat to the hall."""
-
-    __slots__ = ("_above_K", "_t_ns")
-
-    def __init__(self, above_ambient_K: float, t_ns: int) -> None:
-        self._above_K = above_ambient_K
-        self._t_ns = t_ns
-
-    def heat(self, energy_J: float, t_ns: int) -> None:
-        """Add heat at ``t_ns``, after the cooling since the last call."""
-        self._above_K = self._cooled(t_ns) + energy_J / _HEAT_CAPACITY_J_K
-        self._t_ns = t_ns
-
-    def temperature_C(self, t_ns: int) -> float:
-        """Return the temperature at ``t_ns`` (not before the last heat)."""
-        return AMBIENT_C + self._cooled(t_ns)
-
-    def _cooled(self, t_ns: int) -> float:
-        return self._above_K * exp(-(t_ns - self._t_ns) * 1e-9 / _COOLING_S)
+_BETWEEN_S: Final = 3.0
+"""Idle time that belongs to a motion: steadying, settling, and waiting for the next order."""
+_MEAN_V: Final = 3.85
+_FRESH_NS: Final = 4_500_000_000
+"""For so long what was seen of a settled cell is still good."""
+_COLD_AGAIN_K: Final = 0.05
+"""The cold's factor is looked at again once the box has changed by so much: a thousandth of the
+resistance, or the steps would look like a trend."""
 
 
 class Supply:
@@ -132,7 +34,10 @@ class Supply:
 
     __slots__ = (
         "_charger_W",
+        "_cold_at_C",
         "_end_W",
+        "_good_until_ns",
+        "_seen",
         "_since_ns",
         "_start_W",
         "_start_ns",
@@ -141,28 +46,52 @@ class Supply:
         "warmth",
     )
 
-    def __init__(self, battery: Battery, warmth: Warmth) -> None:
+    def __init__(self, battery: Cell, warmth: Warmth) -> None:
         self.battery = battery
         self.warmth = warmth
         self._start_ns = self._until_ns = self._since_ns = 0
         self._start_W = self._end_W = IDLE_W
         self._charger_W = 0.0
+        self._seen, self._good_until_ns = (0.0, 0.0), -1
+        self._cold_at_C = warmth.temperature_C(0)
+        battery.cold = cold_factor(self._cold_at_C)
 
     def draw(self, start_W: float, end_W: float, t_ns: int, until_ns: int) -> None:
         """From ``t_ns`` on draw so much besides the idle load, constant after ``until_ns``."""
         self.account(t_ns)
+        self._good_until_ns = -1
         self._start_W, self._end_W = IDLE_W + start_W, IDLE_W + end_W
         self._start_ns, self._until_ns = t_ns, until_ns
 
     def charge(self, power_W: float, t_ns: int) -> None:
         """From ``t_ns`` on take so much from a charger, until the cell is full; 0: none."""
         self.account(t_ns)
+        self._good_until_ns = -1
         self._charger_W = power_W
+
+    def swap(self, charge: float, t_ns: int) -> None:
+        """Another cell, fresh and so charged, is in it from ``t_ns`` on."""
+        self.account(t_ns)
+        self._good_until_ns = -1
+        self.battery.replace(charge)
+
+    def set_charge(self, charge: float, t_ns: int) -> None:
+        """The cell is so charged from ``t_ns`` on, and at rest; it is the same one."""
+        self.account(t_ns)
+        self._good_until_ns = -1
+        self.battery.charge, self.battery.rc_V = charge, 0.0
+
+    def age(self, ohm: float, capacity: float, t_ns: int) -> None:
+        """From ``t_ns`` on the cell's resistances and its capacity are these parts of a fresh
+        one's; how full it is stays."""
+        self.account(t_ns)
+        self._good_until_ns = -1
+        self.battery.aged_ohm, self.battery.aged_capacity = ohm, capacity
 
     def load_W(self, t_ns: int) -> float:
         """Return what is drawn from the cell at ``t_ns``, negative where it is charged."""
         given_W = self._charger_W if self.battery.charge < 1.0 else 0.0
-        if t_ns >= self._until_ns:
+        if t_ns >= self._until_ns or self._start_ns == self._until_ns:
             return self._end_W - given_W
         part = (t_ns - self._start_ns) / (self._until_ns - self._start_ns)
         return self._start_W + part * (self._end_W - self._start_W) - given_W
@@ -171,14 +100,73 @@ class Supply:
         """Take from the cell what was drawn since the last account."""
         if t_ns <= self._since_ns:
             return
-        steady = self._since_ns >= self._until_ns
-        for end_ns in (t_ns,) if steady else (min(self._until_ns, t_ns), t_ns):
-            duration_s = (end_ns - self._since_ns) * 1e-9
-            if duration_s > 0.0:
-                loads = self.load_W(self._since_ns), self.load_W(end_ns)
-                self.warmth.heat(self.battery.drain(*loads, duration_s), end_ns)
-                self._since_ns = end_ns
+        if self._since_ns < self._until_ns < t_ns:
+            self._take(self._until_ns)
+        self._take(t_ns)
+
+    def _take(self, end_ns: int) -> None:
+        duration_s = (end_ns - self._since_ns) * 1e-9
+        loads = self.load_W(self._since_ns), self.load_W(end_ns)
+        self.warmth.heat(self.battery.drain(*loads, duration_s), end_ns)
+        self._since_ns = end_ns
+        temperature_C = self.warmth.temperature_C(end_ns)
+        if abs(temperature_C - self._cold_at_C) > _COLD_AGAIN_K:
+            self._cold_at_C = temperature_C
+            self.battery.cold = cold_factor(temperature_C)
+
+    def look(self, t_ns: int) -> tuple[float, float]:
+        """Return the voltage at the terminals and the box's temperature, as a report needs them.
+
+        While nothing changes and the cell has settled, what was seen is good for some seconds: by
+        then the voltage has moved by less than half a millivolt, and sensors are coarser.
+        """
+        if t_ns < self._good_until_ns:
+            return self._seen
+        self.account(t_ns)
+        self._seen = self.terminal_V(t_ns), self.warmth.temperature_C(t_ns)
+        settled = self._until_ns <= t_ns and self.battery.settled and not self._charger_W
+        self._good_until_ns = t_ns + (_FRESH_NS if settled else 1)
+        return self._seen
 
     def terminal_V(self, t_ns: int) -> float:
         """Return the voltage at the terminals at ``t_ns``, as charged at the last account."""
         return self.battery.terminal_V(self.load_W(t_ns))
+
+    def warm_motor(self, mechanical_J: float, duration_s: float, t_ns: int) -> None:
+        """Add the motor's losses of so much work at the wheel in so long a time."""
+        lost_J = abs(mechanical_J) * (1.0 / MOTOR_EFFICIENCY - 1.0) + COPPER_W * duration_s
+        self.warmth.heat(lost_J, t_ns, Part.MOTOR)
+
+    def warm_brake(self, energy_J: float, t_ns: int) -> None:
+        """Add what of a wheel's energy a brake has turned into heat."""
+        self.warmth.heat(energy_J, t_ns, Part.BRAKE)
+
+
+def cell_of(kind: Kind, charge: float) -> Cell:
+    """Return a fresh cell as a kind has it, so charged."""
+    return Cell(
+        kind.cell_capacity_mAh,
+        kind.cell_resistance_ohm,
+        charge,
+        rc_ohm=kind.cell_rc_resistance_ohm,
+        rc_s=kind.cell_rc_s,
+    )
+
+
+def spin_up_J(kind: Kind, speed_rad_s: float, torque_N_m: float) -> float:
+    """Energy that a spin-up takes from the cell: wheel, losses of the motor, copper, idle load."""
+    wheel_J = 0.5 * kind.wheel_inertia_kg_m2 * speed_rad_s**2
+    duration_s = kind.wheel_inertia_kg_m2 * speed_rad_s / torque_N_m
+    return wheel_J / MOTOR_EFFICIENCY + COPPER_W * duration_s + IDLE_W * (duration_s + _BETWEEN_S)
+
+
+def motions_left(kind: Kind, speed_rad_s: float, charge: float = 1.0) -> int:
+    """How many motions at this wheel speed a charge of 0 to 1 has in it, until the battery is low.
+
+    At the gentle torque with face 1 up, and with a tenth of the charge left out of account.
+    """
+    from sim_link.mechanics import rest_torque_N_m  # it imports NumPy
+
+    energy_J = spin_up_J(kind, speed_rad_s, rest_torque_N_m(kind, 1, -1))
+    usable = max(0.0, charge - charge_at(LOW_V)) * (1.0 - MARGIN)
+    return int(usable * kind.cell_capacity_mAh * 3.6 * _MEAN_V / energy_J)

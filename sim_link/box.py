@@ -69,7 +69,7 @@ class Box:
 
     def battery_low(self, t_ns: int) -> bool:
         """Whether the voltage without load is below what the settings ask for."""
-        self.drive.supply.account(t_ns)
+        self.drive.supply.look(t_ns)
         low_V = self.settings.value(SettingId.BATTERY_LOW_MV) / 1_000
         return self.drive.supply.battery.open_circuit_V < low_V
 

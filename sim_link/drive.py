@@ -10,19 +10,22 @@ pushes the body against the wheel's sense, slowing down pushes it in the wheel's
 
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass
-from enum import Enum, auto
 from typing import Final
 
 from protocol.codes import Activity
 from sim_link import mechanics
-from sim_link.battery import Battery, Supply, Warmth
+from sim_link.activities import NEXT_ACTIVITY, Cue
+from sim_link.battery import COPPER_W, MOTOR_EFFICIENCY, Supply, cell_of
 from sim_link.deed import Deed
 from sim_link.errors import SimStateError
 from sim_link.fleet_file import ModuleSpec
+from sim_link.heat import Part, Warmth
+from sim_link.kinds import edge_inertia_kg_m2
 from sim_link.mechanics import MotionResult
 from sim_link.options import FaultKind
 from sim_link.posture import VirtualBody
 from sim_link.randomness import Draws
+from sim_link.wear import Wear, Wearing
 from sim_link.wheel import RPM_A_RAD_S, Wheel
 
 STEADY_NS: Final = 60_000_000
@@ -34,9 +37,6 @@ STALLED_NS: Final = 250_000_000
 """The firmware gives up a wheel that has not moved for so long while the motor pulled."""
 
 _EXPECTED_SETTLE_NS: Final = 1_500_000_000
-_MOTOR_EFFICIENCY: Final = 0.6
-_COPPER_W: Final = 0.3
-"""Loss in the windings while the motor pulls."""
 _WINDAGE_W: Final = 0.5
 """Power that holds the wheel at its highest speed; in proportion to the speed squared."""
 _FLASH_W: Final = 0.4
@@ -46,35 +46,9 @@ _CHARGE_H: Final = 2.0
 """Half of its capacity an hour, as is usual for small cells (common practice of the trade)."""
 _LOW_CHARGE: Final = 0.02
 _SHORTEST_BRAKE_S: Final = 1e-4
+_BEARING_SCATTER: Final = 0.01
+"""A sound bearing takes up to this part of the motor's torque, otherwise at each spin-up."""
 _FACES: Final = (1, 2, 3, 4, 5, 6)
-
-
-class Cue(Enum):
-    """What makes a drive change its activity."""
-
-    DRIVE = auto()
-    FLASH = auto()
-    REST = auto()
-    BRAKE_DUE = auto()
-    HOLD_DUE = auto()
-    DUE = auto()
-
-
-NEXT_ACTIVITY: Final[Mapping[tuple[Activity, Cue], Activity]] = {
-    (Activity.STILL, Cue.DRIVE): Activity.SPINNING_UP,
-    (Activity.STILL, Cue.FLASH): Activity.FLASHING,
-    (Activity.SPINNING_UP, Cue.BRAKE_DUE): Activity.BRAKING,
-    (Activity.SPINNING_UP, Cue.HOLD_DUE): Activity.HOLDING,
-    (Activity.SPINNING_UP, Cue.REST): Activity.RESTING,
-    (Activity.HOLDING, Cue.DUE): Activity.RESTING,
-    (Activity.HOLDING, Cue.REST): Activity.RESTING,
-    (Activity.RESTING, Cue.DUE): Activity.STILL,
-    (Activity.BRAKING, Cue.DUE): Activity.SETTLING,
-    (Activity.SETTLING, Cue.DUE): Activity.STILL,
-    (Activity.FLASHING, Cue.DUE): Activity.STILL,
-}
-"""Every change of activity there is; a cue that is not here changes nothing. So a brake once
-engaged stays engaged: BRAKING and SETTLING know no REST."""
 
 
 @dataclass(slots=True)
@@ -114,13 +88,15 @@ class Drive:
         """The motion under way or the last one; its result is there once the brake held."""
         self.stuck = FaultKind.STUCK_WHEEL in spec.faults
         """Whether something keeps the wheel from turning."""
+        self.wear = Wear.of(spec.faults)
+        """How brake, magnets, bearing and cell wear."""
         self.wheel = Wheel()
         self.body = VirtualBody(spec, draws)
         self.supply = Supply(
-            Battery(spec.kind.cell_capacity_mAh, spec.kind.cell_resistance_ohm, charge),
-            Warmth(2.0 * draws.uniform(0, "warmth"), 0),
+            cell_of(spec.kind, charge), Warmth(2.0 * draws.uniform(0, "warmth"), 0)
         )
         self._kind = spec.kind
+        self._draws = draws
         if FaultKind.CHARGING in spec.faults:
             self.start_charging(0)
         self._motions = 0
@@ -166,21 +142,33 @@ class Drive:
 
     def set_charge(self, charge: float | None, t_ns: int) -> None:
         """Let the cell be so charged from now on; None: almost empty."""
-        self.supply.account(t_ns)
-        self.supply.battery.charge = _LOW_CHARGE if charge is None else charge
+        self.supply.set_charge(_LOW_CHARGE if charge is None else charge, t_ns)
 
-    def swap_cell(self, t_ns: int) -> None:
-        """A fresh, full cell is in it from now on."""
-        self.set_charge(1.0, t_ns)
+    def swap_cell(self, t_ns: int, charge: float = 1.0) -> None:
+        """A fresh cell, so charged, is in it from now on; it has not aged."""
+        self.supply.swap(charge, t_ns)
+        self.wear = self.wear.renew(Wearing.CELL, self._motions)
 
-    def start_charging(self, t_ns: int) -> None:
-        """It is on a charger from now on, which would fill an empty cell in some two hours."""
-        capacity_Wh = self._kind.cell_capacity_mAh * _CELL_V / 1_000.0
-        self.supply.charge(capacity_Wh / _CHARGE_H, t_ns)
+    def start_charging(self, t_ns: int, current_A: float | None = None) -> None:
+        """It is on a charger from now on, which gives about this current; None: one that would
+        fill an empty cell in some two hours."""
+        usual_A = self._kind.cell_capacity_mAh / 1_000.0 / _CHARGE_H
+        self.supply.charge(_CELL_V * (usual_A if current_A is None else current_A), t_ns)
 
     def stop_charging(self, t_ns: int) -> None:
         """It is off the charger."""
         self.supply.charge(0.0, t_ns)
+
+    def wear_out(self, part: Wearing, begins: bool, t_ns: int) -> None:
+        """Let a part wear with use from now on; or no longer, and be as new."""
+        self.wear = self.wear.begin(part, self._motions) if begins else self.wear.end(part)
+        self._age_cell(t_ns)
+
+    def renew(self, part: Wearing, t_ns: int) -> None:
+        """A person has changed a part for a new one: its wear counts from nothing again."""
+        if part is Wearing.CELL:
+            self.swap_cell(t_ns)
+        self.wear = self.wear.renew(part, self._motions)
 
     def step(self) -> Activity:
         """Make the change that is due at ``due_ns`` and return the activity entered.
@@ -231,6 +219,8 @@ class Drive:
 
     def _begin(self, deed: Deed | None, speed_rpm: float, hold_ns: int, t_ns: int) -> None:
         self._motions += 1
+        if self.wear.rates[Wearing.CELL]:
+            self._age_cell(t_ns)
         self.motion = Motion(
             count=self._motions,
             deed=deed,
@@ -255,12 +245,16 @@ class Drive:
             self._pull_in_vain(motion, t_ns)
             return
         top_rad_s = abs(motion.wheel_rad_s)
-        affordable_N_m = _MOTOR_EFFICIENCY * self.supply.battery.drive_W / top_rad_s
+        affordable_N_m = MOTOR_EFFICIENCY * self.supply.battery.drive_W / top_rad_s
         torque_N_m = min(self.gentle_torque_N_m(-motion.direction, t_ns), affordable_N_m)
-        reached_ns = self._pull(motion.wheel_rad_s, torque_N_m, -motion.direction, t_ns)
-        peak_W = _COPPER_W + torque_N_m * top_rad_s / _MOTOR_EFFICIENCY
-        self.supply.draw(_COPPER_W, peak_W, t_ns, reached_ns)
+        turning_N_m = torque_N_m * (1.0 - self._dragged(motion.count))
+        reached_ns = self._pull(motion.wheel_rad_s, turning_N_m, -motion.direction, t_ns)
+        peak_W = COPPER_W + torque_N_m * top_rad_s / MOTOR_EFFICIENCY
+        self.supply.draw(COPPER_W, peak_W, t_ns, reached_ns)
         motion.sag_V = self.supply.battery.sag_V(peak_W)
+        # The heat of the whole spin-up at its start: a second or two early, for lumps of minutes.
+        wheel_J = 0.5 * self.body.kind.wheel_inertia_kg_m2 * top_rad_s**2
+        self.supply.warm_motor(wheel_J, (reached_ns - t_ns) * 1e-9, t_ns)
         self.due_ns = reached_ns + STEADY_NS
 
     def _enter_holding(self, t_ns: int) -> None:
@@ -275,7 +269,8 @@ class Drive:
         sense = 1 if self.wheel.speed_rad_s(t_ns) >= 0.0 else -1
         torque_N_m = self.gentle_torque_N_m(sense, t_ns)
         self.due_ns = self._pull(0.0, torque_N_m, sense, t_ns)
-        self.supply.draw(_COPPER_W, _COPPER_W, t_ns, self.due_ns)
+        self.supply.draw(COPPER_W, COPPER_W, t_ns, self.due_ns)
+        self.supply.warm_motor(0.0, (self.due_ns - t_ns) * 1e-9, t_ns)
 
     def _enter_braking(self, t_ns: int) -> None:
         motion = self._in_hand()
@@ -283,10 +278,32 @@ class Drive:
         speed_rad_s = self.wheel.speed_rad_s(t_ns)
         motion.wheel_at_brake_rad_s = speed_rad_s
         deed = motion.deed or Deed.FLOOR
+        sound = self.body.kind
+        brake_C = self.supply.warmth.part_C(Part.BRAKE, t_ns)
+        self.body.kind = self.wear.worn_kind(sound, motion.count, brake_C)
         motion.result = self.body.brake(speed_rad_s, motion.direction, motion.count, t_ns, deed)
+        self.body.kind = sound
         brake_s = max(motion.result.brake_s, _SHORTEST_BRAKE_S)
         self.due_ns = self.wheel.ramp(0.0, abs(speed_rad_s) / brake_s, t_ns)
         self.supply.draw(0.0, 0.0, t_ns, t_ns)
+        self.supply.warm_brake(self._brake_heat_J(speed_rad_s), t_ns)
+
+    def _dragged(self, count: int) -> float:
+        """What part of the motor's torque the bearing takes at this spin-up."""
+        sound = _BEARING_SCATTER * self._draws.uniform(count, "bearing")
+        return sound + self.wear.drag_part(count)
+
+    def _age_cell(self, t_ns: int) -> None:
+        """Let the cell be as old as its motions make it."""
+        self.supply.age(
+            self.wear.cell_ohm(self._motions), self.wear.cell_capacity(self._motions), t_ns
+        )
+
+    def _brake_heat_J(self, speed_rad_s: float) -> float:
+        """What of the wheel's energy does not go into the body: all but the part Iw/Ie."""
+        kind = self.body.kind
+        part = kind.wheel_inertia_kg_m2 / edge_inertia_kg_m2(kind)
+        return 0.5 * kind.wheel_inertia_kg_m2 * speed_rad_s**2 * (1.0 - part)
 
     def _enter_settling(self, t_ns: int) -> None:
         result = self._in_hand().result
@@ -306,8 +323,8 @@ class Drive:
 
     def _pull_in_vain(self, motion: Motion, t_ns: int) -> None:
         """Motor against a wheel that is jammed in the body: nothing moves, the windings warm."""
-        self.supply.draw(_COPPER_W, _COPPER_W, t_ns, t_ns)
-        motion.sag_V = self.supply.battery.sag_V(_COPPER_W)
+        self.supply.draw(COPPER_W, COPPER_W, t_ns, t_ns)
+        motion.sag_V = self.supply.battery.sag_V(COPPER_W)
         self.due_ns = t_ns + STALLED_NS
 
     def _in_hand(self) -> Motion:

@@ -42,6 +42,10 @@ class FaultKind(StrEnum):
     SWAPPED_CELL = "swapped_cell"
     CHARGING = "charging"
     LIFTED = "lifted"
+    FADING_BRAKE = "fading_brake"
+    WEAK_MAGNETS = "weak_magnets"
+    DRAGGING_BEARING = "dragging_bearing"
+    AGEING_CELL = "ageing_cell"
 
 
 @dataclass(frozen=True, slots=True)
@@ -109,6 +113,19 @@ FAULT_RULES: Final[Mapping[FaultKind, FaultRule]] = MappingProxyType(
         FaultKind.LIFTED: FaultRule(
             "a person holds it in the hand; at the end it is set down on the next face forward",
             start=False,
+        ),
+        FaultKind.FADING_BRAKE: FaultRule(
+            "its brake loses torque with use, and more while it is hot; at the end it has a new one"
+        ),
+        FaultKind.WEAK_MAGNETS: FaultRule(
+            "its magnets weaken with use; at the end it has new ones"
+        ),
+        FaultKind.DRAGGING_BEARING: FaultRule(
+            "its wheel's bearing drags more with use, and spinning up takes longer; at the end it "
+            "has a new one"
+        ),
+        FaultKind.AGEING_CELL: FaultRule(
+            "its cell's resistance rises and its capacity falls with use; at the end it is as new"
         ),
     }
 )

@@ -21,7 +21,8 @@ class Kind:
     (away from the hinge edge, up), for a pivot forward with face 1 up; it turns with the body.
     ``held``: magnets hold the hinge edge; otherwise the module stands on the floor by friction.
     ``brake_kept``: the part of the brake's torque that lasts while it holds; the rest goes with
-    the time constant ``brake_decay_s``.
+    the time constant ``brake_decay_s``. ``cell_rc_resistance_ohm`` and ``cell_rc_s`` are the cell's
+    slow part; None: what is usual for its resistance (cell.py).
     """
 
     name: str
@@ -44,6 +45,8 @@ class Kind:
     cell_resistance_ohm: float
     brake_kept: float = 1.0
     brake_decay_s: float = 0.05
+    cell_rc_resistance_ohm: float | None = None
+    cell_rc_s: float | None = None
 
 
 def centre_inertia_kg_m2(kind: Kind) -> float:
@@ -126,7 +129,13 @@ _NUMBERS: Final[dict[str, _Range]] = {
     "brake_kept": _Range(0.0, False, 1.0, 1.0),
     "brake_decay_s": _Range(0.0, False, 10.0, 0.05),
 }
-_KEYS: Final = (*_NUMBERS, "body_inertia_kg_m2", "com_offset_m", "held")
+_OPTIONAL: Final[dict[str, _Range]] = {
+    "body_inertia_kg_m2": _Range(0.0, False, 1000.0),
+    "cell_rc_resistance_ohm": _Range(0.0, True, 100.0),
+    "cell_rc_s": _Range(0.0, False, 3600.0),
+}
+"""What follows from the rest where it is left out."""
+_KEYS: Final = (*_NUMBERS, *_OPTIONAL, "com_offset_m", "held")
 
 
 def kind_from_table(name: str, table: Mapping[str, object], where: str) -> Kind:
@@ -144,7 +153,9 @@ def kind_from_table(name: str, table: Mapping[str, object], where: str) -> Kind:
         raise SimInputError(where, "held", "true or false is needed")
     kind = Kind(
         name=name,
-        body_inertia_kg_m2=_body_inertia(table, where),
+        body_inertia_kg_m2=_optional(table, "body_inertia_kg_m2", where),
+        cell_rc_resistance_ohm=_optional(table, "cell_rc_resistance_ohm", where),
+        cell_rc_s=_optional(table, "cell_rc_s", where),
         com_offset_m=_offset(table, numbers["side_m"] / 2, where),
         held=held,
         **numbers,
@@ -167,10 +178,8 @@ def _number(table: Mapping[str, object], key: str, allowed: _Range, where: str) 
     return float(value)
 
 
-def _body_inertia(table: Mapping[str, object], where: str) -> float | None:
-    if "body_inertia_kg_m2" not in table:
-        return None
-    return _number(table, "body_inertia_kg_m2", _Range(0.0, False, 1000.0), where)
+def _optional(table: Mapping[str, object], key: str, where: str) -> float | None:
+    return _number(table, key, _OPTIONAL[key], where) if key in table else None
 
 
 def _offset(table: Mapping[str, object], half_m: float, where: str) -> tuple[float, float]:

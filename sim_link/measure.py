@@ -181,12 +181,11 @@ class Reporter:
     def telemetry(self, box: Box, activity: Activity, t_ns: int) -> Telemetry:
         """Make the next report, as measured at ``t_ns``."""
         drive = box.drive
-        drive.supply.account(t_ns)
+        terminal_V, temperature_C = drive.supply.look(t_ns)
         posture = drive.body.posture(t_ns)
         self._sequence = (self._sequence + 1) & _U16[1]
         self._reports += 1
-        battery_mV = drive.supply.terminal_V(t_ns) * 1e3
-        temperature_cC = drive.supply.warmth.temperature_C(t_ns) * 100.0
+        battery_mV, temperature_cC = terminal_V * 1e3, temperature_C * 100.0
         noise = four_normals(self._draws.seed, self._draws.who, self._reports, "reported")
         return Telemetry(
             boot=box.boot.number,

@@ -7,11 +7,14 @@ Decides no consequences: module and works ask, and act.
 """
 
 from collections.abc import Callable, Mapping
+from functools import partial
 from typing import Final, NamedTuple
 
 from protocol.codes import Activity, Fault
 from sim_link.box import Box
+from sim_link.heat import COOL_C, HOT_C
 from sim_link.options import FaultKind
+from sim_link.wear import WEARING, Wearing
 
 BROWN_OUT_mV: Final = 2_700
 """Voltage at which the supply's supervisor lets the controller start anew."""
@@ -100,6 +103,9 @@ class Mishaps:
         else:
             self._box.drive.stop_charging(t_ns)
 
+    def _worn(self, begins: bool, t_ns: int, *, part: Wearing) -> None:
+        self._box.drive.wear_out(part, begins, t_ns)
+
     # -- at their turns --------------------------------------------------------------------
 
     def before_step(self) -> Restart | None:
@@ -115,15 +121,30 @@ class Mishaps:
             return Restart(Fault.WATCHDOG, 0)
         return None
 
-    def noticed(self, activity: Activity) -> Fault | None:
+    def noticed(self, activity: Activity, t_ns: int) -> Fault | None:
         """The fault that the firmware notices as an activity begins, and that stands from then
         on; None where there is none, or it stands already."""
         if activity is Activity.BRAKING and self._strikes(FaultKind.LOST_GYRO):
             return Fault.SENSOR_LOST
+        if activity is Activity.STILL and self._too_hot(t_ns):
+            return Fault.OVERHEATED
         motion = self._box.drive.motion
         if activity is Activity.RESTING and motion is not None and motion.stalled:
             return None if Fault.WHEEL_STUCK in self._box.faults else Fault.WHEEL_STUCK
         return None
+
+    def _too_hot(self, t_ns: int) -> bool:
+        hot = self._box.drive.supply.warmth.hottest_C(t_ns) > HOT_C
+        return hot and Fault.OVERHEATED not in self._box.faults
+
+    def cooled(self, t_ns: int) -> Fault | None:
+        """Look whether what was too hot is cool again; return what then no longer stands."""
+        if Fault.OVERHEATED not in self._box.faults:
+            return None
+        if self._box.drive.supply.warmth.hottest_C(t_ns) > COOL_C:
+            return None
+        self._box.faults.fall(Fault.OVERHEATED)
+        return Fault.OVERHEATED
 
     def _strikes(self, kind: FaultKind) -> bool:
         """Whether this is to come; then it has come."""
@@ -139,5 +160,6 @@ _STATES: Final[Mapping[FaultKind, Callable[[Mishaps, bool, int], None]]] = {
     FaultKind.LOW_BATTERY: Mishaps._emptied,
     FaultKind.SWAPPED_CELL: Mishaps._swapped,
     FaultKind.CHARGING: Mishaps._charged,
+    **{kind: partial(Mishaps._worn, part=part) for kind, part in WEARING.items()},
 }
 """What is a state of body, wheel or cell, and switched there: True as it begins."""

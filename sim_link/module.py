@@ -54,6 +54,8 @@ from sim_link.settings import Settings
 from sim_link.tally import TallyEntry
 from sim_link.works import Works
 
+_FORGETS_EVERY_NS: Final = 60_000_000_000
+"""Far within the twelve days by which it must be done."""
 _TO_ANYBODY: Final = (RollCall, Permit, Release, Go, Stop, Clear)
 """What may be sent to a group or to everyone; anything else sent so is dropped."""
 _SHIFTS_SLOT: Final = frozenset({RollCall, Probe, Release, Slot})
@@ -87,6 +89,7 @@ class VirtualModule:
         first_ns = int(self._period_ms * _NS_PER_MS * draws.uniform(0, "report phase"))
         self._reports = ReportTimes(first_ns, self._period_ms)
         self._called = False
+        self._forget_ns = 0
 
     @property
     def drive(self) -> Drive:
@@ -152,9 +155,13 @@ class VirtualModule:
                 said += self.works.wake(now_ns)
             else:
                 boot = self.box.boot
-                boot.allegiance.forget_old(boot.time.ms(now_ns))
+                if now_ns >= self._forget_ns:
+                    self._forget_ns = now_ns + _FORGETS_EVERY_NS
+                    boot.allegiance.forget_old(boot.time.ms(now_ns))
                 self._reports.reported(boot, self._period_ms)
                 said.append(self._telemetry(now_ns))
+                if self.box.faults:
+                    said += self._no_more(self._mishaps.cooled(now_ns), now_ns)
         return self._out(said)
 
     def _step(self, now_ns: int) -> list[Message]:

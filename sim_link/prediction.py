@@ -11,17 +11,13 @@ from typing import Any, Final
 
 from protocol.codes import Setting
 from sim_link import mechanics
+from sim_link.battery import motions_left
 from sim_link.deed import FREE, HELD, Deed, setting_of
 from sim_link.errors import SimStateError
 from sim_link.kinds import Kind
 from sim_link.mechanics import MotionResult, Threshold
 from sim_link.mechanics.search import FACES_NEEDED
 from sim_link.wheel import RPM_A_RAD_S
-
-
-def motions_left(kind: Kind, speed_rad_s: float) -> int | None:
-    return None
-
 
 _OF_AN_EDGE: Final = {Setting.WALL: 4, Setting.CREST: 4}
 """Face up at which a wall's edge is the one that the floor's pivot turns about with face 1 up: so

@@ -10,7 +10,7 @@ from typing import Final
 
 from protocol.codes import Reason, SettingId, identity_bits
 from protocol.message import SettingValue
-from sim_link.battery import LOW_V
+from sim_link.cell import LOW_V
 from sim_link.fleet_file import ModuleSpec
 
 CALIBRATION: Final = 3

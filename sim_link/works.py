@@ -11,7 +11,7 @@ from dataclasses import dataclass
 from typing import Any, Final
 
 from protocol.allegiance import DRIFT_SHIFT
-from protocol.codes import Activity, AnswerState, Reason, SettingId
+from protocol.codes import Activity, AnswerState, Fault, Reason, SettingId
 from protocol.command_memory import Reply
 from protocol.message import (
     Answer,
@@ -256,12 +256,18 @@ class Works:
 
     def _noticed(self, activity: Activity, t_ns: int) -> list[Message]:
         """Say what the firmware now notices to be wrong; what is rested for it is cut short."""
-        fault = self._mishaps.noticed(activity)
+        fault = self._mishaps.noticed(activity, t_ns)
         if fault is None:
             return []
         if activity is Activity.RESTING:
             self._cut(Reason.FAULT)
-        return [self._box.notice(fault, t_ns)]
+        return [self._box.notice(fault, t_ns, self._detail(fault, t_ns))]
+
+    def _detail(self, fault: Fault, t_ns: int) -> int:
+        """The figure of a fault: of a heat, tenths of a degree."""
+        if fault is not Fault.OVERHEATED:
+            return 0
+        return round(self._box.drive.supply.warmth.hottest_C(t_ns) * 10.0)
 
     def _cut(self, reason: Reason) -> None:
         """Note why what is under way ends early."""

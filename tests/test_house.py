@@ -15,7 +15,7 @@ MAY_IMPORT = {
     "storage": {"protocol"},
     "console": {"protocol", "sim_link", "storage"},
 }
-COSTLY = {"scipy", "numpy", "textual", "sqlite_utils", "mujoco", "statsmodels"}
+COSTLY = {"scipy", "numpy", "textual", "sqlite_utils", "mujoco", "pybamm", "statsmodels"}
 MAY_IMPORT_COSTLY_AT_ONCE = (
     "console/screens/", "console/widgets/", "console/app.py", "sim_link/mechanics/",
 )  # fmt: skip

@@ -34,12 +34,12 @@ from sim_link.mechanics.state import Moment, MotionResult, Phase, State, Watch
 
 MAX_MOTION_S: Final = 20.0
 """Longest motion followed; beyond it the result says ``settled`` False."""
-_STEP_OF_PENDULUM: Final = 0.06
-"""Longest step, as a part of sqrt(a/g): errors of 1e-8 a step by the fourth-order rule."""
-_STEP_RAD: Final = 0.06
-_STEPS_A_MAGNET: Final = 4
+_STEP_OF_PENDULUM: Final = 0.1
+"""Longest step, as a part of sqrt(a/g): with these strides energy is kept to 1e-6."""
+_STEP_RAD: Final = 0.1
+_STEPS_A_MAGNET: Final = 5
 """Steps while the body turns by the magnets' angle theta0, where they pull."""
-_STEPS_A_BRAKE: Final = 12
+_STEPS_A_BRAKE: Final = 8
 _STEPS: Final = ((Phase.CORNER, corner.corner_step), (Phase.FLIGHT, flight.flight_step))
 
 
@@ -135,7 +135,7 @@ def _moment(bodies: Bodies, state: State) -> Moment:
         phase=Phase(int(state.phase)),
         angle_rad=float(state.angle_rad),
         rate_rad_s=float(state.rate_rad_s),
-        wheel_rad_s=float(state.wheel_rad_s),
+        wheel_rad_s=float(state.wheel_rad_s if state.slipping else state.rate_rad_s),
         height_m=float(height),
         vx_m_s=float(vx),
         vz_m_s=float(vz),

@@ -24,6 +24,8 @@ from tests.bench.measure import Figure
 SIZES = (100, 300, 1000, 4000)
 MODULES = 1000
 VIRTUAL_S = 10.0
+WARM_UP_S = 60.0
+"""Until most cells have settled after the start, as in a fleet that has been on for a while."""
 ROUNDS = 3
 FLEET = Path("orangery")
 RATE_BAUD = 20_000_000
@@ -95,7 +97,7 @@ def cost_s(drill: Drill, seconds: float) -> float:
 def sim_1000_times_real() -> Figure:
     """Fleet seconds a second of one core, with a thousand modules."""
     drill = Drill(MODULES)
-    drill.run(2.0)
+    drill.run(WARM_UP_S)
     spent_s = median(cost_s(drill, VIRTUAL_S) for _ in range(ROUNDS))
     return Figure(VIRTUAL_S / spent_s, VIRTUAL_S, spent_s, ROUNDS)
 

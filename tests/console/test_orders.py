@@ -332,7 +332,7 @@ COMPLETIONS = [
     ("birch pivot forward at 44", []),
     ("birch pivot forward at 4400 ", ["on", "together"]),
     ("birch pivot forward at 4400 rpm ", ["on", "together"]),
-    ("birch pivot forward at 4400 on ", ["floor"]),
+    ("birch pivot forward at 4400 on ", ["floor", "wall", "crest", "flat"]),
     ("birch pivot forward at 4400 on floor ", ["together"]),
     ("birch spin at 3000 ", ["for"]),
     ("birch spin at 3000 for ", []),

@@ -13,6 +13,7 @@ from tests.support.exchange_world import FAIR, FOUL, World
 from tests.support.forgery import assault
 from tests.support.fuzz_runs import Fuzzed, fuzz_decoder, fuzz_kit
 from tests.support.mutations import run_mutations
+from tests.support.wear_trial import LEVEL, SHOWN_BY, alarmed, corrected, fleet_trial
 
 Figures = dict[str, int]
 
@@ -80,6 +81,23 @@ def kit_coverage_piece(seed: int, size: int) -> Figures:
     return _fuzzed(seed, fuzz_kit(seed, size))
 
 
+def wear_piece(seed: int, size: int) -> Figures:
+    """Healthy fleets of which at most one may look worn, and as many worn ones that all must."""
+    first = 5_000 * seed
+    alarms = sum(alarmed(fleet_trial(first + i)) for i in range(size))
+    kinds = [list(SHOWN_BY)[i % len(SHOWN_BY)] for i in range(size)]
+    missed = sum(
+        corrected(fleet_trial(first + i, [kind]))[SHOWN_BY[kind]] >= LEVEL
+        for i, kind in enumerate(kinds)
+    )
+    return {
+        "fleets": size,
+        "alarms": alarms,
+        "missed": missed,
+        "breaches": max(0, alarms - 1) + missed,
+    }
+
+
 def _fuzzed(seed: int, found: Fuzzed) -> Figures:
     if found.report:
         print(f"seed {seed}: {found.report}")
@@ -93,6 +111,7 @@ PROOFS = (
     Proof("decoder_mutations", 10_000_000, 100_000, decoder_piece, "frames"),
     Proof("decoder_coverage", 4_000_000, 400_000, decoder_coverage_piece, "frames"),
     Proof("kit_coverage", 400_000, 40_000, kit_coverage_piece, "frames"),
+    Proof("wear_trends", 100, 100, wear_piece, "fleets"),
 )
 
 

@@ -148,7 +148,7 @@ def test_too_hard_a_spin_up_tips_the_other_way(monkeypatch: pytest.MonkeyPatch) 
         mechanics, "rest_torque_N_m", lambda kind, face, way: 1.2 * tipping(kind, face, way)
     )
     drive = drive_of(STRONG_MOTOR)
-    drive.supply.battery.resistance_ohm = 0.0  # so that the cell does not limit the motor
+    drive.supply.battery.series_ohm = 0.0  # so that the cell does not limit the motor
     drive.start_spin(8000, 0, 0)
     assert drive.body.posture(S).face_up == 4
 

@@ -215,6 +215,17 @@ def test_a_fresh_cell() -> None:
     assert within(sitting.times(Telemetry, boot=boot + 1), 5, 9)
 
 
+def test_parts_that_wear_from_a_time_on_and_are_changed_at_the_end() -> None:
+    kinds = ("fading_brake:", "weak_magnets:", "dragging_bearing:", "ageing_cell:")
+    sitting = Sitting(*(f"{kind}alder@2s-5s" for kind in kinds))
+    drive = sitting.world.modules[0].drive
+    assert not any(drive.wear.rates)
+    sitting.until(3)
+    assert all(drive.wear.rates)
+    sitting.until(6)
+    assert not any(drive.wear.rates)
+
+
 def test_two_modules_with_one_address() -> None:
     sitting = Sitting("same_address:birch")
     names = [

@@ -304,7 +304,7 @@ def test_a_module_without_faults_meets_none() -> None:
     assert not mishaps.silent
     for activity in Activity:
         assert mishaps.after_step(activity) is None
-        assert mishaps.noticed(activity) is None
+        assert mishaps.noticed(activity, 0) is None
 
 
 def test_what_restarts_does_so_at_its_own_turn() -> None:

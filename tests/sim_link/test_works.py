@@ -279,7 +279,7 @@ def test_a_lock_that_came_after_the_go_is_looked_at_too() -> None:
     """Each of these stands between the acceptance and the start, and refuses the start."""
     bench = staged()
     bench.say(to_all(Go(CONSOLE, 9, 1_400)))
-    bench.module.box.notice(Fault.OVERHEATED, bench.t_ns)
+    bench.module.box.notice(Fault.STORAGE_BAD, bench.t_ns)
     said = bench.run(2 * S)
     assert answers(said) == [(1, AnswerState.CUT, Reason.FAULT)]
     assert of(Telemetry, said)[-1].activity == Activity.STILL  # type: ignore[union-attr]

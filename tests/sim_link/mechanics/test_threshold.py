@@ -5,7 +5,6 @@ scipy.integrate.solve_ivp on the equations of motion and, to 1e-5 of it, with th
 physics library MuJoCo 4.0.0 (a hinge, a wheel, a limited brake); g = 9.81 m/s^2.
 """
 
-import itertools
 import math
 
 import numpy as np
@@ -13,13 +12,10 @@ import pytest
 from hypothesis import assume, given, settings
 from hypothesis import strategies as st
 
-from sim_link.errors import SimStateError
 from sim_link.kinds import Kind, edge_inertia_kg_m2
 from sim_link.mechanics import (
     pivot,
     pivot_threshold,
-    rest_torque_N_m,
-    tipping_torque_N_m,
 )
 from sim_link.mechanics.hold import GRAVITY_M_S2, Hold, hold_of
 from sim_link.mechanics.threshold import HingeThresholds, closed_form_rad_s, hinge_thresholds
@@ -36,60 +32,11 @@ def hinge(hold: Hold, edge: float, wheel: float, brake: float) -> dict[str, floa
 
 # name: side, mass, wheel inertia, brake torque, T0, theta0, and computed: ideal rpm, least rpm,
 # lock angle rad, brake time s.
-FLOOR = {
-    "high": (
-        (0.04, 0.1, 4.5e-6, 3.924, 0.0, 0.05),
-        (2794.151, 2800.865, 0.001984113, 3.222377e-4),
-    ),
-    "mid": (
-        (0.055, 0.22, 1.1e-5, 0.593505, 0.0, 0.05),
-        (4054.585, 4267.031, 0.04049272, 8.096228e-3),
-    ),
-    "low": (
-        (0.07, 0.4, 3.2e-5, 0.27468, 0.0, 0.05),
-        (3638.56, 5028.785, 0.204264, 0.06053616),
-    ),
-    "barely": (
-        (0.05, 0.16, 8e-6, 0.041202, 0.0, 0.05),
-        (3514.45, 11393.25, 0.3913932, 0.2305618),
-    ),
-    "hold": (
-        (0.08, 0.6, 6e-5, 2.9272, 0.35, 0.06),
-        (3920.625, 4341.109, 0.03969574, 9.13767e-3),
-    ),
-}
 
 # setting: m g r, edge inertia, wheel inertia, brake, T0, theta0, phi0, end in units of pi, and
 # computed: ideal rad/s, least rad/s, lock angle, brake time.
-ELSEWHERE = {
-    "wall": (
-        (0.15 * 9.81 * 0.05 / math.sqrt(2), 2.5e-4, 9e-6, 2.73575, 0.1, 0.05, -0.25, 0.5),
-        (696.4416, 712.815, 0.0277292, 2.264196e-3),
-    ),
-    "crest": (
-        (0.25 * 9.81 * 0.06 / math.sqrt(2), 6e-4, 2.5e-5, 0.5886, 0.0, 0.05, -0.25, 0.75),
-        (583.9876, 624.6484, 0.2909154, 0.02557056),
-    ),
-    "flat": (
-        (0.0, 2.5e-4, 9e-6, 0.36, 0.06, 0.08, 0.0, 0.5),
-        (172.1326, 187.5233, 0.01292494, 4.545178e-3),
-    ),
-}
 
 # Exact over ideal speed of a floor pivot by k, for j = Iw/Ie of 0.03, 0.1 and 0.3.
-RATIOS = [
-    (1.01, 4.796607, 4.638525, 4.151809),
-    (1.05, 3.241829, 3.141647, 2.834194),
-    (1.1, 2.657377, 2.579535, 2.341315),
-    (1.3, 1.904419, 1.857001, 1.713139),
-    (1.6, 1.563486, 1.531387, 1.434942),
-    (2, 1.380291, 1.357299, 1.288847),
-    (3, 1.211808, 1.198105, 1.157835),
-    (5, 1.112823, 1.10517, 1.082929),
-    (10, 1.052125, 1.048474, 1.037952),
-    (30, 1.016548, 1.015366, 1.011977),
-    (100, 1.004884, 1.004532, 1.003527),
-]
 
 
 def _floor_kind(parameters: tuple[float, ...]) -> Kind:
@@ -104,43 +51,6 @@ def _floor_kind(parameters: tuple[float, ...]) -> Kind:
     )
 
 
-@pytest.mark.parametrize("name", sorted(FLOOR))
-def test_floor_case(name: str) -> None:
-    parameters, (ideal_rpm, least_rpm, lock, brake_s) = FLOOR[name]
-    found = pivot_threshold(_floor_kind(parameters))
-    assert found.feasible
-    assert found.reason == ""
-    assert found.w_ideal_rad_s * RPM == pytest.approx(ideal_rpm, rel=1e-6)
-    assert found.w_min_rad_s * RPM == pytest.approx(least_rpm, rel=1e-5)
-    assert found.lock_angle_rad == pytest.approx(lock, rel=1e-5)
-    assert found.brake_s == pytest.approx(brake_s, rel=1e-5)
-
-
-@pytest.mark.parametrize("name", sorted(ELSEWHERE))
-def test_hinge_in_another_setting(name: str) -> None:
-    parameters, (ideal, least, lock, brake_s) = ELSEWHERE[name]
-    moment, edge, wheel, brake, magnet, reach, elevation, end = parameters
-    hold = Hold(moment, elevation * math.pi, end * math.pi, magnet, reach)
-    found = hinge(hold, edge, wheel, brake)
-    assert found["w_ideal_rad_s"] == pytest.approx(ideal, rel=1e-6)
-    assert found["w_min_rad_s"] == pytest.approx(least, rel=1e-5)
-    assert found["lock_rad"] == pytest.approx(lock, rel=1e-5)
-    assert found["brake_s"] == pytest.approx(brake_s, rel=1e-5)
-
-
-@pytest.mark.parametrize(("row", "column"), list(itertools.product(range(len(RATIOS)), (1, 2, 3))))
-def test_exact_over_ideal(row: int, column: int) -> None:
-    ratio = RATIOS[row][0]
-    weight = PLAIN.mass_kg * GRAVITY_M_S2 * PLAIN.side_m / 2
-    edge = 2 / 3 * PLAIN.mass_kg * PLAIN.side_m**2
-    wheel = (0.03, 0.1, 0.3)[column - 1] * edge
-    found = hinge(hold_of(PLAIN), edge, wheel, ratio * weight)
-    assert found["ratio"] == pytest.approx(ratio)
-    assert found["w_min_rad_s"] / found["w_ideal_rad_s"] == pytest.approx(
-        RATIOS[row][column], rel=2e-6
-    )
-
-
 @given(ratio=st.floats(1.01, 500), part=st.floats(0.001, 0.5), torque=st.floats(1e-3, 10))
 def test_constant_hold_torque_has_a_closed_form(ratio: float, part: float, torque: float) -> None:
     """w = w_ideal sqrt(1 + (1 - j)/(k - 1)): uniform accelerations, by hand."""
@@ -151,12 +61,6 @@ def test_constant_hold_torque_has_a_closed_form(ratio: float, part: float, torqu
     assert found["w_min_rad_s"] / found["w_ideal_rad_s"] == pytest.approx(expected, rel=1e-9)
     formula = closed_form_rad_s(hold, *map(np.asarray, (edge, part * edge, ratio * torque)))
     assert found["w_min_rad_s"] == pytest.approx(float(formula), rel=1e-9)
-
-
-def test_instant_brake_is_the_limit_of_a_strong_one() -> None:
-    found = pivot_threshold(kind_with(brake_torque_N_m=1e4))
-    assert found.w_min_rad_s == pytest.approx(found.w_ideal_rad_s, rel=1e-4)
-    assert found.w_min_rad_s > found.w_ideal_rad_s
 
 
 def test_against_an_ordinary_differential_equation_solver() -> None:
@@ -182,24 +86,6 @@ def test_against_an_ordinary_differential_equation_solver() -> None:
     assert abs(left) < 1e-7 * hold.energy_J(hold.end_rad)
 
 
-@pytest.mark.parametrize("times_ideal", [1.0, 3.0, 8.0])
-def test_too_weak_a_brake_never_lifts(times_ideal: float) -> None:
-    """k = 0.95; MuJoCo found the body stuck at the same three speeds."""
-    kind = _floor_kind((0.06, 0.28, 2.4e-5, 0.1257838, 0.05, 0.05))
-    found = pivot_threshold(kind)
-    assert not found.feasible
-    assert found.torque_ratio == pytest.approx(0.95, rel=1e-6)
-    assert "0.950" in found.reason
-    assert math.isnan(found.w_min_rad_s)
-    assert found.w_over_rad_s is None
-    assert found.w_ideal_rad_s == pytest.approx(292.3639, rel=1e-6)
-    result = pivot(kind, times_ideal * found.w_ideal_rad_s)
-    assert (result.faces, result.turned_rad, result.peak_tilt_rad) == (0, 0.0, 0.0)
-    assert result.settled
-    run_down_s = times_ideal * found.w_ideal_rad_s * 2.4e-5 / 0.1257838
-    assert result.brake_s == pytest.approx(run_down_s)
-
-
 @pytest.mark.parametrize(("part", "feasible"), [(0.6535, False), (0.6548, True)])
 def test_a_wall_can_stall_a_brake_that_lifts(part: float, feasible: bool) -> None:
     """A wall needs tau > max V/theta = 0.654 m g a, though the hold at rest is m g a / 2.
@@ -217,16 +103,6 @@ def test_a_wall_can_stall_a_brake_that_lifts(part: float, feasible: bool) -> Non
 def test_magnets_hold_only_what_is_held() -> None:
     magnets = kind_with(magnet_torque_N_m=0.2, held=False)
     assert hold_of(magnets).torque_N_m(0.0) == hold_of(PLAIN).torque_N_m(0.0)
-
-
-def test_brake_onset_delays_and_costs_no_speed() -> None:
-    late = pivot_threshold(kind_with(brake_onset_s=0.004))
-    prompt = pivot_threshold(PLAIN)
-    assert late.w_min_rad_s == prompt.w_min_rad_s
-    assert late.brake_s == pytest.approx(prompt.brake_s + 0.004)
-    ran, sooner = (pivot(kind_with(brake_onset_s=s), 600.0) for s in (0.004, 0.0))
-    assert ran.settle_s - sooner.settle_s == pytest.approx(0.004)
-    assert ran.brake_s - sooner.brake_s == pytest.approx(0.004)
 
 
 def test_hold_torque_is_the_slope_of_its_energy() -> None:
@@ -292,67 +168,6 @@ def test_more_mass_never_asks_for_less_speed(kind: Kind, factor: float) -> None:
 
 def _fields(kind: Kind) -> dict[str, object]:
     return {name: getattr(kind, name) for name in type(kind).__slots__}
-
-
-@given(
-    kind=kinds,
-    offset=st.tuples(st.floats(-0.3, 0.3), st.floats(-0.3, 0.3)),
-    face_up=st.integers(1, 6),
-    sense=st.sampled_from([1, -1]),
-)
-def test_resting_never_tips(
-    kind: Kind, offset: tuple[float, float], face_up: int, sense: int
-) -> None:
-    shifted = tuple(part * kind.side_m for part in offset)
-    kind = kind_with(**{**_fields(kind), "com_offset_m": shifted})
-    rest = rest_torque_N_m(kind, face_up, sense)
-    assert 0.0 < rest <= kind.spin_up_torque_N_m
-    assert rest <= tipping_torque_N_m(kind, face_up, sense) / 2
-
-
-@given(kind=kinds, face_up=st.integers(1, 4), sense=st.sampled_from([1, -1]))
-@settings(max_examples=25, deadline=None)
-def test_resting_torque_as_a_brake_leaves_the_body_where_it_is(
-    kind: Kind, face_up: int, sense: int
-) -> None:
-    """Even applied at once, as a brake would, the resting torque lifts no edge."""
-    torque = rest_torque_N_m(kind, face_up, sense)
-    gentle = kind_with(**{**_fields(kind), "brake_torque_N_m": torque})
-    assert pivot(gentle, 500.0, face_up, sense).peak_tilt_rad == 0.0
-
-
-def test_tipping_torque_by_hand() -> None:
-    """Weight 3 N (0.3058 kg): levers 35 and 25 mm of a 60 mm cube, 5 mm off centre."""
-    kind = kind_with(mass_kg=3 / 9.81, com_offset_m=(0.005, 0.002), magnet_torque_N_m=0.04)
-    assert tipping_torque_N_m(kind, 1, 1) == pytest.approx(0.105 + 0.04)
-    assert tipping_torque_N_m(kind, 1, -1) == pytest.approx(0.075 + 0.04)
-    assert tipping_torque_N_m(kind, 3, 1) == pytest.approx(0.075 + 0.04)
-    assert tipping_torque_N_m(kind, 2, 1) == pytest.approx(3 * 0.028 + 0.04)
-    free = kind_with(mass_kg=3 / 9.81, com_offset_m=(0.005, 0.002), held=False)
-    assert tipping_torque_N_m(free, 1, 1) == pytest.approx(0.105)
-
-
-def test_yaw_friction_of_an_upright_axis_by_summing_over_the_face() -> None:
-    """Torque of uniform Coulomb friction about the centre: mu p times the sum of distances."""
-    cells = [(i + 0.5) / 200 - 0.5 for i in range(200)]
-    mean = sum(math.hypot(x, y) for x in cells for y in cells) / 200**2
-    weight = PLAIN.mass_kg * GRAVITY_M_S2
-    expected = PLAIN.floor_friction * weight * PLAIN.side_m * mean
-    for face_up, sense in itertools.product((5, 6), (1, -1)):
-        assert tipping_torque_N_m(PLAIN, face_up, sense) == pytest.approx(expected, rel=1e-4)
-
-
-@pytest.mark.parametrize(("face_up", "sense"), [(0, 1), (7, 1), (-1, 1), (1, 0), (1, 2)])
-def test_refuses_a_posture_that_is_none(face_up: int, sense: int) -> None:
-    for ask in (tipping_torque_N_m, rest_torque_N_m, pivot_threshold):
-        with pytest.raises(SimStateError):
-            ask(PLAIN, face_up, sense)
-
-
-@pytest.mark.parametrize("speed", [-1.0, math.nan, math.inf])
-def test_refuses_a_wheel_speed_that_is_none(speed: float) -> None:
-    with pytest.raises(SimStateError, match="wheel speed"):
-        pivot(PLAIN, speed)
 
 
 @given(kind=kinds)

@@ -5,7 +5,6 @@ motion, or from the general physics library MuJoCo 4.0.0, for invented parameter
 """
 
 import math
-from itertools import pairwise
 from typing import Any
 
 import pytest
@@ -13,9 +12,9 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from sim_link.kinds import Kind, centre_inertia_kg_m2, edge_inertia_kg_m2, offset_m
-from sim_link.mechanics import Attempt, Moment, Phase, pivot, pivot_threshold
+from sim_link.mechanics import Attempt, Moment, pivot, pivot_threshold
 from sim_link.mechanics.arrays import PLAIN as OPS
-from sim_link.mechanics.bodies import Bodies, bodies_of, lowest_corner, standing_arm_m, turned
+from sim_link.mechanics.bodies import Bodies, bodies_of, standing_arm_m, turned
 from sim_link.mechanics.forces import Footing, footing, stick
 from sim_link.mechanics.hold import GRAVITY_M_S2, hold_of
 from tests.support.kinds import PLAIN, kind_with
@@ -88,19 +87,6 @@ def test_held_module_lands_from_the_computed_threshold_on(kind: Kind, computed: 
     assert landed.peak_tilt_rad >= math.pi / 2
     assert short.settled
     assert landed.settled
-
-
-@pytest.mark.parametrize(
-    ("kind", "computed"),
-    [(HELD[0][0], 1173.255), (HELD[1][0], 1777.068), (HELD[2][0], 1455.222)],
-)
-def test_second_face_of_a_held_module(kind: Kind, computed: float) -> None:
-    """Computed by solve_ivp: locked before landing 4.00 and 3.98 times the least speed; still
-    slipping at landing, 2.76 times."""
-    over = pivot_threshold(kind).w_over_rad_s
-    assert over == pytest.approx(computed, rel=5e-4)
-    assert pivot(kind, computed * 0.999).faces == 1
-    assert pivot(kind, computed * 1.001).faces == 2
 
 
 def test_plastic_landing_keeps_a_quarter_of_the_rate() -> None:
@@ -182,27 +168,6 @@ def test_short_swing_lasts_as_long_as_the_linear_pendulum_says() -> None:
 # --- not held ----------------------------------------------------------------------------
 
 
-def test_free_module_that_sticks_needs_what_a_hinge_needs() -> None:
-    """k = 3, mu = 0.9: MuJoCo with contacts found 445.95 to 445.98 rad/s, the hinge 445.98."""
-    kind = _hinged(0.05, 0.16, 8e-6, 0.11772, held=False, floor_friction=0.9)
-    assert least_speed(kind, 1, 440.0, 450.0) == pytest.approx(445.9807, rel=1e-4)
-    assert pivot_threshold(kind).w_min_rad_s == pytest.approx(445.9847, rel=1e-6)
-
-
-def test_hop_of_a_free_module() -> None:
-    """k = 150, mu = 1.2, three times the ideal speed: computed, the corner slides before the
-    wheel locks; lock at 0.02397 rad and 1.456 ms, rate 32.912 rad/s, upward 0.80285 m/s, rise
-    33.445 mm (MuJoCo with ever stiffer contacts: 33.66, 33.56, 33.47 mm)."""
-    kind = _hinged(0.05, 0.16, 8e-6, 5.886, held=False, floor_friction=1.2)
-    moments = followed(kind, 1104.097)
-    off = next(m for m in moments if m.phase is Phase.FLIGHT)
-    assert off.angle_rad == pytest.approx(0.02397, rel=1e-3)
-    assert off.t_s == pytest.approx(1.456e-3, rel=1e-3)
-    assert off.rate_rad_s == pytest.approx(32.912, rel=1e-4)
-    assert off.vz_m_s == pytest.approx(0.80285, rel=1e-4)
-    assert max(m.height_m for m in moments) - 0.025 == pytest.approx(33.445e-3, rel=5e-4)
-
-
 @pytest.mark.parametrize("friction", [0.05, 0.3, 0.6])
 def test_instant_brake_on_a_sliding_corner(friction: float) -> None:
     """Rate after = Iw w / (Ic + m a^2 (1 + mu)/4): the ground's impulse N acts at half a side
@@ -239,30 +204,6 @@ def test_normal_force_vanishes_at_the_textbook_rate() -> None:
     assert stick(body(kind), foot, 0.0, 0.0, rate * 1.0001).normal_N < 0
 
 
-def test_over_of_a_free_module_comes_early_and_depends_on_friction() -> None:
-    """With a near-instant brake `over` begins at 1.5 to 1.75 times the ideal speed, where a
-    held one needs 4 times."""
-    over = {}
-    for friction in (0.5, 0.9):
-        kind = _hinged(0.05, 0.16, 8e-6, 5.886, held=False, floor_friction=friction)
-        found = pivot_threshold(kind)
-        assert found.w_over_rad_s is not None
-        over[friction] = found.w_over_rad_s / found.w_ideal_rad_s
-    assert 1.5 < over[0.5] < over[0.9] < 1.75
-
-
-def test_sliding_threshold_is_where_the_motion_lands() -> None:
-    kind = _hinged(0.05, 0.16, 8e-6, 0.6, held=False, floor_friction=0.3)
-    found = pivot_threshold(kind)
-    assert found.feasible
-    assert pivot(kind, found.w_min_rad_s * 0.9999).faces == 0
-    assert pivot(kind, found.w_min_rad_s * 1.0001).faces == 1
-    assert (
-        found.w_min_rad_s
-        < pivot_threshold(kind_with(**{**_fields(kind), "held": True})).w_min_rad_s
-    )
-
-
 def test_bouncing_free_module_comes_to_rest() -> None:
     for restitution in (0.1, 0.3, 0.6):
         kind = kind_with(held=False, restitution=restitution)
@@ -296,58 +237,6 @@ free_kinds = st.builds(
     com_offset_m=st.tuples(st.floats(-0.006, 0.006), st.floats(-0.006, 0.006)),
     restitution=st.sampled_from([0.0, 0.0, 0.3]),
 )
-
-
-@given(kind=free_kinds, speed=speeds)
-@settings(max_examples=30, deadline=None)
-def test_free_flight_conserves_energy_rate_and_forward_speed(kind: Kind, speed: float) -> None:
-    for one, two in pairwise(followed(kind, speed)):
-        if one.phase is two.phase is Phase.FLIGHT and not one.slipping and one.vx_m_s == two.vx_m_s:
-            assert two.rate_rad_s == one.rate_rad_s
-            assert body_energy(kind, two) == pytest.approx(body_energy(kind, one), rel=1e-9)
-
-
-@given(kind=free_kinds, speed=speeds)
-@settings(max_examples=30, deadline=None)
-def test_locked_body_never_gains_energy_and_always_comes_to_rest(kind: Kind, speed: float) -> None:
-    """Sliding and landing take energy, nothing gives any; nothing sinks into the floor."""
-    moments = followed(kind, speed)
-    assert moments[-1].phase is Phase.FLAT
-    start = kind.mass_kg * GRAVITY_M_S2 * kind.side_m
-    for one, two in pairwise(moments):
-        if not one.slipping:
-            assert body_energy(kind, two) <= body_energy(kind, one) + 1e-6 * start
-        corner = lowest_corner(OPS, two.angle_rad)
-        _, clear = arm_m(kind, corner, two.angle_rad)
-        assert two.height_m >= clear - 1e-8 * kind.side_m
-
-
-@given(
-    speed=st.floats(100.0, 1500.0),
-    brake=st.floats(0.12, 50.0),
-    magnet=st.sampled_from([0.0, 0.02]),
-)
-@settings(max_examples=30, deadline=None)
-def test_held_body_conserves_energy_between_landings(
-    speed: float, brake: float, magnet: float
-) -> None:
-    """Locked: Ie rate^2/2 + V is constant until the face comes down, to 1e-6 of the lift.
-    Slipping: the brake's work tau theta is all there is, Ib rate^2/2 + V = tau theta."""
-    kind = kind_with(brake_torque_N_m=brake, magnet_torque_N_m=magnet)
-    hold, edge = hold_of(kind), edge_inertia_kg_m2(kind)
-    lift = hold.energy_J(hold.end_rad)
-    locked: list[float] = []
-    for moment in followed(kind, speed):
-        if moment.angle_rad >= math.pi / 2 or (locked and moment.angle_rad == 0.0):
-            break
-        if moment.slipping:
-            turning = 0.5 * (edge - kind.wheel_inertia_kg_m2) * moment.rate_rad_s**2
-            work = brake * moment.angle_rad
-            assert turning + hold.energy_J(moment.angle_rad) == pytest.approx(work, abs=1e-6 * lift)
-        else:
-            locked.append(0.5 * edge * moment.rate_rad_s**2 + hold.energy_J(moment.angle_rad))
-    assert locked
-    assert max(locked) - min(locked) < 1e-6 * max(lift, locked[0])
 
 
 @given(kind=free_kinds, speed=speeds, held=st.booleans())
