@@ -217,7 +217,7 @@ class VirtualModule:
         self.box.drive.recover(t_ns)
 
     def _out(self, said: list[Message]) -> list[Packet]:
-        if self._called and self._mishaps.silent:
+        if not said or (self._called and self._mishaps.silent):
             return []
         address = self.spec.address
         if not self._called:
