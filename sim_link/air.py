@@ -21,9 +21,13 @@ OVERHEAD_BYTES: Final = 8
 the trade: 4 to 10 bytes)."""
 TURNAROUND_NS: Final = 150_000
 """From the start of a sending until others hear it; whoever starts within it collides."""
-_BACKOFF_SLOTS: Final = 64
-"""Who listens waits by luck for one of so many turnarounds, at first as well: modules that answer
-one broadcast would else all begin in the same instant."""
+_BACKOFF_SLOTS: Final = 8
+"""Who found the channel busy waits by luck for one to so many turnarounds once it is free. Who
+alone was asked answers at once, and so before them."""
+_SPREAD_SLOTS: Final = 64
+"""The same for those who answer a broadcast: all would else begin in the same instant."""
+GAP_NS: Final = 4 * TURNAROUND_NS
+"""Who listens and has more to send leaves so much for an answer to begin."""
 _BITS_A_BYTE: Final = 8
 _NS_A_S: Final = 1_000_000_000
 
@@ -84,13 +88,15 @@ class Air:
         radio = self._radios.get(sender)
         return 0 if radio is None else len(radio.queue)
 
-    def offer(self, sender: int, data: bytes, t_ns: int) -> None:
-        """Give a radio a frame to send, behind those that wait in it."""
+    def offer(self, sender: int, data: bytes, t_ns: int, *, spread: bool = False) -> None:
+        """Give a radio a frame to send, behind those that wait in it. ``spread``: others will
+        begin at this time as well."""
         radio = self._radios.setdefault(sender, _Radio())
         radio.queue.append(data)
         if not radio.busy:
             radio.busy = True
-            self._note(t_ns + self._luck_ns(sender, radio), sender)
+            luck_ns = self._luck_ns(sender, radio, _SPREAD_SLOTS) if spread else 0
+            self._note(t_ns + luck_ns, sender)
 
     def forget(self, sender: int) -> None:
         """Let a radio forget what waits in it; what is on the air goes on."""
@@ -133,17 +139,17 @@ class Air:
             return
         heard = [each.end_ns for each in self._on_air if each.start_ns + TURNAROUND_NS <= t_ns]
         if self._listens and heard:
-            self._note(max(heard) + self._luck_ns(sender, radio), sender)
+            self._note(max(heard) + self._luck_ns(sender, radio, _BACKOFF_SLOTS), sender)
             return
         self._start(sender, radio.queue[0], t_ns)
 
-    def _luck_ns(self, sender: int, radio: _Radio) -> int:
-        """How long a radio that listens waits before it does."""
+    def _luck_ns(self, sender: int, radio: _Radio, slots: int) -> int:
+        """How long a radio waits that listens: one to so many turnarounds."""
         if not self._listens:
             return 0
         radio.tries += 1
         word = Draws(self._seed, sender).word(radio.tries, "backoff")
-        return word % _BACKOFF_SLOTS * TURNAROUND_NS
+        return (1 + word % slots) * TURNAROUND_NS
 
     def _start(self, sender: int, data: bytes, t_ns: int) -> None:
         sending = _Sending(t_ns, t_ns + self.airtime_ns(len(data)), sender, data)
@@ -163,5 +169,6 @@ class Air:
         self.delivered_ns += airtime_ns if sending.clear else 0
         radio.busy = bool(radio.queue)
         if radio.busy:
-            self._note(sending.end_ns, sending.sender)
+            gap_ns = GAP_NS if self._listens else 0
+            self._note(sending.end_ns + gap_ns, sending.sender)
         return Sent(sending.sender, sending.data, sending.clear)

@@ -211,7 +211,7 @@ OPTIONS: Final[dict[str, Option]] = {
             "burst",
             _number(1, 1000),
             "a number from 1 to 1000 is needed",
-            "mean number of frames lost in a row; 1: each has its own luck",
+            "mean number of frames lost in a row, at least loss/(1-loss); 1: each has its own luck",
         ),
         Option(
             "range_m",

@@ -46,8 +46,10 @@ class Quality:
 
     ``burst`` is the mean number of frames lost in a row: losses then come as in the two-state
     chain of Gilbert (1960) and Elliott (1963), all frames lost in the bad state and none in the
-    good one. 1: each frame has its own luck. ``spread_ms``: up to so much later, each by its own
-    luck, still in order. ``faint``: the part lost for want of signal, whatever the rest.
+    good one. 1: each frame has its own luck. A loss of p takes bursts of p / (1 - p) at least, and
+    has them where ``burst`` is more than 1 and less than that. ``spread_ms``: up to so much later,
+    each by its own luck, still in order. ``faint``: the part lost for want of signal, whatever the
+    rest.
     """
 
     loss: float = 0.0
@@ -84,7 +86,7 @@ def faintness(distance_m: float, range_m: float | None) -> float:
 class Channel:
     """One direction of one path. ``link`` tells paths of one world apart, as a key of draws."""
 
-    __slots__ = ("_bad", "_count", "_draws", "_in_order_ns", "_quality", "perfect")
+    __slots__ = ("_bad", "_burst", "_count", "_draws", "_in_order_ns", "_quality", "perfect")
 
     def __init__(self, quality: Quality, seed: int, link: int, way: Way) -> None:
         self._quality = quality
@@ -93,6 +95,9 @@ class Channel:
         self._in_order_ns = 0
         self.perfect = quality.perfect
         """Whether ``offer`` gives back just what it got, at the same time."""
+        kept = max(1.0 - quality.loss, 1e-12)
+        self._burst = max(quality.burst, quality.loss / kept)
+        """Long enough for the loss: the good state lasts one frame at least."""
         self._bad = quality.burst > 1.0 and self._draws.happens(quality.loss, 0, "state")
 
     def offer(self, frame_bytes: bytes, t_ns: int) -> list[tuple[int, bytes]]:
@@ -130,7 +135,7 @@ class Channel:
         """The chain's next state. It leaves the bad one with 1/burst, and enters it so often that
         the mean part of lost frames is ``loss``: loss / (1 - loss) / burst."""
         quality = self._quality
-        chance = 1.0 / quality.burst if quality.loss < 1.0 else 0.0
+        chance = 1.0 / self._burst if quality.loss < 1.0 else 0.0
         if not self._bad:
             chance *= quality.loss / max(1.0 - quality.loss, 1e-12)
         if self._draws.happens(chance, self._count, "weather"):

@@ -8,6 +8,7 @@ import math
 from collections.abc import Callable
 from typing import Final
 
+from protocol.codes import FIRST_GROUP_ADDRESS
 from protocol.errors import RemoteProtocolError
 from protocol.frame import Dropped, FrameDecoder, frame
 from protocol.message import Packet, decode, encode
@@ -27,7 +28,16 @@ _BRIDGE_M: Final = (0.0, 0.0)
 class Station:
     """One module as the air knows it. ``place``: its number in the fleet."""
 
-    __slots__ = ("_decoder", "_seal", "address", "dropped", "hears", "module", "speaks")
+    __slots__ = (
+        "_decoder",
+        "_seal",
+        "address",
+        "dropped",
+        "heard_all",
+        "hears",
+        "module",
+        "speaks",
+    )
 
     def __init__(
         self, place: int, spec: ModuleSpec, options: SimOptions, tally: Tally, keys: KeyRing | None
@@ -39,6 +49,8 @@ class Station:
         self.address = spec.address
         self.dropped = 0
         """Frames that it heard and did not understand or obey."""
+        self.heard_all = False
+        """Whether what it heard last was for several: then others may answer at this time."""
         self._decoder = FrameDecoder()
         self._seal = None if keys is None else ModuleSeal(keys)
 
@@ -47,10 +59,7 @@ class Station:
         said: list[bytes] = []
         for found in self._decoder.feed(data):
             packet = None if isinstance(found, Dropped) else self._admitted(found)
-            if packet is None:
-                self.dropped += 1
-            else:
-                said += self.frames(self.module.receive(packet, t_ns))
+            said += self.take(packet, t_ns)
         return said
 
     def take(self, packet: Packet | None, t_ns: int) -> list[bytes]:
@@ -58,6 +67,7 @@ class Station:
         if packet is None:
             self.dropped += 1
             return []
+        self.heard_all = packet.destination >= FIRST_GROUP_ADDRESS
         return self.frames(self.module.receive(packet, t_ns))
 
     def frames(self, packets: list[Packet]) -> list[bytes]:

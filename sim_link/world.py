@@ -9,10 +9,10 @@ given, one radio path a module, the module; and back the same way.
 
 import heapq
 from collections import deque
-from collections.abc import Callable, Iterable
+from collections.abc import Callable, Sequence
 from typing import Final, NamedTuple
 
-from protocol.codes import FIRST_GROUP_ADDRESS
+from protocol.codes import BRIDGE_ADDRESS, FIRST_GROUP_ADDRESS
 from sim_link import schedule
 from sim_link.air import Air
 from sim_link.bridge import Bridge
@@ -65,7 +65,7 @@ class World:
         perfect = all(station.hears.perfect for station in self._stations)
         self._read_once = filtering and perfect and keys is None
         """Whether every module hears the same whole frames: then one reading serves all."""
-        self._outgoing: deque[Iterable[int]] = deque()
+        self._outgoing: deque[Sequence[int]] = deque()
         """Whom the frames are for that wait in the bridge's radio."""
         self._t_ns = 0
         self._order = 0
@@ -142,22 +142,30 @@ class World:
     def reset_bridge(self) -> None:
         """Let the bridge start anew in the middle of everything: what waits in it is lost."""
         self._bridge.reset(self._t_ns)
-        if self._air is not None:
-            self._air.forget(_BRIDGE)
-            while len(self._outgoing) > self._air.waiting(_BRIDGE):
-                self._outgoing.pop()
+        self._empty_bridge()
 
     def silence_bridge(self, silent: bool) -> None:
-        """Let the bridge pass nothing on and say nothing, either way, or everything again."""
+        """Let the bridge pass nothing on and say nothing, either way, or everything again. What
+        waits in it as it falls silent is lost."""
         self._bridge.silence(silent)
+        if silent:
+            self._empty_bridge()
 
     def unplug(self, unplugged: bool) -> None:
         """Pull the bridge's cable, or plug it in again: it has its power from there, and starts
         anew. What is written meanwhile is lost."""
         self._bridge.unplugged = unplugged
+        self._from_console = Line(self.options.rate)
         self._to_console = Line(self.options.rate)
-        if not unplugged:
-            self.reset_bridge()
+        self.reset_bridge()
+
+    def _empty_bridge(self) -> None:
+        """Lose what waits, either way; the byte and the frame that have begun go on."""
+        self._to_console.discard(self._t_ns)
+        if self._air is not None:
+            self._air.forget(_BRIDGE)
+            while len(self._outgoing) > self._air.waiting(_BRIDGE):
+                self._outgoing.pop()
 
     # -- the order of events -------------------------------------------------------------
 
@@ -199,6 +207,8 @@ class World:
             answer = self._bridge.answer(address, frame_bytes, self._waiting, self._t_ns)
             if answer is not None:
                 self._to_console.put(answer, self._t_ns)
+            if address == BRIDGE_ADDRESS:  # for itself: it does not go on the air
+                continue
             places = self._addressed(address)
             if self._air is None:
                 self._to_modules(frame_bytes, places)
@@ -213,7 +223,7 @@ class World:
         it."""
         return len(self._arrivals) if self._air is None else self._air.waiting(_BRIDGE)
 
-    def _addressed(self, address: int) -> Iterable[int]:
+    def _addressed(self, address: int) -> Sequence[int]:
         """The modules to whose radio a frame matters: one, all, or those that share its address by
         mistake. A modem sends to all: addresses are nothing to it."""
         if address >= FIRST_GROUP_ADDRESS:  # a group or everyone: who is in it, modules know
@@ -233,11 +243,12 @@ class World:
             else:
                 self._send(self._stations[sender].speaks, data, _BRIDGE)
 
-    def _to_modules(self, data: bytes, places: Iterable[int]) -> None:
+    def _to_modules(self, data: bytes, places: Sequence[int]) -> None:
         if self._read_once:
             packet = understood(data)
             for place in places:
-                self._say(place, self._stations[place].take(packet, self._t_ns))
+                station = self._stations[place]
+                self._say(place, station.take(packet, self._t_ns), spread=station.heard_all)
                 self._note_wake(place)
             return
         for place in places:
@@ -263,7 +274,8 @@ class World:
                 self._heard += 1
                 self._to_console.put(data, self._t_ns)
             return
-        self._say(place, self._stations[place].hear(data, self._t_ns))
+        station = self._stations[place]
+        self._say(place, station.hear(data, self._t_ns), spread=station.heard_all)
         self._note_wake(place)
 
     def _wake(self) -> None:
@@ -274,13 +286,13 @@ class World:
             self._say(place, station.frames(station.module.wake(self._t_ns)))
             self._note_wake(place)
 
-    def _say(self, place: int, frames: list[bytes]) -> None:
-        """Put what a module says on the air."""
+    def _say(self, place: int, frames: list[bytes], *, spread: bool = False) -> None:
+        """Put what a module says on the air; ``spread``: others say something at this time too."""
         for data in frames:
             if self._air is None:
                 self._send(self._stations[place].speaks, data, _BRIDGE)
             else:
-                self._air.offer(place, data, self._t_ns)
+                self._air.offer(place, data, self._t_ns, spread=spread)
 
     def _note_wake(self, place: int) -> None:
         wake_ns = self._stations[place].module.next_wake_ns

@@ -78,6 +78,16 @@ def test_frames_of_one_radio_follow_each_other() -> None:
     assert [later - sooner for (sooner, _), (later, _) in pairwise(ends)] == [FRAME_NS] * 4
 
 
+def test_who_listens_leaves_room_for_an_answer_between_two_frames() -> None:
+    channel = air(listens=True)
+    channel.offer(1, DATA, 0)
+    channel.offer(1, DATA, 0)
+    channel.advance(FRAME_NS)
+    channel.offer(2, DATA, FRAME_NS)  # asked by the first, it answers at once
+    ends = [(sent.sender, sent.clear) for _, sent in all_of(channel)]
+    assert ends == [(2, True), (1, True)]
+
+
 def test_who_listens_waits_and_nobody_is_spoilt() -> None:
     channel = air(listens=True)
     channel.offer(1, DATA, 0)
@@ -93,8 +103,8 @@ def test_two_that_begin_before_they_can_hear_each_other_collide() -> None:
     spoilt = 0
     for seed in range(640):
         channel = Air(RATE, seed, listens=True)
-        channel.offer(1, DATA, 0)
-        channel.offer(2, DATA, 0)
+        for sender in (1, 2):
+            channel.offer(sender, DATA, 0, spread=True)
         clear = {sent.clear for _, sent in all_of(channel)}
         assert len(clear) == 1
         spoilt += clear == {False}

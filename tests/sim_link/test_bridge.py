@@ -160,6 +160,62 @@ def test_a_restart_in_the_middle_loses_what_waits() -> None:
     assert slow.modules[0].stop_number == 11
 
 
+STOP = frame(encode(to_all(Stop(9))))
+
+
+@pytest.mark.parametrize("fault", ["reset_bridge", "silence_bridge"])
+def test_what_waits_for_the_air_does_not_outlive_its_bridge(fault: str) -> None:
+    """A roll call is on the air as it happens; the stops behind it are never sent."""
+    slow = world(modules=1, air_rate=9_600, access="at_once", rate=5_000_000)
+    slow.write(ROLL + STOP * 30, 0)
+    slow.advance(10 * MS)
+    assert slow._waiting == 31
+    strike(slow, fault)
+    assert slow._waiting == 1
+    slow.advance(10 * S)
+    assert not slow.modules[0].latched
+
+
+@pytest.mark.parametrize("fault", ["reset_bridge", "silence_bridge", "unplug"])
+def test_what_waits_for_the_line_does_not_outlive_its_bridge(fault: str) -> None:
+    slow = world(modules=40, rate=1_200)
+    slow.write(ROLL, 0)
+    slow.read(S)
+    assert slow._to_console.waiting(S) > 1_000
+    strike(slow, fault)
+    assert len(slow.read(S + BOOT_NS)) <= 1
+
+
+@pytest.mark.parametrize("written_ns", [0, 50 * MS])
+def test_what_is_written_before_or_while_the_cable_is_pulled_is_lost(written_ns: int) -> None:
+    """Also where the line is so slow that it would still be under way once the cable is back."""
+    slow = world(modules=1, rate=1_200)
+    slow.at(10 * MS, lambda: slow.unplug(True))
+    slow.at(100 * MS, lambda: slow.unplug(False))
+    slow.write(STOP * 20, written_ns)
+    slow.advance(10 * S)
+    assert not slow.modules[0].latched
+    slow.write(STOP, 10 * S)
+    slow.advance(11 * S)
+    assert slow.modules[0].latched
+
+
+def test_a_question_to_the_bridge_takes_no_airtime() -> None:
+    slow = world(modules=1, air_rate=9_600, access="at_once", rate=5_000_000)
+    slow.write(ASK, 0)
+    slow.advance(MS)
+    assert slow._waiting == 0
+    assert status(slow.read(2 * MS)).sequence == 7
+
+
+def strike(struck: World, fault: str) -> None:
+    """Let a fault of the bridge begin."""
+    if fault == "reset_bridge":
+        struck.reset_bridge()
+    else:
+        getattr(struck, fault)(True)
+
+
 @pytest.mark.parametrize("kind", list(BridgeKind))
 def test_a_fleet_is_commanded_through_either_bridge(kind: BridgeKind) -> None:
     console = VirtualConsole(world(bridge=kind, seed=3))

@@ -138,6 +138,14 @@ def test_a_burst_of_one_is_independent_luck() -> None:
     assert sum(runs) / len(runs) == pytest.approx(1 / 0.7, rel=0.03)
 
 
+@pytest.mark.parametrize(("loss", "burst"), [(0.8, 2.0), (0.9, 2.0), (0.6, 1.2)])
+def test_a_great_loss_is_kept_though_its_bursts_must_be_longer(loss: float, burst: float) -> None:
+    """With good states of one frame each, bursts of loss / (1 - loss) are the shortest."""
+    runs = runs_of_losses(channel(loss=loss, burst=burst), 20_000)
+    assert sum(runs) / 20_000 == pytest.approx(loss, abs=0.015)
+    assert sum(runs) / len(runs) == pytest.approx(loss / (1 - loss), rel=0.06)
+
+
 @pytest.mark.parametrize("loss", [0.0, 1.0])
 def test_bursts_of_nothing_and_of_everything(loss: float) -> None:
     assert all(bool(arrivals) is (loss == 0.0) for arrivals in history(channel(loss=loss, burst=5)))

@@ -54,7 +54,7 @@ from tests.support.virtual_console import (
 )
 
 PAVERS, PEBBLES = (0x10, 0x12, 0x14, 0x16), (0x11, 0x13, 0x15, 0x17)
-GOLDEN = "f7d7b3b2a219020f82b13a6013e63aa00373cc261e5c52b9bc42ba4968f07d19"
+GOLDEN = "987c4f482e13e51f081c80ecb9639679bbe1c058d7609d56024525a55efa324f"
 BAD_RADIO = {"loss": 0.2, "damage": 0.05, "repeat": 0.3, "reorder": 0.2, "delay_ms": 20.0}
 
 
