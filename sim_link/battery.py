@@ -22,7 +22,7 @@ MARGIN: Final = 0.1
 _BETWEEN_S: Final = 3.0
 """Idle time that belongs to a motion: steadying, settling, and waiting for the next order."""
 _MEAN_V: Final = 3.85
-_FRESH_NS: Final = 4_500_000_000
+_FRESH_NS: Final = 9_500_000_000
 """For so long what was seen of a settled cell is still good."""
 _COLD_AGAIN_K: Final = 0.05
 """The cold's factor is looked at again once the box has changed by so much: a thousandth of the

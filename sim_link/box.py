@@ -73,12 +73,13 @@ class Box:
         low_V = self.settings.value(SettingId.BATTERY_LOW_MV) / 1_000
         return self.drive.supply.battery.open_circuit_V < low_V
 
-    def flags(self, t_ns: int, settled: bool | None = None) -> Flags:
-        """The standing conditions, as telemetry and presence report them. ``settled``: whether
-        the body lies still, from whoever has looked already."""
+    def flags(self, t_ns: int, settled: bool | None = None, now_ms: int | None = None) -> Flags:
+        """The standing conditions, as telemetry and presence report them. ``settled``, whether
+        the body lies still, and ``now_ms``, in module time: from whoever has looked already."""
         if settled is None:
             settled = self.drive.body.posture(t_ns).settled
-        now_ms = self.boot.time.ms(t_ns)
+        if now_ms is None:
+            now_ms = self.boot.time.ms(t_ns)
         allegiance = self.boot.allegiance
         # Plain sums: this is asked for with every report, and an enum's | costs half a microsecond.
         return _FLAGS[

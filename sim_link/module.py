@@ -132,7 +132,7 @@ class VirtualModule:
 
     def receive(self, packet: Packet, t_ns: int) -> list[Packet]:
         """Take one packet at ``t_ns``; return what is sent, after what was due before."""
-        sent = self.wake(t_ns)
+        sent = self.wake(t_ns) if self.next_wake_ns <= t_ns else []
         message = packet.message
         if not concerns(packet.destination, self.spec.address, self.box.settings.groups):
             return sent

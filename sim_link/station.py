@@ -72,6 +72,8 @@ class Station:
 
     def frames(self, packets: list[Packet]) -> list[bytes]:
         """What the module says, as frames for the air."""
+        if not packets:
+            return []
         if self._seal is None:
             return [frame(encode(packet)) for packet in packets]
         boot = self.module.boot

@@ -288,11 +288,15 @@ class World:
 
     def _say(self, place: int, frames: list[bytes], *, spread: bool = False) -> None:
         """Put what a module says on the air; ``spread``: others say something at this time too."""
-        for data in frames:
-            if self._air is None:
-                self._send(self._stations[place].speaks, data, _BRIDGE)
-            else:
+        if not frames:
+            return
+        if self._air is not None:
+            for data in frames:
                 self._air.offer(place, data, self._t_ns, spread=spread)
+            return
+        speaks = self._stations[place].speaks
+        for data in frames:
+            self._send(speaks, data, _BRIDGE)
 
     def _note_wake(self, place: int) -> None:
         wake_ns = self._stations[place].module.next_wake_ns

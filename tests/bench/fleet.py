@@ -1,8 +1,9 @@
 """What a large simulated fleet costs: virtual time a second, growth with its size, memory.
 
 Each module reports once a second; one in two hundred starts a motion each second, spins up, brakes
-and tumbles; permits go to everyone once a second. Only the simulator is measured: frames are put
-together and read here by the few lines that a radio would have.
+and tumbles. Permits are those of a rehearsal at pace 20: of twenty seconds, to everyone, every two.
+Only the simulator is measured: frames are put together and read here by the few lines that a radio
+would have.
 """
 
 import gc
@@ -33,7 +34,8 @@ RATE_BAUD = 20_000_000
 """So fast that the serial line is not what is measured."""
 _MS, _S = 1_000_000, 1_000_000_000
 _EPOCH, _CONSOLE = 1_700_000_000, 77
-_PERMIT_MS = 2_500
+_PERMIT_MS = 20_000
+_PERMIT_EACH_S = 2
 _SPEED_RPM = 4_700
 _STEP_NS = 50 * _MS
 
@@ -59,8 +61,9 @@ class Drill:
 
     def run(self, seconds: float) -> None:
         """Let so much fleet time pass."""
-        for _ in range(round(seconds)):
-            self._say(EVERYONE_ADDRESS, Permit(_CONSOLE, self._t_ns // _MS + _PERMIT_MS))
+        for second in range(round(seconds)):
+            if second % _PERMIT_EACH_S == 0:
+                self._say(EVERYONE_ADDRESS, Permit(_CONSOLE, self._t_ns // _MS + _PERMIT_MS))
             self._start_motions()
             self._pass(_S)
 

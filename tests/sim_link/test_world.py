@@ -54,7 +54,7 @@ from tests.support.virtual_console import (
 )
 
 PAVERS, PEBBLES = (0x10, 0x12, 0x14, 0x16), (0x11, 0x13, 0x15, 0x17)
-GOLDEN = "987c4f482e13e51f081c80ecb9639679bbe1c058d7609d56024525a55efa324f"
+GOLDEN = "df0dfca4a0af92cc31a13c30c65281095246c3c759c75843354c8301c9b5dcf5"
 BAD_RADIO = {"loss": 0.2, "damage": 0.05, "repeat": 0.3, "reorder": 0.2, "delay_ms": 20.0}
 
 
