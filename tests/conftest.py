@@ -9,7 +9,7 @@ settings.register_profile(
     "steady",
     derandomize=True,
     deadline=None,
-    max_examples=40,  # always the same ones; a search tries a hundred new ones
+    max_examples=25,  # always the same ones; a search tries a hundred new ones
     suppress_health_check=[HealthCheck.too_slow],
 )
 settings.register_profile(
