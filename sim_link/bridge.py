@@ -24,6 +24,9 @@ QUEUE_FRAMES: Final = 64
 """Frames that may wait for the air; small radios have memory for some tens."""
 LINE_BYTES: Final = 16_384
 """Bytes that may wait for the line to the console."""
+BOUNDLESS_LINE_BYTES: Final = 1 << 20
+"""The same where frames take no time on the air: then a thousand modules answer a roll call in one
+instant, which no real air could bring, and no small memory could hold."""
 BOOT_NS: Final = 400_000_000
 """A bridge that starts anew hears nothing for so long."""
 MOST_BYTES: Final = 64
@@ -55,10 +58,12 @@ class Outgoing(NamedTuple):
 
 
 class Bridge:
-    """One bridge in time. ``sealed``: it holds no key, so that it answers nothing."""
+    """One bridge in time. ``sealed``: it holds no key, so that it answers nothing;
+    ``line_bytes``: how many bytes may wait for the line."""
 
-    def __init__(self, kind: BridgeKind, *, sealed: bool) -> None:
+    def __init__(self, kind: BridgeKind, *, sealed: bool, line_bytes: int = LINE_BYTES) -> None:
         self.kind = kind
+        self._line_bytes = line_bytes
         self._answers = kind is BridgeKind.FILTERING and not sealed
         self._since_ns = self._hears_ns = 0
         self._counts = _Counts()
@@ -123,7 +128,7 @@ class Bridge:
 
     def to_line(self, waiting_bytes: int) -> bool:
         """Whether a frame heard goes on to the console, where so many bytes wait; counts it."""
-        if waiting_bytes >= LINE_BYTES:
+        if waiting_bytes >= self._line_bytes:
             self.dropped += 1
             self._counts.dropped += 1
             return False

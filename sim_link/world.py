@@ -15,7 +15,7 @@ from typing import Final, NamedTuple
 from protocol.codes import BRIDGE_ADDRESS, FIRST_GROUP_ADDRESS
 from sim_link import schedule
 from sim_link.air import Air
-from sim_link.bridge import Bridge
+from sim_link.bridge import BOUNDLESS_LINE_BYTES, LINE_BYTES, Bridge
 from sim_link.fleet_file import load_fleet
 from sim_link.line import Line
 from sim_link.module import VirtualModule
@@ -59,7 +59,8 @@ class World:
         self._places = {spec.name: place for place, spec in enumerate(fleet.modules)}
         self._from_console = Line(options.rate)
         self._to_console = Line(options.rate)
-        self._bridge = Bridge(options.bridge, sealed=keys is not None)
+        line_bytes = BOUNDLESS_LINE_BYTES if options.air_rate is None else LINE_BYTES
+        self._bridge = Bridge(options.bridge, sealed=keys is not None, line_bytes=line_bytes)
         self._air = _air_of(options)
         filtering = options.bridge is BridgeKind.FILTERING
         perfect = all(station.hears.perfect for station in self._stations)

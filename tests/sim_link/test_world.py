@@ -326,6 +326,15 @@ def test_time_does_not_run_backwards() -> None:
     assert len(host.heard) > before
 
 
+def test_a_thousand_modules_all_answer_one_roll_call() -> None:
+    host = console(modules=1000, seed=1)
+    host.say(to_all(RollCall(EPOCH, CONSOLE)))
+    host.run(3 * S, 50 * MS)
+    plates = {p.source for p in host.heard if isinstance(p.message, Nameplate)}
+    assert len(plates) == 1000
+    assert host.world.counts.dropped_at_bridge == 0
+
+
 def test_a_thousand_modules_each_keep_their_time() -> None:
     world = World(SimOptions(seed=1, modules=1000))
     assert len(world.modules) == 1000
